@@ -1,0 +1,20 @@
+//! Water, mash and treatment chemistry for a brewery.
+//!
+//! Numbers in, numbers out: no files, no clock, no database. Start with
+//! [`water::Water`], the composition everything else is computed from:
+//!
+//! - [`report`] turns a laboratory's lines into canonical figures and says
+//!   whether they can be believed;
+//! - [`carbonate`] knows what a water does when it is mixed, heated, salted or
+//!   acidified;
+//! - [`material`] holds the salts, acids and bases;
+//! - [`mash`] predicts the pH of a mash and how surely;
+//! - [`plan`] finds the treatment of one batch;
+//! - [`put_right`] says what to do about a reading.
+//!
+//! Every constant carries its source; [`references`] holds each source once.
+
+pub mod ion;
+pub mod quantity;
+pub mod references;
+pub mod water;

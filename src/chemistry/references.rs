@@ -1,0 +1,42 @@
+//! Every source a figure in this crate rests on, once.
+
+use std::fmt;
+
+/// A published source.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Reference {
+    /// Authors or issuing body.
+    pub authors: &'static str,
+    /// Year of publication.
+    pub year: u16,
+    /// Title.
+    pub title: &'static str,
+    /// Where to find it.
+    pub place: &'static str,
+}
+
+impl fmt::Display for Reference {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        write!(
+            f,
+            "{} ({}): {}. {}",
+            self.authors, self.year, self.title, self.place
+        )
+    }
+}
+
+/// Atomic weights behind every molar mass.
+pub const IUPAC_2021: Reference = Reference {
+    authors: "IUPAC Commission on Isotopic Abundances and Atomic Weights",
+    year: 2021,
+    title: "Standard atomic weights of the elements, abridged to five figures",
+    place: "Pure Appl. Chem. 94 (2022) 573",
+};
+
+/// Constants of the carbonate system and calcite, 0 to 90 °C.
+pub const PLUMMER_BUSENBERG_1982: Reference = Reference {
+    authors: "L. N. Plummer, E. Busenberg",
+    year: 1982,
+    title: "The solubilities of calcite, aragonite and vaterite in CO2-H2O solutions between 0 and 90 °C",
+    place: "Geochim. Cosmochim. Acta 46, 1011",
+};

@@ -1,0 +1,2 @@
+//! Leat.
+fn main() {}
