@@ -14,6 +14,7 @@
 //!
 //! Every constant carries its source; [`references`] holds each source once.
 
+pub mod acid;
 pub mod ion;
 pub mod quantity;
 pub mod references;

@@ -92,6 +92,8 @@ quantities! {
     MeqPerKg, "meq/kg", -100_000.0, 100_000.0;
     /// Buffering, meq per kg of grist and pH unit.
     MeqPerKgPh, "meq/(kg·pH)", 0.0, 10_000.0;
+    /// Equivalents per mole: protons given, charge or alkalinity of one molecule.
+    EqPerMol, "eq/mol", -10.0, 10.0;
     /// Strength of a liquid acid or base by titration, meq/mL.
     MeqPerMl, "meq/mL", 0.0, 60.0;
     /// Temperature, °C. Liquid water only.

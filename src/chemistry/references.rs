@@ -40,3 +40,19 @@ pub const PLUMMER_BUSENBERG_1982: Reference = Reference {
     title: "The solubilities of calcite, aragonite and vaterite in CO2-H2O solutions between 0 and 90 °C",
     place: "Geochim. Cosmochim. Acta 46, 1011",
 };
+
+/// Ionisation of phosphoric, sulfuric and citric acid with temperature.
+pub const GOLDBERG_2002: Reference = Reference {
+    authors: "R. N. Goldberg, N. Kishore, R. M. Lennen",
+    year: 2002,
+    title: "Thermodynamic quantities for the ionization reactions of buffers",
+    place: "J. Phys. Chem. Ref. Data 31, 231",
+};
+
+/// Ionisation of lactic acid, 0 to 50 °C.
+pub const MARTIN_TARTAR_1937: Reference = Reference {
+    authors: "A. W. Martin, H. V. Tartar",
+    year: 1937,
+    title: "The ionization constant of lactic acid, 0-50°, from conductance measurements",
+    place: "J. Am. Chem. Soc. 59, 2672",
+};
