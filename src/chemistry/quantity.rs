@@ -39,7 +39,7 @@ macro_rules! quantities {
             /// A checked value. Refuses NaN, infinities and values outside
             /// `LOW..=HIGH`.
             pub fn new(value: f64) -> Result<Self, OutOfRange> {
-                if value >= Self::LOW && value <= Self::HIGH {
+                if (Self::LOW..=Self::HIGH).contains(&value) {
                     Ok(Self(value))
                 } else {
                     Err(OutOfRange { value, unit: $unit, low: $low, high: $high })
