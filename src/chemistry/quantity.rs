@@ -108,6 +108,17 @@ quantities! {
     Kilograms, "kg", 0.0, 1_000_000.0;
     /// Mass, g.
     Grams, "g", 0.0, 1e9;
+    /// Mass of something dissolved, mg.
+    Milligrams, "mg", 0.0, 1e12;
+    /// Amount of substance, mmol.
+    Millimoles, "mmol", 0.0, 1e9;
+    /// Molar mass, g/mol.
+    GramsPerMol, "g/mol", 1.0, 1_000.0;
+    /// Strength of a liquid, grams of substance per litre of liquid.
+    GramsPerLitre, "g/L", 0.0, 3_000.0;
+    /// Amount of a material in the unit it is measured out in: g for a solid, mL
+    /// for a liquid.
+    DoseAmount, "g or mL", 0.0, 1e9;
     /// Density, g/mL.
     GramsPerMl, "g/mL", 0.5, 3.0;
     /// A share between nothing and all.
@@ -181,7 +192,7 @@ macro_rules! sums {
     )*};
 }
 
-sums! { MgPerL MmolPerL MeqPerL Meq MeqPerKg Litres Millilitres Kilograms Grams }
+sums! { MgPerL MmolPerL MeqPerL Meq MeqPerKg Litres Millilitres Kilograms Grams Milligrams Millimoles }
 
 /// A figure and how well it is known.
 #[derive(Clone, Copy, Debug, PartialEq)]
