@@ -19,4 +19,5 @@ pub mod ion;
 pub mod material;
 pub mod quantity;
 pub mod references;
+pub mod report;
 pub mod water;
