@@ -16,6 +16,7 @@
 
 pub mod acid;
 pub mod ion;
+pub mod mash;
 pub mod material;
 pub mod quantity;
 pub mod references;

@@ -100,6 +100,10 @@ quantities! {
     Celsius, "°C", -5.0, 110.0;
     /// pH on the activity scale.
     Ph, "", 0.0, 14.0;
+    /// A difference between two pH values.
+    PhShift, "", -14.0, 14.0;
+    /// Buffering of a malt relative to an average pale malt.
+    RelativeBuffering, "", 0.0, 20.0;
     /// Volume, L.
     Litres, "L", 0.0, 10_000_000.0;
     /// Volume, mL.

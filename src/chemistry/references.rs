@@ -56,3 +56,43 @@ pub const MARTIN_TARTAR_1937: Reference = Reference {
     title: "The ionization constant of lactic acid, 0-50°, from conductance measurements",
     place: "J. Am. Chem. Soc. 59, 2672",
 };
+
+/// Mash pH where summed proton deficits vanish; malt as a three-term series.
+pub const DELANGE_2015: Reference = Reference {
+    authors: "A. J. deLange",
+    year: 2015,
+    title: "Predicting and controlling mash pH using simple models for mash component acid/base characteristics",
+    place: "MBAA Technical Quarterly 52(1), doi 10.1094/TQ-52-1-0302-01 (abstract read)",
+};
+
+/// Alkalinity cancelled by calcium and magnesium in cast wort.
+pub const KOLBACH_1953: Reference = Reference {
+    authors: "P. Kolbach",
+    year: 1953,
+    title: "Der Einfluss des Brauwassers auf das pH von Würze und Bier",
+    place: "Monatsschrift für Brauerei 6 (title from memory)",
+};
+
+/// Calcium in the liquor and the pH of mash and wort.
+pub const TAYLOR_1990: Reference = Reference {
+    authors: "D. G. Taylor",
+    year: 1990,
+    title: "The importance of pH control during brewing",
+    place: "MBAA Technical Quarterly 27 (abstract and one table at second hand)",
+};
+
+/// What buffers wort: carboxylic acids below pH 5.5, phosphate hardly.
+pub const LI_2016: Reference = Reference {
+    authors: "Li et al.",
+    year: 2016,
+    title: "(on the buffering of wort; title not at hand)",
+    place: "J. Inst. Brew. 122, 138 (abstract read)",
+};
+
+/// pH of wort against temperature, gravity, calcium and acid.
+pub const HOSOM_2020: Reference = Reference {
+    authors: "J.-P. Hosom",
+    year: 2020,
+    title: "(measurements of mash and wort pH, 2018 to 2020)",
+    place: "open notes of the author",
+};

@@ -11,6 +11,7 @@ mod contribution;
 mod substance;
 
 pub use contribution::{Contribution, DoseUnit};
+pub(crate) use contribution::{PROTOLYTES, protons_kept};
 pub use substance::{Form, Role, Substance, Vessel};
 
 use crate::ion::{Ion, IonMap};
