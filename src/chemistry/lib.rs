@@ -18,6 +18,7 @@ pub mod acid;
 pub mod ion;
 pub mod mash;
 pub mod material;
+pub mod put_right;
 pub mod quantity;
 pub mod references;
 pub mod report;

@@ -104,6 +104,8 @@ quantities! {
     PhShift, "", -14.0, 14.0;
     /// Buffering of a malt relative to an average pale malt.
     RelativeBuffering, "", 0.0, 20.0;
+    /// Time since strike or between readings, min.
+    Minutes, "min", 0.0, 100_000.0;
     /// Volume, L.
     Litres, "L", 0.0, 10_000_000.0;
     /// Volume, mL.
