@@ -102,6 +102,8 @@ quantities! {
     Ph, "", 0.0, 14.0;
     /// A difference between two pH values.
     PhShift, "", -14.0, 14.0;
+    /// One standard deviation, relative to the figure it belongs to.
+    RelativeSd, "", 0.0, 10.0;
     /// Buffering of a malt relative to an average pale malt.
     RelativeBuffering, "", 0.0, 20.0;
     /// Time since strike or between readings, min.

@@ -102,7 +102,7 @@ fn drawn(inputs: &MashInputs, normal: &mut Normal) -> MashInputs {
     drawn.volume.value =
         Litres::clamped(inputs.volume.value.get() + inputs.volume.sd * normal.draw());
     for addition in &mut drawn.additions {
-        let scale = (1.0 + addition.relative_sd * normal.draw()).max(0.0);
+        let scale = (1.0 + addition.relative_sd.get() * normal.draw()).max(0.0);
         addition.brings = addition.brings.times(DoseAmount::clamped(scale));
     }
     drawn.offset.value =
@@ -213,4 +213,15 @@ fn measuring_the_malt_halves_the_interval() {
     let after = inputs.predict().expect("a pH").ph.sd;
     assert!((after - 0.05).abs() < 0.01, "{after}");
     assert!(after < 0.55 * before);
+}
+
+#[test]
+fn one_lot_on_two_lines_is_no_better_known_than_on_one() {
+    let whole = brewery();
+    let mut split = whole.clone();
+    split.grist[0].mass = Kilograms::constant(90.0);
+    let other_half = split.grist[0].clone();
+    split.grist.push(other_half);
+    let sd = |inputs: &MashInputs| inputs.predict().expect("a pH").ph.sd;
+    assert!((sd(&whole) - sd(&split)).abs() < 1e-6);
 }

@@ -3,7 +3,7 @@
 use chemistry::mash::malt::distilled_ph_from_sheet;
 use chemistry::mash::titration::{self, Jar, TitrationError};
 use chemistry::mash::{Behaviour, Groups, MaltClass, Taylor};
-use chemistry::quantity::{Ebc, Estimate, Fraction, Lovibond, MeqPerKg, Ph, RelativeBuffering};
+use chemistry::quantity::{Ebc, Estimate, Lovibond, MeqPerKg, Ph, RelativeBuffering, RelativeSd};
 
 fn groups(ph: f64, buffering: f64) -> Behaviour {
     Behaviour::Groups(Groups::new(
@@ -61,7 +61,7 @@ fn measured_coefficients_follow_the_cubic_and_never_turn_over() {
     // With a1 = −34, a2 = +10 the plain cubic turns at u = 1.7 (34 = 2·10·1.7).
     let taylor = |a: [f64; 3]| {
         let ph = Estimate::new(Ph::constant(5.7), 0.05);
-        Behaviour::Taylor(Taylor::new(ph, a, Fraction::constant(0.1)).expect("coefficients"))
+        Behaviour::Taylor(Taylor::new(ph, a, RelativeSd::constant(0.1)).expect("coefficients"))
     };
     let malt = taylor([-34.0, 10.0, 0.0]);
     for u in [-0.6, -0.3, 0.2, 0.5] {
@@ -81,8 +81,8 @@ fn measured_coefficients_follow_the_cubic_and_never_turn_over() {
         }
     }
     let ph = Estimate::new(Ph::constant(5.7), 0.05);
-    assert!(Taylor::new(ph, [34.0, 0.0, 0.0], Fraction::constant(0.1)).is_err());
-    assert!(Taylor::new(ph, [f64::NAN, 0.0, 0.0], Fraction::constant(0.1)).is_err());
+    assert!(Taylor::new(ph, [34.0, 0.0, 0.0], RelativeSd::constant(0.1)).is_err());
+    assert!(Taylor::new(ph, [f64::NAN, 0.0, 0.0], RelativeSd::constant(0.1)).is_err());
 }
 
 #[test]
@@ -116,7 +116,7 @@ fn a_bench_titration_gives_back_the_malt_it_was_made_of() {
     let fit = titration::fit(&jars).expect("a fit");
     assert!((fit.groups.distilled_ph.value.get() - 5.66).abs() < 1e-6);
     assert!((fit.groups.buffering.value.get() - 1.18).abs() < 1e-6);
-    assert!(fit.left_over < 1e-6);
+    assert!(fit.left_over.get() < 1e-6);
     // Four readings of 0.03 cannot fix the pH better than half of that, nor worse than one.
     let sd = fit.groups.distilled_ph.sd;
     assert!((0.012..0.03).contains(&sd), "{sd}");

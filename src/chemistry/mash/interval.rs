@@ -117,7 +117,7 @@ pub(super) fn influences(inputs: &MashInputs, balanced: f64, slope: f64) -> Vec<
         inputs.volume.sd * demand.liquor(&inputs.liquor).get(),
     ));
     for addition in &inputs.additions {
-        let change = addition.relative_sd * demand.contribution(&addition.brings).get();
+        let change = addition.relative_sd.get() * demand.contribution(&addition.brings).get();
         moves.push((
             InfluenceKind::MaterialStrength,
             format!("strength of {}", addition.name),
@@ -142,12 +142,24 @@ pub(super) fn combined_sd(influences: &[Influence]) -> f64 {
         .sqrt()
 }
 
+/// One lot on two lines of the grist, or one acid in two doses, errs as one: what
+/// has the same name moves together.
 fn shared_out(moves: Vec<(InfluenceKind, String, f64)>, slope: f64) -> Vec<Influence> {
-    let variance: f64 = moves
+    let mut together: Vec<(InfluenceKind, String, f64)> = Vec::new();
+    for (kind, name, change) in moves {
+        match together
+            .iter_mut()
+            .find(|(other_kind, other_name, _)| *other_kind == kind && *other_name == name)
+        {
+            Some((.., sum)) => *sum += change,
+            None => together.push((kind, name, change)),
+        }
+    }
+    let variance: f64 = together
         .iter()
         .map(|(.., change)| (change / slope).powi(2))
         .sum();
-    let mut influences: Vec<Influence> = moves
+    let mut influences: Vec<Influence> = together
         .into_iter()
         .filter(|&(.., change)| change != 0.0)
         .map(|(kind, name, change)| {

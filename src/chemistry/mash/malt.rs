@@ -2,12 +2,12 @@
 //!
 //! In distilled water a malt settles at its own pH. To move it from there takes
 //! acid or base, and how much is its buffering. Both differ from lot to lot, so
-//! both are estimates. [`MaltClass`] holds what to assume before a lot was
+//! both are estimates. [`MaltClass`](super::MaltClass) holds what to assume before a lot was
 //! measured; [`titration`](super::titration) fits a bench titration.
 
 use crate::acid::Acid;
 use crate::quantity::{
-    Ebc, Estimate, Fraction, Lovibond, MeqPerKg, MeqPerKgPh, Ph, RelativeBuffering,
+    Ebc, Estimate, Fraction, Lovibond, MeqPerKg, MeqPerKgPh, Ph, RelativeBuffering, RelativeSd,
 };
 
 use super::BASIS;
@@ -30,7 +30,8 @@ const LEAST_BUFFERING: f64 = 18.0;
 /// A malt or other grist ingredient and what is known of its acidity.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Malt {
-    /// What the brewery calls it, with the lot where there is one.
+    /// What the brewery calls it, with the lot where there is one. Malts of one name
+    /// are taken to err together.
     pub name: String,
     /// How it meets acid and base.
     pub behaviour: Behaviour,
@@ -127,7 +128,7 @@ impl Taylor {
     pub fn new(
         distilled_ph: Estimate<Ph>,
         [a1, a2, a3]: [f64; 3],
-        relative_sd: Fraction,
+        relative_sd: RelativeSd,
     ) -> Result<Self, ImpossibleCoefficients> {
         let bounded = |value: f64| (-500.0..=500.0).contains(&value);
         if !((-500.0..=-1.0).contains(&a1) && bounded(a2) && bounded(a3)) {

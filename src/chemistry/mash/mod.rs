@@ -22,7 +22,8 @@ pub use malt::{Behaviour, Groups, Malt, Taylor};
 
 use crate::material::{Contribution, Material};
 use crate::quantity::{
-    Celsius, DoseAmount, Estimate, Kilograms, Litres, Meq, MeqPerKgPh, MeqPerL, MgPerL, Ph, PhShift,
+    Celsius, DoseAmount, Estimate, Kilograms, Litres, Meq, MeqPerKgPh, MeqPerL, MgPerL, Ph,
+    PhShift, RelativeSd,
 };
 use crate::water::Water;
 
@@ -41,7 +42,7 @@ pub struct Addition {
     /// What all of it brings.
     pub brings: Contribution,
     /// One standard deviation of its strength, relative to the strength.
-    pub relative_sd: f64,
+    pub relative_sd: RelativeSd,
 }
 
 impl Addition {

@@ -1,6 +1,6 @@
 //! A bench titration of one malt, fitted to its distilled-water pH and buffering.
 
-use crate::quantity::{Estimate, MeqPerKg, Ph, RelativeBuffering};
+use crate::quantity::{Estimate, MeqPerKg, Ph, PhShift, RelativeBuffering};
 
 use super::malt::{Groups, charge, charge_slope};
 
@@ -18,8 +18,8 @@ pub struct Jar {
 pub struct Fit {
     /// The malt, with the standard errors of the fit.
     pub groups: Groups,
-    /// Root mean square of what the fit leaves over, pH.
-    pub left_over: f64,
+    /// Root mean square of what the fit leaves over.
+    pub left_over: PhShift,
 }
 
 /// Why jars do not give a malt.
@@ -88,7 +88,7 @@ pub fn fit(jars: &[Jar]) -> Result<Fit, TitrationError> {
                 (variance * normal[0] / determinant).sqrt(),
             ),
         ),
-        left_over: (squares / jars.len() as f64).sqrt(),
+        left_over: PhShift::clamped((squares / jars.len() as f64).sqrt()),
     })
 }
 

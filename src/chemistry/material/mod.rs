@@ -17,7 +17,7 @@ pub use substance::{Form, Role, Substance, Vessel};
 use crate::ion::{Ion, IonMap};
 use crate::quantity::{
     DoseAmount, Estimate, Fraction, GramsPerLitre, GramsPerMl, Meq, MeqPerMl, Milligrams,
-    Millimoles,
+    Millimoles, RelativeSd,
 };
 
 /// How strong a liquid is, in the terms of its label.
@@ -164,7 +164,7 @@ impl Material {
     /// How uncertain its effect is, relative to the effect (one standard
     /// deviation): assay and efficiency together.
     #[must_use]
-    pub fn relative_sd(&self) -> f64 {
+    pub fn relative_sd(&self) -> RelativeSd {
         let efficiency = self.substance.efficiency();
         let relative = |estimate: Estimate<Fraction>| {
             if estimate.value.get() > 0.0 {
@@ -173,7 +173,7 @@ impl Material {
                 0.0
             }
         };
-        relative(self.assay).hypot(relative(efficiency))
+        RelativeSd::clamped(relative(self.assay).hypot(relative(efficiency)))
     }
 
     /// What one gram or one millilitre holds, were all of it to act.
