@@ -96,3 +96,43 @@ pub const HOSOM_2020: Reference = Reference {
     title: "(measurements of mash and wort pH, 2018 to 2020)",
     place: "open notes of the author",
 };
+
+/// Acceptance of an ion balance (1030 E), hardness by calculation (2340 B).
+pub const STANDARD_METHODS: Reference = Reference {
+    authors: "American Public Health Association, American Water Works Association, Water Environment Federation",
+    year: 2017,
+    title: "Standard Methods for the Examination of Water and Wastewater",
+    place: "23rd edition, parts 1030 E and 2340 B",
+};
+
+/// Conductance of dilute electrolytes: the limiting law.
+pub const ONSAGER_1927: Reference = Reference {
+    authors: "L. Onsager",
+    year: 1927,
+    title: "Zur Theorie der Elektrolyte II",
+    place: "Physikalische Zeitschrift 28, 277",
+};
+
+/// Drinking-water values of the European Union.
+pub const EU_DRINKING_WATER_2020: Reference = Reference {
+    authors: "European Parliament and Council",
+    year: 2020,
+    title: "Directive (EU) 2020/2184 on the quality of water intended for human consumption",
+    place: "OJ L 435, 1, annex I; before it Directive 98/83/EC",
+};
+
+/// Drinking-water values of the United States.
+pub const US_DRINKING_WATER: Reference = Reference {
+    authors: "United States Environmental Protection Agency",
+    year: 2023,
+    title: "National primary and secondary drinking water regulations",
+    place: "40 CFR 141 and 40 CFR 143.3",
+};
+
+/// Drinking-water values of the World Health Organization.
+pub const WHO_DRINKING_WATER_2022: Reference = Reference {
+    authors: "World Health Organization",
+    year: 2022,
+    title: "Guidelines for drinking-water quality",
+    place: "4th edition with first and second addenda, Geneva",
+};

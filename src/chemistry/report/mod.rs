@@ -1,16 +1,38 @@
-//! From a laboratory's lines to figures in one set of units.
+//! From a laboratory's lines to figures in one set of units, and whether they can
+//! be believed.
 //!
 //! [`Reading::parse`] understands one line as it was printed; a [`Report`] is all
-//! the lines of one sample with how they were measured.
+//! the lines of one sample with how they were measured; [`assess`] compares them
+//! with each other and gives an [`Assessment`]: figures, findings, a verdict, and
+//! what could be worked out beyond what was reported. [`Assessment::composition`]
+//! makes a water of it, [`potable_findings`] holds it against drinking-water limits.
 
 mod analyte;
+mod assessment;
+mod balance;
+mod bases;
+mod checks;
+mod composition;
+mod conductivity;
+mod figure;
+mod finding;
+mod inference;
+mod limits;
 mod reading;
+mod typed;
 mod unit;
 
 pub use analyte::Analyte;
-pub use reading::{
-    CanonicalValue, Qualifier, Reading, ReadingError, TypedValue, TypingError, parse_typed,
-};
+pub use assessment::{Assessment, assess};
+pub use balance::{Closure, IonBalance};
+pub use composition::{Assumption, Composition, NotEnough};
+pub use conductivity::conductivity;
+pub use figure::Figure;
+pub use finding::{Finding, FindingFigure, FindingKind, Severity, Verdict};
+pub use inference::{Inference, InferenceKind};
+pub use limits::{Concern, Limit, LimitSet, PotableFinding, Standing, potable_findings};
+pub use reading::{CanonicalValue, Reading, ReadingError};
+pub use typed::{Qualifier, TypedValue, TypingError, parse_typed};
 pub use unit::ReportingUnit;
 
 use crate::quantity::{Celsius, MgPerLAsCaCO3};
@@ -85,6 +107,35 @@ pub enum WaterKind {
     Permeate,
     /// Anything else.
     Other,
+}
+
+impl WaterKind {
+    /// Every kind.
+    pub const ALL: [Self; 5] = [
+        Self::Mains,
+        Self::Borehole,
+        Self::Surface,
+        Self::Permeate,
+        Self::Other,
+    ];
+
+    /// The stable name in JSON and the database.
+    #[must_use]
+    pub const fn key(self) -> &'static str {
+        match self {
+            Self::Mains => "mains",
+            Self::Borehole => "borehole",
+            Self::Surface => "surface",
+            Self::Permeate => "permeate",
+            Self::Other => "other",
+        }
+    }
+
+    /// The kind with this [`key`](Self::key).
+    #[must_use]
+    pub fn from_key(key: &str) -> Option<Self> {
+        Self::ALL.into_iter().find(|kind| kind.key() == key)
+    }
 }
 
 /// One line of a report.
