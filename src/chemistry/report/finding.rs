@@ -160,19 +160,15 @@ impl Verdict {
     }
 }
 
-/// A number for a sentence: three digits, no more.
+/// A number for a sentence: three digits, no idle zeros.
 pub(super) fn rounded(value: f64) -> String {
     let size = value.abs();
-    if size >= 100.0 {
-        format!("{value:.0}")
-    } else if size >= 10.0 {
-        format!("{value:.1}")
-    } else if size >= 1.0 || size == 0.0 {
-        format!("{value:.2}")
-    } else {
-        let decimals = (2.0 - size.log10().floor()).clamp(0.0, 9.0) as usize;
-        format!("{value:.decimals$}")
+    if size >= 100.0 || size == 0.0 {
+        return format!("{value:.0}");
     }
+    let decimals = (2.0 - size.log10().floor()).clamp(0.0, 9.0) as usize;
+    let text = format!("{value:.decimals$}");
+    text.trim_end_matches('0').trim_end_matches('.').to_owned()
 }
 
 /// A share of a hundred for a sentence: one decimal.
@@ -184,4 +180,27 @@ pub(super) fn percent(value: f64) -> String {
 pub(super) fn amount(value: f64, analyte: Analyte) -> String {
     let text = format!("{} {}", rounded(value), analyte.canonical_unit().label());
     text.trim_end().to_owned()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn sentences_show_three_digits_and_no_idle_zeros() {
+        for (value, text) in [
+            (0.0, "0"),
+            (100.0, "100"),
+            (1234.5, "1234"),
+            (45.0, "45"),
+            (8.0, "8"),
+            (3.456, "3.46"),
+            (0.05, "0.05"),
+            (0.012_345, "0.0123"),
+            (-20.0, "-20"),
+        ] {
+            assert_eq!(rounded(value), text);
+        }
+        assert_eq!(amount(7.6, Analyte::Ph), "7.6");
+    }
 }

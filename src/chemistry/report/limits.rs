@@ -275,9 +275,14 @@ pub fn potable_findings(assessment: &Assessment, set: LimitSet) -> Vec<PotableFi
             standing,
             value,
             sentence: format!(
-                "{} of {sign}{} {words} the guideline value of {} for drinking water of {}.",
+                "{} of {sign}{} {words} the guideline {} of {} for drinking water of {}.",
                 capitalised(limit.analyte.name()),
                 amount(value, limit.analyte),
+                if limit.low.is_some() {
+                    "range"
+                } else {
+                    "value"
+                },
                 limit.as_published(),
                 set.name()
             ),

@@ -99,7 +99,7 @@ fn a_figure_below_the_limit_counts_half_and_says_so() {
         .unwrap();
     assert!(
         said.sentence
-            .contains("below 4.00 mg/L; half of that is taken")
+            .contains("below 4 mg/L; half of that is taken")
     );
 }
 
@@ -168,7 +168,7 @@ fn potable_limits_are_compared_in_their_own_basis() {
     near(found.limit.high(), 44.3, 0.05);
     assert_eq!(
         found.sentence,
-        "Nitrate of 45.0 mg/L is above the guideline value of 10 mg/L as N for drinking water of \
+        "Nitrate of 45 mg/L is above the guideline value of 10 mg/L as N for drinking water of \
          the United States."
     );
     assert!(above("44", LimitSet::UnitedStates).is_none());
