@@ -1,0 +1,5 @@
+//! The statistics against reference figures (see qa/README.md), printed tables,
+//! and what must hold for any history.
+
+mod measurement;
+mod reference;
