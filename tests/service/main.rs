@@ -1,1 +1,11 @@
-//! Service tests.
+//! The real server on a free port with a fresh database, spoken to over HTTP.
+//!
+//! Start with `desk`: it starts the server and fills in the forms the pages offer.
+
+#![allow(
+    unreachable_pub,
+    reason = "one program: its modules speak to each other"
+)]
+
+mod desk;
+mod people;

@@ -1,0 +1,123 @@
+//! The front door: what every request passes through before a domain sees it.
+//!
+//! [`router`] puts the two doors together. Pages carry a session cookie and are
+//! guarded against cross-site posts; the API under `/api/v1` carries a bearer
+//! token. Both meet in the same operations.
+
+use std::sync::Arc;
+use std::time::Duration;
+
+use axum::Router;
+use axum::extract::FromRef;
+use axum::http::{HeaderValue, StatusCode, header};
+use axum::middleware::{from_fn, from_fn_with_state};
+use tower_http::catch_panic::CatchPanicLayer;
+use tower_http::compression::CompressionLayer;
+use tower_http::csrf::CsrfLayer;
+use tower_http::limit::RequestBodyLimitLayer;
+use tower_http::request_id::{MakeRequestUuid, PropagateRequestIdLayer, SetRequestIdLayer};
+use tower_http::set_header::SetResponseHeaderLayer;
+use tower_http::timeout::TimeoutLayer;
+use tower_http::trace::TraceLayer;
+use utoipa_axum::router::OpenApiRouter;
+
+use crate::db::Db;
+use crate::people::passwords::Passwords;
+
+pub mod api;
+pub mod assets;
+pub mod extract;
+pub mod form;
+pub mod format;
+pub mod layout;
+pub mod problem;
+pub mod repeat;
+pub mod session;
+pub mod throttle;
+
+/// Largest request body, bytes.
+pub const BODY_LIMIT: usize = 1024 * 1024;
+
+/// What handlers may ask for.
+#[derive(Clone)]
+pub struct App {
+    /// The database.
+    pub db: Db,
+    /// The hashing thread.
+    pub passwords: Passwords,
+    /// Limits on attempts to sign in.
+    pub throttle: Arc<throttle::Throttle>,
+    /// Cookies and the first account.
+    pub door: Arc<Door>,
+}
+
+/// How people get in.
+#[derive(Debug)]
+pub struct Door {
+    /// Cookies over https only.
+    pub secure_cookies: bool,
+    /// The one-time token that makes the first account, printed at the start.
+    pub first_token: String,
+}
+
+impl FromRef<App> for Db {
+    fn from_ref(app: &App) -> Self {
+        app.db.clone()
+    }
+}
+
+/// Everything Leat answers.
+pub fn router(app: App) -> Router {
+    let pages = Router::new()
+        .merge(crate::people::pages::routes())
+        .merge(crate::record::pages::routes())
+        .merge(crate::brewery::pages::routes())
+        .fallback(problem::no_such_page)
+        .layer(from_fn_with_state(app.clone(), repeat::layer))
+        .layer(from_fn_with_state(app.clone(), session::cookie_layer))
+        .layer(from_fn_with_state(app.clone(), problem::page_layer))
+        .layer(CsrfLayer::new());
+
+    let (api, description) = OpenApiRouter::with_openapi(api::description())
+        .merge(crate::people::api::routes())
+        .merge(crate::record::api::routes())
+        .merge(crate::brewery::api::routes())
+        .split_for_parts();
+    let api = api
+        .fallback(problem::no_such_endpoint)
+        .layer(from_fn_with_state(app.clone(), repeat::layer))
+        .layer(from_fn_with_state(app.clone(), session::token_layer))
+        .layer(from_fn(problem::api_layer));
+
+    Router::new()
+        .nest("/api/v1", api)
+        .merge(pages)
+        .merge(api::reading_room(description))
+        .merge(assets::routes())
+        .layer(CatchPanicLayer::custom(problem::panicked))
+        .layer(TimeoutLayer::with_status_code(StatusCode::SERVICE_UNAVAILABLE, Duration::from_secs(30)))
+        .layer(RequestBodyLimitLayer::new(BODY_LIMIT))
+        .layer(CompressionLayer::new())
+        .layer(SetResponseHeaderLayer::if_not_present(
+            header::CONTENT_SECURITY_POLICY,
+            HeaderValue::from_static(
+                "default-src 'none'; style-src 'self'; script-src 'self'; img-src 'self'; connect-src 'self'; \
+                 form-action 'self'; base-uri 'none'; frame-ancestors 'none'",
+            ),
+        ))
+        .layer(SetResponseHeaderLayer::overriding(
+            header::REFERRER_POLICY,
+            HeaderValue::from_static("same-origin"),
+        ))
+        .layer(SetResponseHeaderLayer::overriding(
+            header::X_CONTENT_TYPE_OPTIONS,
+            HeaderValue::from_static("nosniff"),
+        ))
+        .layer(TraceLayer::new_for_http().make_span_with(|request: &axum::http::Request<axum::body::Body>| {
+            let id = request.headers().get("x-request-id").and_then(|id| id.to_str().ok()).unwrap_or("-");
+            tracing::info_span!("request", id = %id, method = %request.method(), path = %request.uri().path())
+        }))
+        .layer(PropagateRequestIdLayer::x_request_id())
+        .layer(SetRequestIdLayer::x_request_id(MakeRequestUuid))
+        .with_state(app)
+}

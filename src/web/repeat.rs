@@ -1,0 +1,207 @@
+//! A request that carries a key is applied once and answered the same again.
+//!
+//! The API takes the key from the `Idempotency-Key` header, forms from their hidden
+//! field `_key`. [`claim`] writes the key in the transaction of the change itself, so
+//! that key and change stand or fall together even when the power goes; the answer is
+//! stored after it, to be replayed.
+
+use axum::body::{Body, Bytes, to_bytes};
+use axum::extract::{Request, State};
+use axum::http::{HeaderName, HeaderValue, Method, StatusCode, header};
+use axum::middleware::Next;
+use axum::response::{IntoResponse, Response};
+use base64ct::{Base64UrlUnpadded, Encoding};
+use sha2::{Digest, Sha256};
+use sqlx::{Row, SqliteConnection};
+
+use super::{App, BODY_LIMIT};
+use crate::db::Db;
+use crate::error::{Error, breaks_unique};
+use crate::id::UtcTime;
+use crate::people::Member;
+
+tokio::task_local! {
+    static KEY: Key;
+}
+
+#[derive(Clone, Debug)]
+struct Key {
+    actor: String,
+    key: String,
+    fingerprint: String,
+}
+
+/// Headers worth replaying.
+const REPLAYED: [HeaderName; 4] = [
+    header::LOCATION,
+    header::CONTENT_TYPE,
+    header::ETAG,
+    header::SET_COOKIE,
+];
+
+/// Claims the request's key, if it has one, in this transaction.
+pub async fn claim(tx: &mut SqliteConnection) -> Result<(), Error> {
+    let Ok(key) = KEY.try_with(Clone::clone) else {
+        return Ok(());
+    };
+    sqlx::query("INSERT INTO request_keys (actor, key, fingerprint, at) VALUES (?, ?, ?, ?)")
+        .bind(&key.actor)
+        .bind(&key.key)
+        .bind(&key.fingerprint)
+        .bind(UtcTime::now())
+        .execute(tx)
+        .await
+        .map_err(|error| {
+            if breaks_unique(&error) {
+                Error::Repeated
+            } else {
+                error.into()
+            }
+        })?;
+    Ok(())
+}
+
+/// Replays the answer of a repeated request; otherwise runs it under its key.
+pub async fn layer(State(app): State<App>, request: Request, next: Next) -> Response {
+    match apply(&app.db, request, next).await {
+        Ok(response) => response,
+        Err(error) => error.into_response(),
+    }
+}
+
+async fn apply(db: &Db, request: Request, next: Next) -> Result<Response, Error> {
+    if matches!(
+        *request.method(),
+        Method::GET | Method::HEAD | Method::OPTIONS
+    ) {
+        return Ok(next.run(request).await);
+    }
+    let Some(member) = request.extensions().get::<Member>().cloned() else {
+        return Ok(next.run(request).await);
+    };
+    let (parts, body) = request.into_parts();
+    let Ok(body) = to_bytes(body, BODY_LIMIT).await else {
+        return Ok(StatusCode::PAYLOAD_TOO_LARGE.into_response());
+    };
+    let sent = parts
+        .headers
+        .get("idempotency-key")
+        .map(|value| value.to_str().unwrap_or("").to_owned());
+    let key = sent.or_else(|| form_key(parts.headers.get(header::CONTENT_TYPE), &body));
+    let Some(key) = key else {
+        return Ok(next.run(Request::from_parts(parts, Body::from(body))).await);
+    };
+    if key.is_empty() || key.len() > 200 || !key.is_ascii() {
+        return Err(Error::field(
+            "",
+            "Idempotency-Key: send 1 to 200 ASCII characters, for example a UUID.",
+        ));
+    }
+    let mut digest = Sha256::new();
+    digest.update(parts.method.as_str());
+    digest.update(parts.uri.path());
+    digest.update(&body);
+    let key = Key {
+        actor: member.id.to_string(),
+        key,
+        fingerprint: Base64UrlUnpadded::encode_string(&digest.finalize()),
+    };
+    if let Some(answer) = stored(db, &key).await? {
+        return Ok(answer);
+    }
+    let request = Request::from_parts(parts, Body::from(body));
+    let response = KEY.scope(key.clone(), next.run(request)).await;
+    let repeated = response
+        .extensions()
+        .get::<super::problem::Problem>()
+        .is_some_and(|p| p.kind == "/problems/repeated");
+    if repeated {
+        // Its twin is being answered right now: wait a little for that answer.
+        for _ in 0..40 {
+            if let Some(answer) = stored(db, &key).await? {
+                return Ok(answer);
+            }
+            tokio::time::sleep(std::time::Duration::from_millis(50)).await;
+        }
+        return Ok(response);
+    }
+    store(db, &key, response).await
+}
+
+fn form_key(content_type: Option<&HeaderValue>, body: &Bytes) -> Option<String> {
+    let is_form = content_type?
+        .to_str()
+        .ok()?
+        .starts_with("application/x-www-form-urlencoded");
+    if !is_form {
+        return None;
+    }
+    form_urlencoded::parse(body)
+        .find(|(name, _)| name == "_key")
+        .map(|(_, value)| value.into_owned())
+        .filter(|k| !k.is_empty())
+}
+
+async fn stored(db: &Db, key: &Key) -> Result<Option<Response>, Error> {
+    let row = sqlx::query(
+        "SELECT fingerprint, status, headers, body FROM request_keys WHERE actor = ? AND key = ?",
+    )
+    .bind(&key.actor)
+    .bind(&key.key)
+    .fetch_optional(&mut *db.reader().await?)
+    .await?;
+    let Some(row) = row else { return Ok(None) };
+    if row.try_get::<&str, _>("fingerprint")? != key.fingerprint {
+        return Err(Error::Conflict(
+            "This key was used before for another request. Send each new request with a new key"
+                .into(),
+        ));
+    }
+    let Some(status) = row.try_get::<Option<i64>, _>("status")? else {
+        return Ok(None);
+    };
+    let mut response = Response::new(Body::from(row.try_get::<Vec<u8>, _>("body")?));
+    *response.status_mut() = u16::try_from(status)
+        .ok()
+        .and_then(|s| StatusCode::from_u16(s).ok())
+        .unwrap_or(StatusCode::OK);
+    let headers: Vec<(String, String)> = serde_json::from_str(row.try_get("headers")?)
+        .map_err(|error| Error::internal("A stored answer cannot be read", error))?;
+    for (name, value) in headers {
+        if let (Ok(name), Ok(value)) = (name.parse::<HeaderName>(), value.parse::<HeaderValue>()) {
+            response.headers_mut().insert(name, value);
+        }
+    }
+    response
+        .headers_mut()
+        .insert("idempotent-replayed", HeaderValue::from_static("true"));
+    Ok(Some(response))
+}
+
+/// Keeps the answer beside the key, if the request changed anything.
+async fn store(db: &Db, key: &Key, response: Response) -> Result<Response, Error> {
+    if response.status().is_client_error() || response.status().is_server_error() {
+        return Ok(response);
+    }
+    let (parts, body) = response.into_parts();
+    let body = to_bytes(body, 8 * BODY_LIMIT)
+        .await
+        .map_err(|error| Error::internal("An answer could not be kept", error))?;
+    let headers: Vec<(&str, &str)> = REPLAYED
+        .iter()
+        .filter_map(|name| Some((name.as_str(), parts.headers.get(name)?.to_str().ok()?)))
+        .collect();
+    let headers = serde_json::to_string(&headers)
+        .map_err(|error| Error::internal("An answer could not be kept", error))?;
+    let mut tx = db.begin_unkeyed().await?;
+    sqlx::query("UPDATE request_keys SET status = ?, headers = ?, body = ? WHERE actor = ? AND key = ? AND status IS NULL")
+        .bind(i64::from(parts.status.as_u16()))
+        .bind(headers)
+        .bind(body.to_vec())
+        .bind(&key.actor)
+        .bind(&key.key)
+        .execute(&mut *tx)
+        .await?;
+    tx.commit().await?;
+    Ok(Response::from_parts(parts, Body::from(body)))
+}
