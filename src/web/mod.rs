@@ -34,6 +34,7 @@ pub mod problem;
 pub mod repeat;
 pub mod session;
 pub mod throttle;
+pub mod units;
 
 /// Largest request body, bytes.
 pub const BODY_LIMIT: usize = 1024 * 1024;
