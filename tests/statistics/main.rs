@@ -1,5 +1,6 @@
 //! The statistics against reference figures (see qa/README.md), printed tables,
 //! and what must hold for any history.
 
+mod local_level;
 mod measurement;
 mod reference;

@@ -15,3 +15,23 @@ pub(crate) fn rows(text: &str) -> Vec<Row> {
 pub(crate) fn number(row: &Row, column: &str) -> f64 {
     row[column].parse().unwrap()
 }
+
+/// How closely two figures must agree.
+#[derive(Clone, Copy)]
+pub(crate) struct Within {
+    /// Relative to the reference.
+    pub(crate) relative: f64,
+    /// A smaller reference counts as this large.
+    pub(crate) least: f64,
+}
+
+impl Within {
+    #[track_caller]
+    pub(crate) fn check(self, ours: f64, reference: f64) {
+        let deviation = (ours - reference).abs() / reference.abs().max(self.least);
+        assert!(
+            deviation < self.relative,
+            "{ours} against {reference}: {deviation:e}"
+        );
+    }
+}
