@@ -143,6 +143,24 @@ impl Taylor {
         })
     }
 
+    /// pH of its mash in distilled water.
+    #[must_use]
+    pub const fn distilled_ph(self) -> Estimate<Ph> {
+        self.distilled_ph
+    }
+
+    /// a₁ in meq/(kg·pH), a₂ in meq/(kg·pH²), a₃ in meq/(kg·pH³).
+    #[must_use]
+    pub const fn coefficients(self) -> [f64; 3] {
+        [self.a1, self.a2, self.a3]
+    }
+
+    /// One standard deviation of the buffering, relative to it.
+    #[must_use]
+    pub fn relative_sd(self) -> RelativeSd {
+        RelativeSd::clamped(self.relative_sd)
+    }
+
     fn slope(self, u: f64) -> f64 {
         self.unclamped_slope(u).max(LEAST_BUFFERING)
     }
