@@ -26,6 +26,15 @@ pub struct Composition {
     pub assumed: Vec<Assumption>,
 }
 
+impl Composition {
+    /// A water from figures that may come from several reports, at most one for each
+    /// analyte. What is missing is treated as in
+    /// [`Assessment::composition`](super::Assessment::composition).
+    pub fn of(figures: Vec<Figure>, ph_temperature: Option<Celsius>) -> Result<Self, NotEnough> {
+        composition(&Figures::new(figures), ph_temperature, &[])
+    }
+}
+
 /// One thing taken for granted.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Assumption {

@@ -14,7 +14,10 @@ pub struct Figure {
 }
 
 impl Figure {
-    pub(super) const fn new(canonical: CanonicalValue, sd: f64) -> Self {
+    /// A figure known to within `sd`, one standard deviation in its canonical unit;
+    /// for what was estimated from several reports.
+    #[must_use]
+    pub const fn new(canonical: CanonicalValue, sd: f64) -> Self {
         Self { canonical, sd }
     }
 

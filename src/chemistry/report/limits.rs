@@ -4,7 +4,7 @@
 //! means in law is for the brewery and its authority to say.
 
 use super::analyte::Analyte;
-use super::assessment::Assessment;
+use super::figure::Figure;
 use super::finding::amount;
 use super::reading::capitalised;
 use super::typed::Qualifier;
@@ -250,12 +250,15 @@ pub struct PotableFinding {
     pub sentence: String,
 }
 
-/// Every reported figure that lies outside the limits of a set.
+/// Every figure that lies outside the limits of a set.
 #[must_use]
-pub fn potable_findings(assessment: &Assessment, set: LimitSet) -> Vec<PotableFinding> {
+pub fn potable_findings(figures: &[Figure], set: LimitSet) -> Vec<PotableFinding> {
     let mut findings = Vec::new();
     for limit in set.limits() {
-        let Some(figure) = assessment.figure(limit.analyte) else {
+        let Some(figure) = figures
+            .iter()
+            .find(|figure| figure.analyte() == limit.analyte)
+        else {
             continue;
         };
         let value = figure.canonical().get();

@@ -161,7 +161,9 @@ fn potable_limits_are_compared_in_their_own_basis() {
     // and with WHO.
     let above = |nitrate: &'static str, set| {
         let assessment = laboratory(&[(A::Nitrate, U::MgPerL, nitrate)]);
-        potable_findings(&assessment, set).into_iter().next()
+        potable_findings(assessment.figures(), set)
+            .into_iter()
+            .next()
     };
     let found = above("45", LimitSet::UnitedStates).unwrap();
     assert_eq!(found.standing, Standing::Above);
@@ -188,7 +190,7 @@ fn no_potable_finding_speaks_of_the_law() {
             let text = format!("{:.4}", limit.high() * 1.05);
             let unit = limit.analyte().canonical_unit();
             let assessment = laboratory(&[(limit.analyte(), unit, &text)]);
-            let findings = potable_findings(&assessment, set);
+            let findings = potable_findings(assessment.figures(), set);
             let [found] = findings.as_slice() else {
                 panic!("{set:?} {limit:?}");
             };
