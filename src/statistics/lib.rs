@@ -8,10 +8,12 @@
 //!
 //! - [`measurement`]: how precise a method of testing is.
 //! - [`local_level`]: what a source's level is today, and how sure.
+//! - [`learning`]: what mash readings teach about the brewery's malts.
 //!
 //! A history is always evaluated whole. A corrected, backdated or excluded
 //! result needs no undoing: evaluate again.
 
+pub mod learning;
 pub mod local_level;
 mod lower_tail;
 pub mod measurement;

@@ -80,6 +80,9 @@ quantities! {
     Step, "a step", 0.0, 1e12;
     /// A share of the whole, 0 to 1.
     Share, "a share", 0.0, 1.0;
+    /// Share of the squared error that a model removes: 1 at best, 0 for no
+    /// better, below 0 for worse.
+    Skill, "a skill", -1e12, 1.0;
     /// Drift of a level: variance gained per day, in the square of the caller's
     /// unit. To show it, use [`Drift::over`].
     Drift, "a drift", 1e-30, 1e24;
