@@ -4,11 +4,12 @@
 //! outcomes, shows them as pages and serves the same operations as a JSON API.
 //!
 //! The code is grouped by what a brewer would call it: sources, shelf,
-//! malts, beers, plans, [`people`], [`record`], [`brewery`]. Each group
+//! malts, [`beers`], plans, [`people`], [`record`], [`brewery`]. Each group
 //! has its nouns in `mod.rs`, its rules in `operations.rs`, its SQL in `store.rs`, and
 //! two doors, `pages.rs` and `api.rs`. [`web`] is what both doors share. Start with
 //! [`web::router`].
 
+pub mod beers;
 pub mod brewery;
 pub mod config;
 pub mod db;

@@ -7,5 +7,6 @@
     reason = "one program: its modules speak to each other"
 )]
 
+mod beers;
 mod desk;
 mod people;

@@ -1,0 +1,242 @@
+//! Making, changing, retiring and reading beers.
+
+use super::api::NewBeerBody;
+use super::{Beer, MaltName, NewBeer, store};
+use crate::db::Db;
+use crate::error::{Error, breaks_unique};
+use crate::id::BeerId;
+use crate::input::Problems;
+use crate::people::{Member, Permission};
+use crate::record;
+
+/// What a list of beers is sorted by.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Sort {
+    /// The name.
+    #[default]
+    Name,
+    /// The size of a batch.
+    Batch,
+    /// The mass of the grist.
+    Grist,
+    /// The mash pH aimed at.
+    MashPh,
+}
+
+impl Sort {
+    /// Every order.
+    pub const ALL: [Self; 4] = [Self::Name, Self::Batch, Self::Grist, Self::MashPh];
+
+    /// As an address carries it.
+    pub const fn key(self) -> &'static str {
+        match self {
+            Self::Name => "name",
+            Self::Batch => "batch",
+            Self::Grist => "grist",
+            Self::MashPh => "mash_ph",
+        }
+    }
+
+    /// The order with this key.
+    pub fn from_key(key: &str) -> Option<Self> {
+        Self::ALL.into_iter().find(|sort| sort.key() == key)
+    }
+}
+
+/// Which part of the list of beers a page shows, and how.
+#[derive(Clone, Copy, Debug)]
+pub struct ListAs {
+    /// Those in use, or the retired ones.
+    pub in_use: bool,
+    /// Sorted by this.
+    pub sort: Sort,
+    /// Largest, or last of the alphabet, first.
+    pub descending: bool,
+    /// How many at most.
+    pub limit: i64,
+    /// After how many.
+    pub offset: i64,
+}
+
+/// One page of beers, and how many there are in all.
+pub async fn page(db: &Db, by: &Member, list: &ListAs) -> Result<(Vec<Beer>, i64), Error> {
+    by.may(Permission::Read)?;
+    store::page(&mut *db.snapshot().await?, list).await
+}
+
+/// Every beer in use, by name.
+pub async fn list_in_use(db: &Db, by: &Member) -> Result<Vec<Beer>, Error> {
+    let all = ListAs {
+        in_use: true,
+        sort: Sort::Name,
+        descending: false,
+        limit: -1,
+        offset: 0,
+    };
+    Ok(page(db, by, &all).await?.0)
+}
+
+/// Up to `limit` beers made after this one, retired ones too, in the order they were
+/// made.
+pub async fn list_after(
+    db: &Db,
+    by: &Member,
+    after: Option<BeerId>,
+    limit: i64,
+) -> Result<Vec<Beer>, Error> {
+    by.may(Permission::Read)?;
+    store::list_after(&mut *db.snapshot().await?, after, limit).await
+}
+
+/// One beer.
+pub async fn find(db: &Db, by: &Member, id: BeerId) -> Result<Beer, Error> {
+    by.may(Permission::Read)?;
+    store::find(&mut *db.snapshot().await?, id)
+        .await?
+        .ok_or(Error::NotFound("beer"))
+}
+
+/// Every malt a grist may name, retired ones too, by name.
+pub async fn malts(db: &Db, by: &Member) -> Result<Vec<MaltName>, Error> {
+    by.may(Permission::Read)?;
+    store::malts(&mut *db.reader().await?).await
+}
+
+/// Makes a beer.
+pub async fn create(db: &Db, by: &Member, new: NewBeer) -> Result<Beer, Error> {
+    by.may(Permission::KeepBeers)?;
+    let mut tx = db.begin().await?;
+    check_malts(&mut tx, &new).await?;
+    let beer = new.kept_as(BeerId::new(), 1);
+    store::insert(&mut tx, &beer)
+        .await
+        .map_err(|error| name_taken(error, &beer.name))?;
+    record::append(
+        &mut tx,
+        by,
+        record::Change::created("beer", beer.id, &beer.name, &describe(&beer)),
+    )
+    .await?;
+    tx.commit().await?;
+    Ok(beer)
+}
+
+/// Replaces a beer. `read_version`: the version the caller changed.
+pub async fn revise(
+    db: &Db,
+    by: &Member,
+    id: BeerId,
+    new: NewBeer,
+    read_version: Option<i64>,
+) -> Result<Beer, Error> {
+    by.may(Permission::KeepBeers)?;
+    let mut tx = db.begin().await?;
+    let before = store::find(&mut tx, id)
+        .await?
+        .ok_or(Error::NotFound("beer"))?;
+    refuse_stale(&before, read_version)?;
+    check_malts(&mut tx, &new).await?;
+    let after = new.kept_as(id, before.version + 1);
+    store::update(&mut tx, &after)
+        .await
+        .map_err(|error| name_taken(error, &after.name))?;
+    record::append(
+        &mut tx,
+        by,
+        record::Change::changed(
+            "beer",
+            id,
+            &after.name,
+            &describe(&before),
+            &describe(&after),
+        ),
+    )
+    .await?;
+    tx.commit().await?;
+    Ok(after)
+}
+
+/// Retires a beer or takes it back.
+pub async fn set_in_use(
+    db: &Db,
+    by: &Member,
+    id: BeerId,
+    in_use: bool,
+    read_version: Option<i64>,
+) -> Result<Beer, Error> {
+    by.may(Permission::KeepBeers)?;
+    let mut tx = db.begin().await?;
+    let before = store::find(&mut tx, id)
+        .await?
+        .ok_or(Error::NotFound("beer"))?;
+    refuse_stale(&before, read_version)?;
+    if before.in_use == in_use {
+        return Ok(before);
+    }
+    let after = Beer {
+        in_use,
+        version: before.version + 1,
+        ..before
+    };
+    store::update(&mut tx, &after).await?;
+    let action = if in_use { "took back" } else { "retired" };
+    let change = record::Change::event(action, "beer", id, &after.name);
+    record::append(&mut tx, by, change).await?;
+    tx.commit().await?;
+    Ok(after)
+}
+
+impl NewBeer {
+    fn kept_as(self, id: BeerId, version: i64) -> Beer {
+        Beer {
+            id,
+            name: self.name,
+            grist: self.grist,
+            volumes: self.volumes,
+            spec: self.spec,
+            notes: self.notes,
+            in_use: self.in_use,
+            version,
+        }
+    }
+}
+
+/// Refuses malts that are not there or no longer used, each at its line.
+async fn check_malts(tx: &mut sqlx::SqliteConnection, new: &NewBeer) -> Result<(), Error> {
+    let malts = store::malts(tx).await?;
+    let mut problems = Problems::new();
+    for (line, row) in new.grist.iter().zip(&new.rows) {
+        let field = format!("grist.{row}.malt_id");
+        match malts.iter().find(|malt| malt.id == line.malt_id) {
+            None => problems.add(field, "There is no such malt. Choose another."),
+            Some(malt) if !malt.in_use => problems.add(
+                field,
+                format!("“{}” is retired. Choose another malt.", malt.name),
+            ),
+            Some(_) => {}
+        }
+    }
+    problems.finish()
+}
+
+fn refuse_stale(before: &Beer, read_version: Option<i64>) -> Result<(), Error> {
+    if read_version.is_some_and(|read| read != before.version) {
+        return Err(Error::Conflict(format!(
+            "Somebody else changed “{}” meanwhile. Reload it and change it again",
+            before.name
+        )));
+    }
+    Ok(())
+}
+
+fn name_taken(error: sqlx::Error, name: &str) -> Error {
+    if breaks_unique(&error) {
+        Error::field("name", format!("A beer named “{name}” exists already."))
+    } else {
+        error.into()
+    }
+}
+
+fn describe(beer: &Beer) -> serde_json::Value {
+    serde_json::to_value(NewBeerBody::from(beer)).unwrap_or_default()
+}
