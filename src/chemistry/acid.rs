@@ -24,7 +24,7 @@ pub enum Acid {
 }
 
 /// The gas constant, J/(mol·K). Source: CODATA 2018, exact by definition of the SI.
-const GAS_CONSTANT: f64 = 8.314_462_618;
+pub(crate) const GAS_CONSTANT: f64 = 8.314_462_618;
 
 /// One ionisation step: pK and enthalpy at 25 °C, and a constant heat capacity.
 #[derive(Clone, Copy, Debug)]

@@ -15,6 +15,7 @@
 //! Every constant carries its source; [`references`] holds each source once.
 
 pub mod acid;
+pub mod carbonate;
 pub mod ion;
 pub mod mash;
 pub mod material;

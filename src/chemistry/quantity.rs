@@ -84,6 +84,15 @@ quantities! {
     MgPerLAsCaCO3, "mg/L as CaCO₃", -100_000.0, 500_000.0;
     /// Amount concentration, mmol/L.
     MmolPerL, "mmol/L", 0.0, 50_000.0;
+    /// Ionic strength, mol per kg of water.
+    MolPerKg, "mol/kg", 0.0, 50.0;
+    /// Activity of a dissolved species, molal scale.
+    Activity, "", 0.0, 100.0;
+    /// Saturation index, log₁₀ of ion activity product over solubility product: above
+    /// zero a mineral may precipitate, below it may dissolve.
+    SaturationIndex, "", -1_000.0, 100.0;
+    /// Partial pressure of a gas, atm.
+    Atmospheres, "atm", 0.0, 10_000.0;
     /// Charge concentration, meq/L. Alkalinity may be negative (mineral acidity).
     MeqPerL, "meq/L", -50_000.0, 50_000.0;
     /// Charge (acid or base), meq. Positive means what the name in front of it says.

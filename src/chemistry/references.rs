@@ -41,6 +41,38 @@ pub const PLUMMER_BUSENBERG_1982: Reference = Reference {
     place: "Geochim. Cosmochim. Acta 46, 1011",
 };
 
+/// Activity coefficients of single ions, water properties, and sulfate pairs.
+pub const TRUESDELL_JONES_1974: Reference = Reference {
+    authors: "A. H. Truesdell, B. F. Jones",
+    year: 1974,
+    title: "WATEQ, a computer program for calculating chemical equilibria of natural waters",
+    place: "J. Res. U.S. Geol. Surv. 2, 233",
+};
+
+/// Constants of ion pairs and minerals, collected and revised.
+pub const NORDSTROM_1990: Reference = Reference {
+    authors: "D. K. Nordstrom, L. N. Plummer, D. Langmuir, E. Busenberg, H. M. May, B. F. Jones, D. L. Parkhurst",
+    year: 1990,
+    title: "Revised chemical equilibrium data for major water-mineral reactions and their limitations",
+    place: "ACS Symp. Ser. 416, 398; as compiled in WATEQ4F, USGS Open-File Report 91-183",
+};
+
+/// The program the engine is compared with, and its database phreeqc.dat.
+pub const PHREEQC_3: Reference = Reference {
+    authors: "D. L. Parkhurst, C. A. J. Appelo",
+    year: 2013,
+    title: "Description of input and examples for PHREEQC version 3",
+    place: "U.S. Geological Survey Techniques and Methods 6-A43; database phreeqc.dat as shipped with 3.7.3",
+};
+
+/// Stability of metal complexes, here those of citrate.
+pub const NIST_46: Reference = Reference {
+    authors: "A. E. Martell, R. M. Smith, R. J. Motekaitis",
+    year: 2004,
+    title: "NIST critically selected stability constants of metal complexes",
+    place: "NIST Standard Reference Database 46, as compiled in minteq.v4.dat",
+};
+
 /// Ionisation of phosphoric, sulfuric and citric acid with temperature.
 pub const GOLDBERG_2002: Reference = Reference {
     authors: "R. N. Goldberg, N. Kishore, R. M. Lennen",

@@ -1,7 +1,7 @@
 //! The composition of a water.
 
 use crate::ion::{Ion, IonMap};
-use crate::quantity::{Celsius, MeqPerL, MgPerL, MgPerLAsCaCO3, MmolPerL, Ph};
+use crate::quantity::{Celsius, Litres, MeqPerL, MgPerL, MgPerLAsCaCO3, MmolPerL, Ph};
 
 /// What is dissolved in a water, as totals that are conserved when waters are
 /// mixed, heated in a closed vessel, or given salts and acids.
@@ -27,6 +27,28 @@ impl Water {
             ions: IonMap::from_fn(|_| MgPerL::constant(0.0)),
             alkalinity: MeqPerL::constant(0.0),
             carbon: MmolPerL::constant(0.0),
+        }
+    }
+
+    /// These waters together, in a closed vessel: totals add up by volume. Pure water
+    /// when there is no volume at all.
+    #[must_use]
+    pub fn mixed(parts: &[(Self, Litres)]) -> Self {
+        let litres: f64 = parts.iter().map(|(_, volume)| volume.get()).sum();
+        if litres <= 0.0 {
+            return Self::pure();
+        }
+        let mean = |total: &dyn Fn(&Self) -> f64| {
+            let sum: f64 = parts
+                .iter()
+                .map(|(water, volume)| total(water) * volume.get())
+                .sum();
+            sum / litres
+        };
+        Self {
+            ions: IonMap::from_fn(|ion| MgPerL::clamped(mean(&|water| water.ions[ion].get()))),
+            alkalinity: MeqPerL::clamped(mean(&|water| water.alkalinity.get())),
+            carbon: MmolPerL::clamped(mean(&|water| water.carbon.get())),
         }
     }
 

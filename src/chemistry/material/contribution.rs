@@ -52,6 +52,16 @@ impl Contribution {
         }
     }
 
+    /// So much of a pure acid.
+    #[must_use]
+    pub fn of_acid(acid: Acid, amount: Millimoles) -> Self {
+        let mut new = Self::nothing();
+        let anion = acid.anion();
+        new.ions[anion] = Milligrams::clamped(amount.get() * anion.grams_per_mol());
+        new.alkalinity = Meq::clamped(-amount.get() * acid.alkalinity_destroyed().get());
+        new
+    }
+
     /// This contribution, `amount` times.
     #[must_use]
     pub fn times(&self, amount: DoseAmount) -> Self {
