@@ -275,6 +275,35 @@ impl Problems {
         }
     }
 
+    /// A calendar date that may be missing.
+    pub fn optional_date(&mut self, field: &str, text: &str) -> Option<jiff::civil::Date> {
+        if text.trim().is_empty() {
+            None
+        } else {
+            self.date(field, text)
+        }
+    }
+
+    /// A calendar date that may be missing and, when there, is not after `today`.
+    pub fn past_date(
+        &mut self,
+        field: &str,
+        text: &str,
+        today: jiff::civil::Date,
+    ) -> Option<jiff::civil::Date> {
+        let date = self.optional_date(field, text)?;
+        if date > today {
+            self.add(
+                field,
+                format!(
+                    "{date} has not come yet; today is {today}. Enter today or an earlier day."
+                ),
+            );
+            return None;
+        }
+        Some(date)
+    }
+
     /// Ends the checking: the problems if there were any.
     pub fn finish(self) -> Result<(), Error> {
         if self.found.is_empty() {

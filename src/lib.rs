@@ -3,7 +3,7 @@
 //! One server with one SQLite file keeps water tests, treatment plans and mash-pH
 //! outcomes, shows them as pages and serves the same operations as a JSON API.
 //!
-//! The code is grouped by what a brewer would call it: sources, shelf,
+//! The code is grouped by what a brewer would call it: sources, [`shelf`],
 //! malts, [`beers`], plans, [`people`], [`record`], [`brewery`]. Each group
 //! has its nouns in `mod.rs`, its rules in `operations.rs`, its SQL in `store.rs`, and
 //! two doors, `pages.rs` and `api.rs`. [`web`] is what both doors share. Start with
@@ -19,4 +19,5 @@ pub mod input;
 pub mod people;
 pub mod record;
 pub mod server;
+pub mod shelf;
 pub mod web;

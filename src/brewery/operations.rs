@@ -18,6 +18,11 @@ pub async fn settings(db: &Db) -> Result<Settings, Error> {
         .unwrap_or_default())
 }
 
+/// Today's date in the brewery's time zone.
+pub async fn today(db: &Db) -> Result<jiff::civil::Date, Error> {
+    Ok(crate::web::format::today(&settings(db).await?.time_zone))
+}
+
 impl TryFrom<SettingsBody> for Settings {
     type Error = Error;
 

@@ -78,6 +78,19 @@ pub struct ListQuery {
 }
 
 impl ListQuery {
+    /// The identifier the page before ended with, for lists in order of creation.
+    pub fn after<I: std::str::FromStr>(&self) -> Result<Option<I>, Error> {
+        let cursor = self.cursor.as_deref().map(str::trim);
+        cursor
+            .filter(|cursor| !cursor.is_empty())
+            .map(|cursor| {
+                cursor
+                    .parse()
+                    .map_err(|_| Error::field("cursor", "Send the next_cursor of the page before."))
+            })
+            .transpose()
+    }
+
     /// How many items to return.
     pub fn limit(&self) -> Result<i64, Error> {
         match self.limit.as_deref().map(str::trim) {

@@ -84,6 +84,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::record::api::routes())
         .merge(crate::brewery::api::routes())
         .merge(crate::beers::api::routes())
+        .merge(crate::shelf::api::routes())
         .split_for_parts();
     let api = api
         .fallback(problem::no_such_endpoint)

@@ -10,3 +10,4 @@
 mod beers;
 mod desk;
 mod people;
+mod shelf;
