@@ -37,12 +37,12 @@ impl TryFrom<NewBeerBody> for NewBeer {
         let notes = problems.optional_text("notes", &body.notes, 2_000);
         let volumes = volumes(&body, &mut problems);
         let (grist, rows) = grist(&body.grist, &mut problems);
-        let spec = problems.within("spec", |problems| {
-            spec(&body.spec, volumes.as_ref(), problems)
-        });
         if let Some(volumes) = &volumes {
             thickness(volumes, &grist, &mut problems);
         }
+        let spec = problems.within("spec", |problems| {
+            spec(&body.spec, volumes.as_ref(), problems)
+        });
         problems.finish()?;
         match (name, volumes, spec) {
             (Some(name), Some(volumes), Some(spec)) => Ok(Self {
@@ -242,7 +242,7 @@ where
     };
     // As it was sent, so that the sentence names the figure as it was typed.
     let figure = |number: &Number| {
-        let number = number.parse().map(figure).unwrap_or_default();
+        let number = number.parse().unwrap_or_default();
         format!("{number} {unit}").trim_end().to_owned()
     };
     if let (Some(lowest), Some(highest)) = (low, high)

@@ -10,8 +10,10 @@ use chemistry::quantity::{Kilograms, Litres};
 pub mod api;
 mod check;
 pub mod operations;
+pub mod pages;
 pub mod spec;
 pub mod store;
+mod words;
 
 pub use spec::{Spec, Window};
 

@@ -19,13 +19,21 @@ pub enum Sort {
     Batch,
     /// The mass of the grist.
     Grist,
+    /// Mash liquor per mass of grist.
+    Thickness,
     /// The mash pH aimed at.
     MashPh,
 }
 
 impl Sort {
     /// Every order.
-    pub const ALL: [Self; 4] = [Self::Name, Self::Batch, Self::Grist, Self::MashPh];
+    pub const ALL: [Self; 5] = [
+        Self::Name,
+        Self::Batch,
+        Self::Grist,
+        Self::Thickness,
+        Self::MashPh,
+    ];
 
     /// As an address carries it.
     pub const fn key(self) -> &'static str {
@@ -33,6 +41,7 @@ impl Sort {
             Self::Name => "name",
             Self::Batch => "batch",
             Self::Grist => "grist",
+            Self::Thickness => "thickness",
             Self::MashPh => "mash_ph",
         }
     }

@@ -216,22 +216,22 @@ pub(super) async fn page(
         .bind(list.in_use)
         .fetch_one(&mut *db)
         .await?;
-    let order = match (list.sort, list.descending) {
-        (Sort::Name, false) => "name ASC",
-        (Sort::Name, true) => "name DESC",
-        (Sort::Batch, false) => "batch_l ASC, name",
-        (Sort::Batch, true) => "batch_l DESC, name",
-        (Sort::Grist, false) => "grist_kilograms ASC, name",
-        (Sort::Grist, true) => "grist_kilograms DESC, name",
-        (Sort::MashPh, false) => "mash_ph_target ASC, name",
-        (Sort::MashPh, true) => "mash_ph_target DESC, name",
+    let order = match list.sort {
+        Sort::Name => "name",
+        Sort::Batch => "batch_l",
+        Sort::Grist => "grist_kilograms",
+        Sort::Thickness => "mash_l / grist_kilograms",
+        Sort::MashPh => "mash_ph_target",
     };
-    // The order is one of the eight texts above, never what somebody typed.
+    let direction = if list.descending { "DESC" } else { "ASC" };
+    // Order and direction are texts from above, never what somebody typed.
     let query = format!(
         "SELECT id, name, batch_l, mash_l, sparge_l, mash_ph_target, mash_ph_low, mash_ph_high,
-                highest_lactate_mg_per_l, highest_sodium_mg_per_l, notes, in_use, version,
-                (SELECT sum(kilograms) FROM beer_grist WHERE beer_id = beers.id) AS grist_kilograms
-         FROM beers WHERE in_use = ? ORDER BY {order} LIMIT ? OFFSET ?"
+                highest_lactate_mg_per_l, highest_sodium_mg_per_l, notes, in_use, version
+         FROM beers
+         JOIN (SELECT beer_id, sum(kilograms) AS grist_kilograms FROM beer_grist GROUP BY beer_id)
+             ON beer_id = id
+         WHERE in_use = ? ORDER BY {order} {direction}, name LIMIT ? OFFSET ?"
     );
     let rows = sqlx::query(sqlx::AssertSqlSafe(query))
         .bind(list.in_use)

@@ -239,7 +239,13 @@ fn flatten(prefix: &str, value: &Value, into: &mut Vec<(String, String)>) {
             .enumerate()
             .for_each(|(i, value)| flatten(&join(&i.to_string()), value, into)),
         Value::String(text) => into.push((prefix.to_owned(), text.clone())),
-        Value::Number(number) => into.push((prefix.to_owned(), number.to_string())),
+        // A number as people write it: 50, not 50.0.
+        Value::Number(number) => {
+            let text = number
+                .as_f64()
+                .map_or_else(|| number.to_string(), |n| n.to_string());
+            into.push((prefix.to_owned(), text));
+        }
         Value::Bool(yes) => into.push((prefix.to_owned(), yes.to_string())),
     }
 }

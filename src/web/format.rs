@@ -87,6 +87,8 @@ pub fn done_sentence(key: &str) -> Option<&'static str> {
         "password" => "The password is changed. Sign in with it from now on.",
         "revoked" => "Revoked. It no longer opens anything.",
         "removed" => "Removed.",
+        "retired" => "Retired. It stays in the history and can be taken back.",
+        "restored" => "Taken back into use.",
         _ => return None,
     })
 }

@@ -73,6 +73,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::people::pages::routes())
         .merge(crate::record::pages::routes())
         .merge(crate::brewery::pages::routes())
+        .merge(crate::beers::pages::routes())
         .fallback(problem::no_such_page)
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))
