@@ -102,6 +102,7 @@ impl Class {
 /// γ of every class and its reciprocal, at one ionic strength.
 #[derive(Clone, Copy, Debug)]
 pub(super) struct Coefficients {
+    pub(super) ionic_strength: f64,
     pub(super) gamma: [f64; CLASSES],
     pub(super) inverse: [f64; CLASSES],
 }
@@ -124,6 +125,7 @@ impl Coefficients {
             ln.exp()
         });
         Self {
+            ionic_strength,
             gamma,
             inverse: gamma.map(f64::recip),
         }

@@ -23,6 +23,9 @@ pub(super) const HIGHEST_PH: f64 = 13.0;
 const STRONGEST: f64 = 0.5;
 /// Beyond this the coefficients run away; no solution is sought there.
 const RUNAWAY: f64 = 1.0;
+/// How far ionic strength is settled, relative: of an answer, and on the way to it.
+const FINE: f64 = 1e-11;
+const ROUGH: f64 = 1e-3;
 
 const SPECIES: usize = Species::ALL.len();
 const CARBONATE: usize = Anion::Carbonate as usize;
@@ -210,41 +213,48 @@ impl<'a> Equilibrium<'a> {
     }
 
     /// Finds the pH whose alkalinity is the total.
+    ///
+    /// Far from it a rough distribution points the way as well as a fine one.
     pub(super) fn find_ph(&mut self) -> Result<(), CarbonateError> {
         let (mut low, mut high) = (LOWEST_PH, HIGHEST_PH);
         let mut ph = self.first_guess().clamp(low, high);
+        let mut tolerance = ROUGH;
         let mut before: Option<(f64, f64)> = None;
         for _ in 0..100 {
-            self.settle(ph);
+            self.settle(ph, tolerance);
             let excess = self.alkalinity - self.totals.alkalinity;
+            // A rough distribution may mistake the side by so much.
+            let slack = 100.0 * tolerance;
             if excess > 0.0 {
-                high = ph;
+                high = high.min(ph + slack);
             } else {
-                low = ph;
+                low = low.max(ph - slack);
             }
-            // The buffering leaves out how metals and activities follow; two points
-            // of the true curve know that, when they lie apart enough to tell.
+            // The buffering leaves out how metals and activities follow, which matters
+            // where an anion holds nearly all of a metal; two points of the true curve
+            // know that, when they lie apart enough to tell.
             let mut slope = self.buffering;
             if let Some((ph_before, excess_before)) = before {
                 let secant = (excess - excess_before) / (ph - ph_before);
-                if (0.3..3.0).contains(&(secant / slope)) {
+                if (0.03..30.0).contains(&(secant / slope)) {
                     slope = secant;
                 }
             }
             before = Some((ph, excess));
             let step = -excess / slope;
-            if step.abs() <= 1e-9 {
+            if step.abs() <= 1e-9 && tolerance <= FINE {
                 return self.trusted();
             }
-            let next = ph + step.clamp(-1.0, 1.0);
-            ph = if low < next && next < high {
-                next
-            } else {
-                0.5 * (low + high)
-            };
-            if high - low < 1e-9 {
+            let mut next = (ph + step.clamp(-1.0, 1.0)).clamp(LOWEST_PH, HIGHEST_PH);
+            if next == ph && step.abs() > 1e-9 {
                 break;
             }
+            if !(low..=high).contains(&next) {
+                next = 0.5 * (low + high);
+            }
+            ph = next;
+            // Each step leaves about the square of itself to go.
+            tolerance = (0.1 * step * step).clamp(FINE, ROUGH);
         }
         Err(CarbonateError::BeyondPh(MeqPerL::clamped(
             1000.0 * self.totals.alkalinity,
@@ -253,7 +263,7 @@ impl<'a> Equilibrium<'a> {
 
     /// Finds the distribution at one pH.
     pub(super) fn settle_at(&mut self, ph: f64) -> Result<(), CarbonateError> {
-        self.settle(ph);
+        self.settle(ph, FINE);
         self.trusted()
     }
 
@@ -312,14 +322,14 @@ impl<'a> Equilibrium<'a> {
     }
 
     /// The distribution at one pH, and with it the alkalinity.
-    fn settle(&mut self, ph: f64) {
+    fn settle(&mut self, ph: f64, tolerance: f64) {
         self.ph = ph;
         // The ionic strength settles by a factor of about thirty a round; more than a
         // few rounds happen only where the coefficients run away.
         for _ in 0..40 {
-            let before = self.ionic_strength;
-            self.distribute();
-            if (self.ionic_strength - before).abs() <= 1e-11 * self.ionic_strength {
+            self.distribute(tolerance);
+            let change = self.ionic_strength - self.coefficients.ionic_strength;
+            if change.abs() <= tolerance * self.ionic_strength {
                 break;
             }
             self.coefficients =
@@ -328,7 +338,7 @@ impl<'a> Equilibrium<'a> {
     }
 
     /// The distribution with the coefficients held, and the ionic strength of it.
-    fn distribute(&mut self) {
+    fn distribute(&mut self, tolerance: f64) {
         let protons = 10f64.powf(-self.ph);
         let proton_powers = [
             1.0 / protons,
@@ -389,7 +399,7 @@ impl<'a> Equilibrium<'a> {
             }
             _ => None,
         };
-        self.take_turns(&amount, &alkalinity, held_carbonate);
+        self.take_turns(&amount, &alkalinity, held_carbonate, 0.01 * tolerance);
 
         let active = &self.active[..self.active_count];
         let mut charge_squared = self.totals.bystander_charge;
@@ -435,7 +445,13 @@ impl<'a> Equilibrium<'a> {
     }
 
     /// Free cations and anions, each in turn from what the others leave of its total.
-    fn take_turns(&mut self, amount: &ByPair, alkalinity: &ByPair, held_carbonate: Option<f64>) {
+    fn take_turns(
+        &mut self,
+        amount: &ByPair,
+        alkalinity: &ByPair,
+        held_carbonate: Option<f64>,
+        tolerance: f64,
+    ) {
         for _ in 0..1000 {
             let mut moved = 0.0_f64;
             for anion in 0..Anion::None as usize {
@@ -461,7 +477,7 @@ impl<'a> Equilibrium<'a> {
                     self.cations[cation] = free;
                 }
             }
-            if moved <= 1e-13 {
+            if moved <= tolerance {
                 break;
             }
         }
@@ -491,5 +507,82 @@ fn hydrogen(alkalinity: f64, product: f64) -> f64 {
         product / (half + root)
     } else {
         root - half
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::quantity::{Celsius, MgPerL, MmolPerL};
+
+    /// Alkalinity, carbon, calcium, sulfate, phosphate, citrate, mmol/L.
+    const AWKWARD: [[f64; 6]; 11] = [
+        [0.0, 0.0, 0.0, 0.0, 0.0, 0.0],
+        [0.0, 0.0, 15.0, 15.0, 0.0, 0.0],
+        [4.0, 4.0, 2.0, 1.0, 0.0, 0.0],
+        [8.0, 4.0, 2.0, 1.0, 0.0, 0.0],
+        [-2.0, 3.0, 2.0, 1.0, 1.0, 1.0],
+        [0.0, 0.0, 3.0, 0.0, 0.0, 3.0],
+        [-9.0, 1.0, 3.0, 0.0, 0.0, 3.0],
+        [10.0, 0.0, 5.0, 0.0, 0.0, 0.0],
+        [1e-4, 30.0, 0.0, 0.0, 0.0, 0.0],
+        // Nearly all calcium held by phosphate, and by citrate.
+        [10.957, 0.0, 2.485, 0.0, 8.371, 0.0],
+        [0.5, 0.0, 5.0, 0.0, 5.0, 5.0],
+    ];
+
+    /// The textbook method: sixty halvings of the pH scale, each settled in full.
+    fn bisected(equilibrium: &mut Equilibrium) -> f64 {
+        let (mut low, mut high) = (LOWEST_PH, HIGHEST_PH);
+        for _ in 0..60 {
+            let middle = 0.5 * (low + high);
+            equilibrium.settle(middle, FINE);
+            if equilibrium.alkalinity < equilibrium.totals.alkalinity {
+                low = middle;
+            } else {
+                high = middle;
+            }
+        }
+        0.5 * (low + high)
+    }
+
+    #[test]
+    fn newton_finds_what_sixty_halvings_find_in_awkward_waters() {
+        for celsius in [0.0, 25.0, 90.0] {
+            let constants = Constants::at(Celsius::new(celsius).unwrap()).unwrap();
+            for water in AWKWARD {
+                let [alkalinity, carbon, calcium, sulfate, phosphate, citrate] = water;
+                let mut awkward = Water::pure();
+                for (ion, mmol) in [
+                    (Ion::Calcium, calcium),
+                    (Ion::Sulfate, sulfate),
+                    (Ion::Phosphate, phosphate),
+                    (Ion::Citrate, citrate),
+                ] {
+                    awkward.ions[ion] = MgPerL::new(mmol * ion.grams_per_mol()).unwrap();
+                }
+                awkward.alkalinity = MeqPerL::new(alkalinity).unwrap();
+                awkward.carbon = MmolPerL::new(carbon).unwrap();
+                for carbon in [
+                    CLOSED,
+                    Carbon::Kept {
+                        carbon_dioxide_weight: 1e12,
+                    },
+                    Carbon::Held { activity: 1e-5 },
+                ] {
+                    let totals = Totals::of(&awkward);
+                    let slow = bisected(&mut Equilibrium::new(totals, carbon, &constants));
+                    let mut fast = Equilibrium::new(totals, carbon, &constants);
+                    fast.find_ph().unwrap();
+                    // Unbuffered water leaves 1e-7 of the pH to the last digit of its
+                    // amounts.
+                    assert!(
+                        (fast.ph - slow).abs() < 1e-7,
+                        "{water:?} {carbon:?} at {celsius}: {} against {slow}",
+                        fast.ph
+                    );
+                }
+            }
+        }
     }
 }

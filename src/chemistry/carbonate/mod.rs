@@ -62,6 +62,15 @@ pub enum CarbonateError {
         /// The alkalinity it has without carbon.
         least: MeqPerL,
     },
+    /// The pH is so low for the alkalinity that only carbon dioxide under pressure,
+    /// above 10 atm, explains it.
+    #[error(
+        "pH {ph} with this alkalinity would need carbon dioxide at more than 10 atm. Check the pH and the alkalinity."
+    )]
+    TooMuchCarbonDioxide {
+        /// The pH given.
+        ph: Ph,
+    },
     /// A mineral cannot form, because one of its parts is absent, or cannot dissolve
     /// far enough.
     #[error("The water cannot be brought into equilibrium with {}.", .0.name())]

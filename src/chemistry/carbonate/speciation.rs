@@ -47,6 +47,8 @@ impl Mineral {
 
 /// A titration does not see less than this, meq/L: 1 mg/L as CaCO₃.
 const UNSEEN_ALKALINITY: f64 = 0.02;
+/// No water that is measured in the open holds more carbon dioxide, atm.
+const HIGHEST_PCO2: f64 = 10.0;
 
 impl Speciation {
     /// The water in a closed vessel: pH from alkalinity and carbon.
@@ -91,7 +93,11 @@ impl Speciation {
             water.alkalinity = MeqPerL::clamped(1000.0 * equilibrium.alkalinity);
         }
         water.carbon = MmolPerL::clamped(1000.0 * equilibrium.carbon());
-        Ok(Self::new(water, &equilibrium, constants))
+        let speciation = Self::new(water, &equilibrium, constants);
+        if speciation.pco2 > HIGHEST_PCO2 {
+            return Err(CarbonateError::TooMuchCarbonDioxide { ph: measured.ph });
+        }
+        Ok(speciation)
     }
 
     pub(super) fn new(water: Water, equilibrium: &Equilibrium, constants: &Constants) -> Self {

@@ -4,8 +4,8 @@ use chemistry::acid::Acid;
 use chemistry::carbonate::{Speciation, Species, dose_to_ph};
 use chemistry::ion::{Ion, IonMap};
 use chemistry::material::Contribution;
-use chemistry::quantity::{Fraction, Litres, MgPerL, Millimoles, Ph};
-use chemistry::water::Water;
+use chemistry::quantity::{Celsius, Fraction, Litres, MgPerL, Millimoles, Ph};
+use chemistry::water::{MeasuredWater, Water};
 use proptest::prelude::*;
 
 use crate::{constants, speciate, water_of};
@@ -135,6 +135,28 @@ proptest! {
         prop_assert!((carbon - water.carbon.get()).abs() < tolerance, "{carbon}, {}", water.carbon);
         let back = speciate(again.water(), temperature);
         prop_assert!((back.ph().get() - ours.ph().get()).abs() < 1e-6);
+    }
+
+    #[test]
+    fn whatever_was_measured_the_figures_are_finite_or_refused(
+        water in any_water(), times in 0.0..100.0_f64, ph in 0.0..14.0_f64,
+        temperature in -5.0..110.0_f64,
+    ) {
+        let measured = MeasuredWater {
+            ions: IonMap::from_fn(|ion| MgPerL::clamped(times * water.ions[ion].get())),
+            alkalinity: water.alkalinity.into(),
+            ph: Ph::new(ph).unwrap(),
+            temperature: Celsius::new(temperature).unwrap(),
+        };
+        if let Ok(ours) = Speciation::of_measured(&measured) {
+            prop_assert!(ours.ionic_strength().get() <= 0.5);
+            for species in Species::ALL {
+                let (amount, activity) = (ours.amount(species).get(), ours.activity(species).get());
+                prop_assert!(amount.is_finite() && activity.is_finite());
+                // Clamping would hide a wrong number at the ends of a unit.
+                prop_assert!(amount < 5_000.0 && activity < 50.0, "{species:?} {amount} {activity}");
+            }
+        }
     }
 
     #[test]

@@ -330,6 +330,13 @@ fn what_cannot_be_is_refused_with_its_reason() {
         panic!("{refused:?}");
     };
     assert!(least.get() > 0.6, "{least}");
+    // pH 4 in water of alkalinity 4 meq/L: 4 × 10^(6.38 − 4) is nearly 1 mol/L of CO₂.
+    let mut water = worked_water();
+    water.ph = Ph::constant(4.0);
+    assert!(matches!(
+        Speciation::of_measured(&water),
+        Err(CarbonateError::TooMuchCarbonDioxide { .. })
+    ));
     let brine = water_of(&[(Ion::Sodium, 1000.0), (Ion::Chloride, 1000.0)], 0.0, 0.0);
     assert!(matches!(
         Speciation::of(&brine, &constants(20.0)),
