@@ -5,6 +5,8 @@
 //!
 //! The code is grouped by what a brewer would call it: sources, [`shelf`],
 //! malts, [`beers`], plans, [`people`], [`record`], [`brewery`]. Each group
+//! The code is grouped by what a brewer would call it: [`sources`], shelf,
+//! malts, beers, plans, [`people`], [`record`], [`brewery`]. Each group
 //! has its nouns in `mod.rs`, its rules in `operations.rs`, its SQL in `store.rs`, and
 //! two doors, `pages.rs` and `api.rs`. [`web`] is what both doors share. Start with
 //! [`web::router`].
@@ -20,4 +22,5 @@ pub mod people;
 pub mod record;
 pub mod server;
 pub mod shelf;
+pub mod sources;
 pub mod web;

@@ -74,6 +74,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::record::pages::routes())
         .merge(crate::brewery::pages::routes())
         .merge(crate::beers::pages::routes())
+        .merge(crate::sources::pages::routes())
         .fallback(problem::no_such_page)
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))
@@ -86,6 +87,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::brewery::api::routes())
         .merge(crate::beers::api::routes())
         .merge(crate::shelf::api::routes())
+        .merge(crate::sources::api::routes())
         .split_for_parts();
     let api = api
         .fallback(problem::no_such_endpoint)

@@ -11,3 +11,4 @@ mod beers;
 mod desk;
 mod people;
 mod shelf;
+mod sources;

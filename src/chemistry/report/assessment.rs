@@ -6,6 +6,7 @@ use super::composition::{Composition, NotEnough, composition};
 use super::figure::{Figure, Figures};
 use super::finding::{Finding, FindingKind, Severity, Verdict};
 use super::inference::{Inference, inferences};
+use super::reading::CanonicalValue;
 use super::{Report, SampleKind, bases, checks};
 use crate::quantity::{Celsius, MicrosiemensPerCm};
 
@@ -37,6 +38,16 @@ impl Assessment {
     #[must_use]
     pub fn figure(&self, analyte: Analyte) -> Option<Figure> {
         self.figures.get(analyte)
+    }
+
+    /// Total alkalinity: as reported, or else from bicarbonate and carbonate.
+    #[must_use]
+    pub fn alkalinity(&self) -> Option<Figure> {
+        self.figure(Analyte::Alkalinity).or_else(|| {
+            let (value, sd) = self.figures.alkalinity_from_bicarbonate()?;
+            let canonical = CanonicalValue::measured(Analyte::Alkalinity, value);
+            Some(Figure::new(canonical, sd))
+        })
     }
 
     /// A water to calculate with, from what was reported and the `accepted`
