@@ -71,8 +71,7 @@ pub enum CarbonateError {
         /// The pH given.
         ph: Ph,
     },
-    /// A mineral cannot form, because one of its parts is absent, or cannot dissolve
-    /// far enough.
-    #[error("The water cannot be brought into equilibrium with {}.", .0.name())]
-    NoEquilibrium(Mineral),
+    /// More of a mineral dissolves than the engine follows, 100 mmol/L.
+    #[error("More than 100 mmol/L of {} would dissolve in this water.", .0.name())]
+    Insatiable(Mineral),
 }

@@ -50,6 +50,9 @@ pub fn open_to(
 
 /// The water in equilibrium with a solid that may dissolve or precipitate freely,
 /// however slow that may be in a tank.
+///
+/// Refused when 100 mmol/L dissolved do not saturate it, and where the water itself
+/// cannot be calculated.
 pub fn saturated(
     water: &Water,
     mineral: Mineral,
@@ -71,19 +74,20 @@ pub fn saturated(
         while above < 0.0 {
             high *= 2.0;
             if high > MOST_DISSOLVED {
-                return Err(CarbonateError::NoEquilibrium(mineral));
+                return Err(CarbonateError::Insatiable(mineral));
             }
             above = excess(high)?;
         }
         root(excess, (0.0, now), (high, above), 1e-9)?
     } else {
-        // With a part all gone nothing is left to precipitate: the product is zero.
-        root(
-            excess,
-            (-available(water, mineral, gas), -1.0),
-            (0.0, now),
-            1e-9,
-        )?
+        // With a part all gone nothing is left to precipitate: the product is zero. So
+        // it is where so much would have gone that the water had turned to acid.
+        let excess = |dissolved: f64| match excess(dissolved) {
+            Err(CarbonateError::BeyondPh(_)) => Ok(-1.0),
+            found => found,
+        };
+        let all = -available(water, mineral, gas);
+        root(excess, (all, -1.0), (0.0, now), 1e-9)?
     };
     Ok(Saturated {
         speciation: speciate(dissolved)?,

@@ -63,7 +63,8 @@ impl Speciation {
     ///
     /// The alkalinity counts as total alkalinity, titrated to its own end point;
     /// a titration to a fixed pH of 4.3 reads up to 0.05 meq/L more unless the
-    /// laboratory corrects for it. An alkalinity too small for its pH by what no
+    /// laboratory corrects for it. Meant for water before treatment: lactate and citrate
+    /// take up acid above any end point. An alkalinity too small for its pH by what no
     /// titration sees (0.02 meq/L) is raised to what the pH asks, with no carbon.
     pub fn of_measured(measured: &MeasuredWater) -> Result<Self, CarbonateError> {
         Self::of_measured_with(measured, &Constants::at(measured.temperature)?)

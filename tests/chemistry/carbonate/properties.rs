@@ -1,14 +1,16 @@
 //! What holds for every water.
 
 use chemistry::acid::Acid;
-use chemistry::carbonate::{Speciation, Species, dose_to_ph};
+use chemistry::carbonate::{
+    Gas, Mineral, Speciation, Species, amount_to_ph, dose_to_ph, saturated,
+};
 use chemistry::ion::{Ion, IonMap};
-use chemistry::material::Contribution;
-use chemistry::quantity::{Celsius, Fraction, Litres, MgPerL, Millimoles, Ph};
+use chemistry::material::{Contribution, Material, Substance};
+use chemistry::quantity::{Atmospheres, Celsius, Fraction, Litres, MgPerL, Millimoles, Ph};
 use chemistry::water::{MeasuredWater, Water};
 use proptest::prelude::*;
 
-use crate::{constants, speciate, water_of};
+use crate::{constants, index, speciate, water_of};
 
 /// From rain to brackish, from free acid to lime water, treated or not.
 fn any_water() -> impl Strategy<Value = Water> {
@@ -175,6 +177,45 @@ proptest! {
         prop_assert!((ours.ph().get() - target.get()).abs() < 1e-4, "{}", ours.ph());
         let kept = dose.after.speciation.water().carbon + dose.after.carbon_lost;
         prop_assert!((kept.get() - water.carbon.get()).abs() < 1e-9);
+    }
+
+    #[test]
+    fn a_base_leads_to_its_ph_as_an_acid_does(
+        water in any_water(), target in 6.0..11.0_f64, temperature in 0.0..90.0_f64,
+    ) {
+        let target = Ph::new(target).unwrap();
+        let lime = Material::usual(Substance::SlakedLime).unwrap();
+        let volume = Litres::constant(500.0);
+        let outcome = amount_to_ph(
+            &water, volume, &lime.per_unit(), target, Fraction::constant(0.0),
+            &constants(temperature),
+        ).unwrap();
+        let before = speciate(&water, temperature).ph();
+        let Some(dose) = outcome.reached() else {
+            prop_assert!(before.get() >= target.get() - 1e-6, "{before} {target} {outcome:?}");
+            return Ok(());
+        };
+        let limed = lime.contribution(dose.amount).added_to(&water, volume);
+        let ours = speciate(&limed, temperature).ph().get();
+        prop_assert!((ours - target.get()).abs() < 1e-5, "{ours} {target}");
+    }
+
+    #[test]
+    fn a_saturated_water_is_saturated(
+        water in any_water(), temperature in 0.0..90.0_f64,
+        gas in prop_oneof![
+            Just(Gas::Closed),
+            (-4.0..0.0_f64).prop_map(|log| Gas::Open(Atmospheres::clamped(10f64.powf(log)))),
+        ],
+        mineral in prop::sample::select(vec![Mineral::Calcite, Mineral::Gypsum]),
+    ) {
+        let found = saturated(&water, mineral, gas, &constants(temperature));
+        let found = found.unwrap();
+        let left = index(&found.speciation, mineral);
+        prop_assert!(left.abs() < 1e-4, "{left} {found:?}");
+        let calcium = found.speciation.water().mmol_per_l(Ion::Calcium).get();
+        let moved = found.dissolved.get() - found.precipitated.get();
+        prop_assert!((calcium - water.mmol_per_l(Ion::Calcium).get() - moved).abs() < 1e-8);
     }
 
     #[test]
