@@ -78,6 +78,8 @@ ids! {
     MaltId;
     /// One lot of a malt.
     MaltLotId;
+    /// One bench titration of a lot of malt.
+    MaltTitrationId;
     /// A beer.
     BeerId;
     /// A plan: one revision of the treatment of one batch.

@@ -9,6 +9,7 @@
 use std::borrow::Cow;
 use std::fmt::Display;
 
+use chemistry::quantity::{Fraction, OutOfRange};
 use serde::{Deserialize, Serialize};
 
 use crate::error::{Error, FieldProblem};
@@ -98,6 +99,35 @@ pub fn shorten(text: &str) -> Cow<'_, str> {
         text.into()
     } else {
         format!("{}…", text.chars().take(40).collect::<String>()).into()
+    }
+}
+
+/// A share in percent, without the noise of the multiplication.
+pub fn percent(share: f64) -> f64 {
+    (share * 1e10).round() / 1e8
+}
+
+/// A share typed in percent.
+pub fn share(percent: f64) -> Result<Fraction, OutOfRange> {
+    within(percent, "%", 0.0, 100.0).map(|percent| Fraction::clamped(percent / 100.0))
+}
+
+/// A share of more than nothing typed in percent.
+pub fn some_share(percent: f64) -> Result<Fraction, OutOfRange> {
+    within(percent, "%", 0.01, 100.0).map(|percent| Fraction::clamped(percent / 100.0))
+}
+
+/// A number inside bounds narrower than its unit's.
+pub fn within(value: f64, unit: &'static str, low: f64, high: f64) -> Result<f64, OutOfRange> {
+    if (low..=high).contains(&value) {
+        Ok(value)
+    } else {
+        Err(OutOfRange {
+            value,
+            unit,
+            low,
+            high,
+        })
     }
 }
 

@@ -3,10 +3,8 @@
 //! One server with one SQLite file keeps water tests, treatment plans and mash-pH
 //! outcomes, shows them as pages and serves the same operations as a JSON API.
 //!
-//! The code is grouped by what a brewer would call it: sources, [`shelf`],
-//! malts, [`beers`], plans, [`people`], [`record`], [`brewery`]. Each group
-//! The code is grouped by what a brewer would call it: [`sources`], shelf,
-//! malts, beers, plans, [`people`], [`record`], [`brewery`]. Each group
+//! The code is grouped by what a brewer would call it: [`sources`], [`shelf`],
+//! [`malts`], [`beers`], plans, [`people`], [`record`], [`brewery`]. Each group
 //! has its nouns in `mod.rs`, its rules in `operations.rs`, its SQL in `store.rs`, and
 //! two doors, `pages.rs` and `api.rs`. [`web`] is what both doors share. Start with
 //! [`web::router`].
@@ -18,6 +16,7 @@ pub mod db;
 pub mod error;
 pub mod id;
 pub mod input;
+pub mod malts;
 pub mod people;
 pub mod record;
 pub mod server;

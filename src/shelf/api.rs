@@ -8,11 +8,12 @@ use serde::Serialize;
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
-use super::entered::{NewMaterialBody, NewMaterialLotBody, StrengthBody, percent};
+use super::entered::{NewMaterialBody, NewMaterialLotBody, StrengthBody};
 use super::{Material, MaterialLot, operations};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MaterialId, MaterialLotId};
+use crate::input::percent;
 use crate::people::{Member, Permission};
 use crate::web::App;
 use crate::web::extract::{At, Json, ListQuery, Listed, if_match};

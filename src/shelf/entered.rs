@@ -1,16 +1,14 @@
 //! What is typed about a material or a lot, and the checks it passes.
 
 use chemistry::material::{Strength, Substance, Vessel};
-use chemistry::quantity::{
-    DoseAmount, Estimate, Fraction, GramsPerLitre, GramsPerMl, MeqPerMl, OutOfRange,
-};
+use chemistry::quantity::{DoseAmount, Estimate, Fraction, GramsPerLitre, GramsPerMl, MeqPerMl};
 use jiff::civil::Date;
 use serde::{Deserialize, Serialize};
 
 use super::{CERTIFIED_SD, Material, MaterialLot, Price, labelled};
 use crate::error::Error;
 use crate::id::{MaterialId, MaterialLotId};
-use crate::input::{Flag, Number, Problems};
+use crate::input::{Flag, Number, Problems, percent, share, some_share, within};
 
 /// How strong a liquid is, in one of three ways. All blank: as usual, assumed.
 #[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
@@ -47,34 +45,6 @@ impl From<Option<Strength>> for StrengthBody {
             }
         }
         body
-    }
-}
-
-/// A share in percent, without the noise of the multiplication.
-pub(crate) fn percent(share: f64) -> f64 {
-    (share * 1e10).round() / 1e8
-}
-
-/// A share typed in percent.
-pub(crate) fn share(percent: f64) -> Result<Fraction, OutOfRange> {
-    within(percent, "%", 0.0, 100.0).and_then(|percent| Fraction::new(percent / 100.0))
-}
-
-/// A share of more than nothing typed in percent.
-pub(crate) fn some_share(percent: f64) -> Result<Fraction, OutOfRange> {
-    within(percent, "%", 0.01, 100.0).and_then(|percent| Fraction::new(percent / 100.0))
-}
-
-fn within(value: f64, unit: &'static str, low: f64, high: f64) -> Result<f64, OutOfRange> {
-    if (low..=high).contains(&value) {
-        Ok(value)
-    } else {
-        Err(OutOfRange {
-            value,
-            unit,
-            low,
-            high,
-        })
     }
 }
 

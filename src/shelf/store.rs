@@ -8,6 +8,7 @@ use sqlx::{Row, SqliteConnection, sqlite::SqliteRow};
 use super::{Material, MaterialLot, Price, labelled};
 use crate::error::Error;
 use crate::id::{MaterialId, MaterialLotId};
+use crate::input::percent;
 
 const UNREADABLE: &str = "A material on the shelf cannot be read";
 
@@ -81,7 +82,7 @@ fn strength_columns(strength: Option<Strength>) -> [Option<f64>; 5] {
     match strength {
         None => [None; 5],
         Some(Strength::WeightPercent { share, density }) => {
-            let percent = super::entered::percent(share.get());
+            let percent = percent(share.get());
             [Some(percent), Some(density.get()), None, None, None]
         }
         Some(Strength::WeightPerVolume(grams)) => [None, None, Some(grams.get()), None, None],
@@ -89,14 +90,13 @@ fn strength_columns(strength: Option<Strength>) -> [Option<f64>; 5] {
             acid,
             chloride_share,
         }) => {
-            let chloride = super::entered::percent(chloride_share.get());
+            let chloride = percent(chloride_share.get());
             [None, None, None, Some(acid.get()), Some(chloride)]
         }
     }
 }
 
 fn assay_columns(assay: Option<Estimate<Fraction>>) -> [Option<f64>; 2] {
-    let percent = super::entered::percent;
     [
         assay.map(|assay| percent(assay.value.get())),
         assay.map(|assay| percent(assay.sd)),

@@ -259,7 +259,8 @@ impl Behaviour {
     }
 
     /// The behaviour one standard deviation below and above, one doubt at a time.
-    pub(super) fn doubts(&self) -> Vec<(Doubt, Self, Self)> {
+    #[must_use]
+    pub fn doubts(&self) -> Vec<(Doubt, Self, Self)> {
         let of_groups = |groups: Groups, wrap: &dyn Fn(Groups) -> Self| {
             let ph = |sign: f64| {
                 let mut moved = groups;
