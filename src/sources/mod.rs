@@ -13,6 +13,7 @@ pub mod operations;
 pub mod pages;
 pub mod store;
 pub mod todays_water;
+mod trend;
 pub mod water_tests;
 
 pub use todays_water::{HowKnown, TodaysFigure, TodaysWater};
@@ -109,7 +110,28 @@ pub enum DutyState {
     Overdue,
 }
 
+impl DutyState {
+    /// The kind of badge that shows it.
+    pub const fn badge(self) -> &'static str {
+        match self {
+            Self::Done => "done",
+            Self::Due => "due",
+            Self::Overdue => "overdue",
+        }
+    }
+}
+
 impl TestDuty {
+    /// The duty in words.
+    pub fn words(&self) -> String {
+        match (self.next, self.state) {
+            (None, _) => "never tested".into(),
+            (Some(next), DutyState::Done) => format!("next test {next}"),
+            (Some(next), DutyState::Due) => format!("test due {next}"),
+            (Some(next), DutyState::Overdue) => format!("overdue since {next}"),
+        }
+    }
+
     /// The duty of a source whose newest sample is of the day `last`.
     pub fn of(source: &Source, last: Option<Date>, today: Date) -> Self {
         /// Days before the day itself from which a test counts as due. Chosen.

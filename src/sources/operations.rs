@@ -6,6 +6,7 @@ use chemistry::report::WaterKind;
 use jiff::civil::Date;
 
 use super::api::SourceBody;
+use super::water_tests::WaterTest;
 use super::water_tests::store::{self as tests, Which};
 use super::{NewSource, Source, TodaysWater, store, todays_water as water};
 use crate::brewery;
@@ -109,6 +110,30 @@ pub async fn revise(
     Ok(after)
 }
 
+/// Retires a source, or takes it back into use.
+pub async fn set_in_use(db: &Db, by: &Member, id: SourceId, in_use: bool) -> Result<Source, Error> {
+    by.may(Permission::KeepSources)?;
+    let mut tx = db.begin().await?;
+    let before = store::find(&mut tx, id)
+        .await?
+        .ok_or(Error::NotFound("source"))?;
+    if before.in_use == in_use {
+        return Ok(before);
+    }
+    let after = Source {
+        in_use,
+        version: before.version + 1,
+        ..before.clone()
+    };
+    store::update(&mut tx, &after).await?;
+    let action = if in_use { "taken back" } else { "retired" };
+    let (was, is) = (Some(describe(&before)), Some(describe(&after)));
+    let entry = record::Change::of(action, "source", id, &after.name, was, is);
+    record::append(&mut tx, by, entry).await?;
+    tx.commit().await?;
+    Ok(after)
+}
+
 fn taken(error: sqlx::Error, name: &str) -> Error {
     if breaks_unique(&error) {
         Error::field("name", format!("A source named “{name}” exists already."))
@@ -150,6 +175,18 @@ pub async fn find(db: &Db, by: &Member, id: SourceId) -> Result<Source, Error> {
 pub async fn newest_samples(db: &Db, by: &Member) -> Result<HashMap<SourceId, Date>, Error> {
     by.may(Permission::Read)?;
     tests::newest(&mut *db.reader().await?).await
+}
+
+/// Every test of a source that was not withdrawn, newest sample first.
+pub async fn history(db: &Db, by: &Member, id: SourceId) -> Result<Vec<WaterTest>, Error> {
+    by.may(Permission::Read)?;
+    let which = Which {
+        source: Some(id),
+        ..Which::ALL
+    };
+    let mut tests = tests::tests(&mut *db.reader().await?, which).await?;
+    tests.retain(|test| test.withdrawn.is_none());
+    Ok(tests)
 }
 
 /// What a source's water is today, from every test that counts. [`Error::Conflict`]

@@ -19,6 +19,7 @@ use statistics::local_level::{self, Damping, Observation, Prior, Settings, Sourc
 use statistics::measurement::{self, Precision};
 use statistics::quantity::{Day, Sd, Share, Step, Value};
 
+use super::trend::capital;
 use super::water_tests::WaterTest;
 use super::{Source, days_between};
 use crate::error::Error;
@@ -466,12 +467,9 @@ fn assumed(composition: &Composition, history: &[Seen]) -> Vec<String> {
     for analyte in Analyte::ALL {
         let newest = history.iter().find(|seen| seen.figure.analyte() == analyte);
         if let Some(HowKnown::WorkedOut(kind)) = newest.map(|seen| seen.how) {
-            let mut name = analyte.name().to_owned();
-            if let Some(first) = name.get_mut(..1) {
-                first.make_ascii_uppercase();
-            }
             sentences.push(format!(
-                "{name} was not reported; it was worked out: {}.",
+                "{} was not reported; it was worked out: {}.",
+                capital(analyte.name()),
                 HowKnown::WorkedOut(kind).name()
             ));
         }

@@ -11,4 +11,5 @@ mod beers;
 mod desk;
 mod people;
 mod shelf;
+mod source_pages;
 mod sources;

@@ -17,6 +17,7 @@ use crate::id::{SourceId, UtcTime, WaterTestId};
 
 pub mod api;
 pub mod operations;
+pub mod pages;
 pub mod store;
 
 /// One sample of one source.
