@@ -109,14 +109,3 @@ impl Beer {
         self.volumes.mash_l.get() / self.grist_mass().get()
     }
 }
-
-/// A malt as a grist knows it.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub struct MaltName {
-    /// Which malt.
-    pub id: MaltId,
-    /// What the brewery calls it.
-    pub name: String,
-    /// Whether new grists may use it.
-    pub in_use: bool,
-}

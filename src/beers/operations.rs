@@ -1,7 +1,7 @@
 //! Making, changing, retiring and reading beers.
 
 use super::api::NewBeerBody;
-use super::{Beer, MaltName, NewBeer, store};
+use super::{Beer, NewBeer, store};
 use crate::db::Db;
 use crate::error::{Error, breaks_unique};
 use crate::id::BeerId;
@@ -103,12 +103,6 @@ pub async fn find(db: &Db, by: &Member, id: BeerId) -> Result<Beer, Error> {
     store::find(&mut *db.snapshot().await?, id)
         .await?
         .ok_or(Error::NotFound("beer"))
-}
-
-/// Every malt a grist may name, retired ones too, by name.
-pub async fn malts(db: &Db, by: &Member) -> Result<Vec<MaltName>, Error> {
-    by.may(Permission::Read)?;
-    store::malts(&mut *db.reader().await?).await
 }
 
 /// Makes a beer.

@@ -12,12 +12,13 @@ use super::api::{NewBeerBody, SpecBody};
 use super::operations::{self, ListAs, Sort};
 use super::spec::{IONS, Priority};
 use super::words::{SpecLine, spec_lines, thickness};
-use super::{Beer, MaltName, NewBeer, Spec};
+use super::{Beer, NewBeer, Spec};
 use crate::brewery::{self, Units};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::BeerId;
 use crate::input::Number;
+use crate::malts::{self, Malt};
 use crate::people::Permission;
 use crate::web::App;
 use crate::web::extract::At;
@@ -188,7 +189,7 @@ struct GristShown {
 
 async fn show(State(db): State<Db>, framer: Framer, At(id): At<BeerId>) -> Result<ShowPage, Error> {
     let beer = operations::find(&db, &framer.member, id).await?;
-    let malts = operations::malts(&db, &framer.member).await?;
+    let malts = malts::operations::list(&db, &framer.member).await?;
     let page = framer.page(&beer.name, "beers").await;
     let units = page.settings.units;
     let whole = beer.grist_mass().get();
@@ -331,7 +332,7 @@ fn window_rows(typed: &Form) -> Vec<WindowRow> {
         .collect()
 }
 
-fn grist_rows(typed: &Form, lines: usize, malts: &[MaltName]) -> Vec<GristRow> {
+fn grist_rows(typed: &Form, lines: usize, malts: &[Malt]) -> Vec<GristRow> {
     let mass = |index: usize| {
         Number::Typed(typed.row("grist", &index, "kilograms").to_owned())
             .parse()
@@ -374,7 +375,7 @@ async fn edit_page(
     typed: Form,
     more_lines: usize,
 ) -> Result<EditPage, Error> {
-    let malts = operations::malts(db, &framer.member).await?;
+    let malts = malts::operations::list(db, &framer.member).await?;
     let (title, action, back) = match about {
         About::New => ("New beer".into(), "/beers/new".into(), "/beers".into()),
         About::Kept(beer) => (

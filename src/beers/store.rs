@@ -10,7 +10,7 @@ use sqlx::{Row, SqliteConnection};
 
 use super::operations::{ListAs, Sort};
 use super::spec::{IONS, MassRatio, Priority, Spec, Window};
-use super::{Beer, GristLine, MaltName, Volumes};
+use super::{Beer, GristLine, Volumes};
 use crate::error::Error;
 use crate::id::{BeerId, MaltId};
 
@@ -328,18 +328,24 @@ async fn insert_parts(db: &mut SqliteConnection, beer: &Beer) -> Result<(), sqlx
     Ok(())
 }
 
-/// Every malt, as a grist knows it.
-pub(super) async fn malts(db: &mut SqliteConnection) -> Result<Vec<MaltName>, Error> {
-    let rows = sqlx::query("SELECT id, name, in_use FROM malts ORDER BY name")
+/// What a grist must know of a malt.
+pub(super) struct MaltState {
+    pub(super) id: MaltId,
+    pub(super) name: String,
+    pub(super) in_use: bool,
+}
+
+/// Every malt, read in the transaction that will refer to some of them.
+pub(super) async fn malts(db: &mut SqliteConnection) -> Result<Vec<MaltState>, Error> {
+    let rows = sqlx::query("SELECT id, name, in_use FROM malts")
         .fetch_all(db)
         .await?;
-    rows.iter()
-        .map(|row| {
-            Ok(MaltName {
-                id: row.try_get::<MaltId, _>("id")?,
-                name: row.try_get("name")?,
-                in_use: row.try_get("in_use")?,
-            })
+    let malt = |row: &SqliteRow| {
+        Ok(MaltState {
+            id: row.try_get("id")?,
+            name: row.try_get("name")?,
+            in_use: row.try_get("in_use")?,
         })
-        .collect()
+    };
+    rows.iter().map(malt).collect()
 }
