@@ -300,7 +300,7 @@ fn answer(beer: &Beer) -> impl IntoResponse + use<> {
 }
 
 /// Every beer, retired ones too, oldest first.
-#[utoipa::path(get, path = "/beers", tag = "beers", operation_id = "list_beers", params(ListQuery), responses(
+#[utoipa::path(get, path = "/beers", tag = "beers", params(ListQuery), responses(
     (status = 200, description = "Beers, in the order they were made", body = Listed<BeerBody>),
     (status = 401, description = "No valid token", body = Problem),
     (status = 403, description = "The token may not read", body = Problem),
@@ -329,7 +329,7 @@ async fn list(
 }
 
 /// Make a beer.
-#[utoipa::path(post, path = "/beers", tag = "beers", operation_id = "create_beer", request_body = NewBeerBody,
+#[utoipa::path(post, path = "/beers", tag = "beers", request_body = NewBeerBody,
     params(("Idempotency-Key" = Option<String>, Header, description = "Applied once however often it is sent")),
     responses(
     (status = 201, description = "Made; its address is in Location, its version in ETag", body = BeerBody,
@@ -355,7 +355,7 @@ async fn create(
 }
 
 /// One beer.
-#[utoipa::path(get, path = "/beers/{id}", tag = "beers", operation_id = "find_beer",
+#[utoipa::path(get, path = "/beers/{id}", tag = "beers",
     params(("id" = BeerId, Path, description = "Which beer")), responses(
     (status = 200, description = "The beer, with its version as ETag", body = BeerBody,
         headers(("ETag" = String, description = "Its version"))),
@@ -372,7 +372,7 @@ async fn show(
 }
 
 /// Replace a beer; retire it or take it back with `in_use`.
-#[utoipa::path(put, path = "/beers/{id}", tag = "beers", operation_id = "revise_beer", request_body = NewBeerBody,
+#[utoipa::path(put, path = "/beers/{id}", tag = "beers", request_body = NewBeerBody,
     params(
         ("id" = BeerId, Path, description = "Which beer"),
         ("If-Match" = Option<String>, Header, description = "The ETag it was read with: a change made meanwhile is not overwritten"),

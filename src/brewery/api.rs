@@ -81,6 +81,7 @@ async fn show(State(db): State<Db>, by: Member) -> Result<impl IntoResponse, Err
 /// Replace the settings.
 #[utoipa::path(put, path = "/settings", tag = "settings", request_body = SettingsBody, responses(
     (status = 200, description = "Replaced", body = SettingsBody),
+    (status = 401, description = "No valid token", body = Problem),
     (status = 403, description = "No token may change settings", body = Problem),
     (status = 409, description = "Changed by somebody else meanwhile", body = Problem),
     (status = 422, description = "Some fields need mending", body = Problem),

@@ -168,3 +168,42 @@ pub const WHO_DRINKING_WATER_2022: Reference = Reference {
     title: "Guidelines for drinking-water quality",
     place: "4th edition with first and second addenda, Geneva",
 };
+
+/// Every source above, in that order.
+pub const ALL: [Reference; 18] = [
+    IUPAC_2021,
+    PLUMMER_BUSENBERG_1982,
+    TRUESDELL_JONES_1974,
+    NORDSTROM_1990,
+    PHREEQC_3,
+    NIST_46,
+    GOLDBERG_2002,
+    MARTIN_TARTAR_1937,
+    DELANGE_2015,
+    KOLBACH_1953,
+    TAYLOR_1990,
+    LI_2016,
+    HOSOM_2020,
+    STANDARD_METHODS,
+    ONSAGER_1927,
+    EU_DRINKING_WATER_2020,
+    US_DRINKING_WATER,
+    WHO_DRINKING_WATER_2022,
+];
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn every_source_is_listed_once() {
+        let written = include_str!("references.rs")
+            .lines()
+            .filter(|line| line.starts_with("pub const ") && line.contains(": Reference ="))
+            .count();
+        assert_eq!(ALL.len(), written);
+        for (place, reference) in ALL.iter().enumerate() {
+            assert!(!ALL[..place].contains(reference), "{reference}");
+        }
+    }
+}

@@ -4,8 +4,10 @@ use axum::Router;
 use axum::http::header;
 use axum::response::IntoResponse;
 use axum::routing::get;
+use utoipa::openapi::path::Operation;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
-use utoipa::openapi::{ComponentsBuilder, InfoBuilder, OpenApi, OpenApiBuilder};
+use utoipa::openapi::server::ServerBuilder;
+use utoipa::openapi::{ComponentsBuilder, InfoBuilder, OpenApi, OpenApiBuilder, RefOr};
 
 use super::App;
 
@@ -24,6 +26,7 @@ pub fn description() -> OpenApi {
                 ))
                 .build(),
         )
+        .servers(Some([ServerBuilder::new().url("/api/v1").description(Some("This server")).build()]))
         .components(Some(
             ComponentsBuilder::new()
                 .security_scheme("token", SecurityScheme::Http(HttpBuilder::new().scheme(HttpAuthScheme::Bearer).build()))
@@ -33,9 +36,54 @@ pub fn description() -> OpenApi {
         .build()
 }
 
+/// The description with what holds for every operation: a name that is its own, and
+/// the media type of refusals.
+fn completed(mut description: OpenApi) -> OpenApi {
+    for (path, item) in &mut description.paths.paths {
+        let place: Vec<&str> = path
+            .split('/')
+            .filter(|part| !part.is_empty() && !part.starts_with('{'))
+            .collect();
+        let methods = [
+            &mut item.get,
+            &mut item.put,
+            &mut item.post,
+            &mut item.delete,
+            &mut item.patch,
+        ];
+        for operation in methods.into_iter().flatten() {
+            name(operation, &place);
+            for (status, response) in &mut operation.responses.responses {
+                if let RefOr::T(response) = response
+                    && matches!(status.as_bytes().first(), Some(b'4' | b'5'))
+                    && let Some(content) = response.content.shift_remove("application/json")
+                {
+                    response
+                        .content
+                        .insert("application/problem+json".into(), content);
+                }
+            }
+        }
+    }
+    description
+}
+
+/// `revise` under `/beers/{id}` becomes `revise_beers`; what the verb says already is
+/// not said again.
+fn name(operation: &mut Operation, place: &[&str]) {
+    let mut name = operation.operation_id.take().unwrap_or_default();
+    for part in place {
+        let part = part.replace('-', "_");
+        if !name.contains(part.trim_end_matches('s')) {
+            name = format!("{name}_{part}");
+        }
+    }
+    operation.operation_id = Some(name);
+}
+
 /// `/api/openapi.json`: the description, open to anybody who can reach the server.
 pub fn reading_room(description: OpenApi) -> Router<App> {
-    let json = description.to_pretty_json().unwrap_or_default();
+    let json = completed(description).to_pretty_json().unwrap_or_default();
     Router::new().route(
         "/api/openapi.json",
         get(move || {

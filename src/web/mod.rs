@@ -29,6 +29,7 @@ pub mod assets;
 pub mod extract;
 pub mod form;
 pub mod format;
+pub mod help;
 pub mod layout;
 pub mod problem;
 pub mod repeat;
@@ -75,6 +76,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::brewery::pages::routes())
         .merge(crate::beers::pages::routes())
         .merge(crate::sources::pages::routes())
+        .merge(help::routes())
         .fallback(problem::no_such_page)
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))

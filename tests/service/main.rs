@@ -9,6 +9,7 @@
 
 mod beers;
 mod desk;
+mod help;
 mod people;
 mod shelf;
 mod source_pages;
