@@ -371,7 +371,9 @@ async fn show(
     Ok(answer(&operations::find(&db, &by, id).await?))
 }
 
-/// Replace a beer; retire it or take it back with `in_use`.
+/// Replace a beer.
+///
+/// `in_use: false` retires it, `true` takes it back.
 #[utoipa::path(put, path = "/beers/{id}", tag = "beers", request_body = NewBeerBody,
     params(
         ("id" = BeerId, Path, description = "Which beer"),
