@@ -19,6 +19,7 @@ pub mod carbonate;
 pub mod ion;
 pub mod mash;
 pub mod material;
+pub mod plan;
 pub mod put_right;
 pub mod quantity;
 pub mod references;

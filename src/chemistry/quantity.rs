@@ -140,6 +140,16 @@ quantities! {
     GramsPerMl, "g/mL", 0.5, 3.0;
     /// A share between nothing and all.
     Fraction, "", 0.0, 1.0;
+    /// Mass of one ion per mass of another.
+    MassRatio, "", 0.0, 1e6;
+    /// How far something misses what was wished, relative to the wish, summed up.
+    Score, "", 0.0, 1e12;
+    /// Money, in the currency the brewery keeps its prices in.
+    Cost, "", 0.0, 1e12;
+    /// Price of water per litre, in the same currency.
+    CostPerLitre, "per L", 0.0, 1e6;
+    /// Price of a material per gram or millilitre, in the same currency.
+    CostPerUnit, "per g or mL", 0.0, 1e6;
     /// Electrical conductivity, µS/cm.
     MicrosiemensPerCm, "µS/cm", 0.0, 200_000.0;
     /// Malt or wort colour, °L (Lovibond).
