@@ -6,7 +6,7 @@ use chemistry::put_right::Aim;
 use chemistry::quantity::{Kilograms, Litres, MgPerL, MgPerLAsCaCO3, Ph};
 
 use super::api::{GristLineBody, MashPhBody, NewBeerBody, SpecBody, WindowBody};
-use super::spec::{IONS, MassRatio, Priority, Spec, Window};
+use super::spec::{MassRatio, Priority, Spec, Window};
 use super::{GristLine, NewBeer, Volumes, grist_mass};
 use crate::error::Error;
 use crate::id::MaltId;
@@ -360,9 +360,4 @@ fn contradictions(spec: &Spec, volumes: Option<&Volumes>, problems: &mut Problem
             );
         }
     }
-    debug_assert!(
-        spec.ions
-            .iter()
-            .all(|(ion, window)| window.is_none() || IONS.contains(&ion))
-    );
 }

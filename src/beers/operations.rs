@@ -1,7 +1,8 @@
 //! Making, changing, retiring and reading beers.
 
 use super::api::NewBeerBody;
-use super::{Beer, NewBeer, store};
+use super::store::{self, MaltState};
+use super::{Beer, NewBeer};
 use crate::db::Db;
 use crate::error::{Error, breaks_unique};
 use crate::id::BeerId;
@@ -109,7 +110,8 @@ pub async fn find(db: &Db, by: &Member, id: BeerId) -> Result<Beer, Error> {
 pub async fn create(db: &Db, by: &Member, new: NewBeer) -> Result<Beer, Error> {
     by.may(Permission::KeepBeers)?;
     let mut tx = db.begin().await?;
-    check_malts(&mut tx, &new).await?;
+    let malts = store::malts(&mut tx).await?;
+    check_malts(&malts, &new)?;
     let beer = new.kept_as(BeerId::new(), 1);
     store::insert(&mut tx, &beer)
         .await
@@ -117,7 +119,7 @@ pub async fn create(db: &Db, by: &Member, new: NewBeer) -> Result<Beer, Error> {
     record::append(
         &mut tx,
         by,
-        record::Change::created("beer", beer.id, &beer.name, &describe(&beer)),
+        record::Change::created("beer", beer.id, &beer.name, &describe(&beer, &malts)),
     )
     .await?;
     tx.commit().await?;
@@ -138,7 +140,8 @@ pub async fn revise(
         .await?
         .ok_or(Error::NotFound("beer"))?;
     refuse_stale(&before, read_version)?;
-    check_malts(&mut tx, &new).await?;
+    let malts = store::malts(&mut tx).await?;
+    check_malts(&malts, &new)?;
     let after = new.kept_as(id, before.version + 1);
     store::update(&mut tx, &after)
         .await
@@ -150,8 +153,8 @@ pub async fn revise(
             "beer",
             id,
             &after.name,
-            &describe(&before),
-            &describe(&after),
+            &describe(&before, &malts),
+            &describe(&after, &malts),
         ),
     )
     .await?;
@@ -205,8 +208,7 @@ impl NewBeer {
 }
 
 /// Refuses malts that are not there or no longer used, each at its line.
-async fn check_malts(tx: &mut sqlx::SqliteConnection, new: &NewBeer) -> Result<(), Error> {
-    let malts = store::malts(tx).await?;
+fn check_malts(malts: &[MaltState], new: &NewBeer) -> Result<(), Error> {
     let mut problems = Problems::new();
     for (line, row) in new.grist.iter().zip(&new.rows) {
         let field = format!("grist.{row}.malt_id");
@@ -240,6 +242,20 @@ fn name_taken(error: sqlx::Error, name: &str) -> Error {
     }
 }
 
-fn describe(beer: &Beer) -> serde_json::Value {
-    serde_json::to_value(NewBeerBody::from(beer)).unwrap_or_default()
+/// The beer as the record book keeps it: malts by the name of that day.
+fn describe(beer: &Beer, malts: &[MaltState]) -> serde_json::Value {
+    let grist: Vec<serde_json::Value> = beer
+        .grist
+        .iter()
+        .map(|line| {
+            let malt = malts.iter().find(|malt| malt.id == line.malt_id);
+            serde_json::json!({
+                "malt": malt.map(|malt| malt.name.as_str()),
+                "kilograms": line.kilograms.get(),
+            })
+        })
+        .collect();
+    let mut described = serde_json::to_value(NewBeerBody::from(beer)).unwrap_or_default();
+    described["grist"] = grist.into();
+    described
 }

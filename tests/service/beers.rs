@@ -344,6 +344,7 @@ async fn a_beer_is_changed_copied_retired_and_taken_back() {
         "took back beer",
         "changed beer",
         "created beer",
+        "Pilsner",
     ] {
         assert!(book.contains(deed), "{deed}: {book}");
     }
