@@ -5,12 +5,12 @@ use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::ion::Ion;
 use chemistry::put_right::Aim;
-use chemistry::quantity::{MgPerL, MgPerLAsCaCO3};
+use chemistry::quantity::{MassRatio, MgPerL, MgPerLAsCaCO3};
 use serde::{Deserialize, Serialize};
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
-use super::spec::{MassRatio, Priority, Spec, Window};
+use super::spec::{Spec, USUAL_PRIORITY, Window};
 use super::{Beer, GristLine, operations};
 use crate::db::Db;
 use crate::error::Error;
@@ -200,7 +200,7 @@ impl WindowBody {
     fn of<T>(window: Option<Window<T>>, get: impl Fn(T) -> f64) -> Self {
         let Some(window) = window else {
             return Self {
-                priority: Priority::default().key().into(),
+                priority: USUAL_PRIORITY.key().into(),
                 ..Self::default()
             };
         };

@@ -3,10 +3,10 @@
 
 use chemistry::ion::{Ion, IonMap};
 use chemistry::put_right::Aim;
-use chemistry::quantity::{Kilograms, Litres, MgPerL, MgPerLAsCaCO3, Ph};
+use chemistry::quantity::{Kilograms, Litres, MassRatio, MgPerL, MgPerLAsCaCO3, Ph};
 
 use super::api::{GristLineBody, MashPhBody, NewBeerBody, SpecBody, WindowBody};
-use super::spec::{MassRatio, Priority, Spec, Window};
+use super::spec::{Priority, Spec, USUAL_PRIORITY, Window};
 use super::{GristLine, NewBeer, Volumes, grist_mass};
 use crate::error::Error;
 use crate::id::MaltId;
@@ -22,6 +22,8 @@ const LARGEST_KG: f64 = 100_000.0;
 /// Highest concentration a spec may name, mg/L. Source: assumed; no liquor is brewed
 /// with more of anything.
 const HIGHEST_MG_PER_L: f64 = 5_000.0;
+/// Highest sulfate to chloride a spec may name. Source: assumed, likewise.
+const HIGHEST_RATIO: f64 = 1_000.0;
 /// Mash pH a spec may name. Source: assumed; no mash is wanted outside.
 const MASH_PH: (f64, f64) = (4.5, 6.5);
 /// Mash liquor per mass of grist that can be a mash at all, L/kg. Source: assumed;
@@ -179,12 +181,7 @@ fn spec(body: &SpecBody, volumes: Option<&Volumes>, problems: &mut Problems) -> 
         )
     });
     let sulfate_to_chloride = problems.within("sulfate_to_chloride", |problems| {
-        window(
-            &body.sulfate_to_chloride.as_window(),
-            "",
-            MassRatio::new,
-            problems,
-        )
+        window(&body.sulfate_to_chloride.as_window(), "", ratio, problems)
     });
     let mash_ph = problems.within("mash_ph", |problems| aim(&body.mash_ph, problems));
     let mut most =
@@ -213,6 +210,14 @@ fn as_caco3(value: f64) -> Result<MgPerLAsCaCO3, String> {
     concentration(value).map(MgPerLAsCaCO3::clamped)
 }
 
+fn ratio(value: f64) -> Result<MassRatio, String> {
+    if (0.0..=HIGHEST_RATIO).contains(&value) {
+        Ok(MassRatio::clamped(value))
+    } else {
+        Err(format!("Enter a ratio from 0 to {HIGHEST_RATIO}"))
+    }
+}
+
 fn concentration(value: f64) -> Result<f64, String> {
     if (0.0..=HIGHEST_MG_PER_L).contains(&value) {
         Ok(value)
@@ -236,7 +241,7 @@ where
     let high = problems.optional_quantity("high", &sent.high, &check);
     let preferred = problems.optional_quantity("preferred", &sent.preferred, &check);
     let priority = if sent.priority.trim().is_empty() {
-        Some(Priority::default())
+        Some(USUAL_PRIORITY)
     } else {
         problems.choice("priority", &sent.priority, Priority::from_key)
     };

@@ -10,8 +10,8 @@ use axum::routing::{get, post};
 
 use super::api::{NewBeerBody, SpecBody};
 use super::operations::{self, ListAs, Sort};
-use super::spec::{IONS, Priority};
-use super::words::{SpecLine, spec_lines, thickness};
+use super::spec::{IONS, Priority, USUAL_PRIORITY};
+use super::words::{SpecLine, priority_words, spec_lines, thickness};
 use super::{Beer, NewBeer, Spec};
 use crate::brewery::{self, Units};
 use crate::db::Db;
@@ -317,12 +317,15 @@ fn window_rows(typed: &Form) -> Vec<WindowRow> {
         .map(|(label, unit, name, prefers)| {
             let chosen = typed.value(&format!("{name}.priority"));
             let chosen = if chosen.is_empty() {
-                Priority::default().key()
+                USUAL_PRIORITY.key()
             } else {
                 chosen
             };
             WindowRow {
-                priorities: Choice::list(Priority::ALL.map(|p| (p.key(), p.words())), chosen),
+                priorities: Choice::list(
+                    Priority::ALL.map(|p| (p.key(), priority_words(p))),
+                    chosen,
+                ),
                 label,
                 unit,
                 name,

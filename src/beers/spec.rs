@@ -1,8 +1,10 @@
 //! The spec: the windows a beer's liquor must sit in, and the pH of its mash.
 
 use chemistry::ion::{Ion, IonMap};
+use chemistry::plan;
+pub use chemistry::plan::{Priority, Window};
 use chemistry::put_right::Aim;
-use chemistry::quantity::{MgPerL, MgPerLAsCaCO3, Ph};
+use chemistry::quantity::{MassRatio, MgPerL, MgPerLAsCaCO3, Ph};
 
 /// The ions a spec can have a window for, in the order pages show them.
 pub const IONS: [Ion; 7] = [
@@ -15,79 +17,8 @@ pub const IONS: [Ion; 7] = [
     Ion::Nitrate,
 ];
 
-/// Mass of sulfate per mass of chloride.
-#[derive(Clone, Copy, Debug, PartialEq, PartialOrd)]
-pub struct MassRatio(f64);
-
-impl MassRatio {
-    /// A ratio from 0 to 1000.
-    pub fn new(value: f64) -> Result<Self, &'static str> {
-        if (0.0..=1000.0).contains(&value) {
-            Ok(Self(value))
-        } else {
-            Err("Enter a ratio from 0 to 1000")
-        }
-    }
-
-    /// The number.
-    #[must_use]
-    pub const fn get(self) -> f64 {
-        self.0
-    }
-}
-
-/// How long a window is held when not everything can be had.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Hash, PartialOrd, Ord)]
-pub enum Priority {
-    /// Given up last.
-    High,
-    /// Given up second.
-    #[default]
-    Middle,
-    /// Given up first.
-    Low,
-}
-
-impl Priority {
-    /// All three.
-    pub const ALL: [Self; 3] = [Self::High, Self::Middle, Self::Low];
-
-    /// As stored and sent.
-    pub const fn key(self) -> &'static str {
-        match self {
-            Self::High => "high",
-            Self::Middle => "middle",
-            Self::Low => "low",
-        }
-    }
-
-    /// In words.
-    pub const fn words(self) -> &'static str {
-        match self {
-            Self::High => "give up last",
-            Self::Middle => "give up second",
-            Self::Low => "give up first",
-        }
-    }
-
-    /// The priority with this key.
-    pub fn from_key(key: &str) -> Option<Self> {
-        Self::ALL.into_iter().find(|priority| priority.key() == key)
-    }
-}
-
-/// Where a figure should lie.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub struct Window<T> {
-    /// Lowest accepted.
-    pub low: Option<T>,
-    /// Highest accepted.
-    pub high: Option<T>,
-    /// Where in between it would best be.
-    pub preferred: Option<T>,
-    /// How long it is held when not everything can be had.
-    pub priority: Priority,
-}
+/// How long a window is held when nobody said.
+pub const USUAL_PRIORITY: Priority = Priority::Middle;
 
 /// What a beer wants of its liquor and its mash.
 ///
@@ -98,7 +29,7 @@ pub struct Spec {
     /// Each of [`IONS`] in the whole liquor: everything added in any vessel, over all
     /// the liquor of the batch.
     pub ions: IonMap<Option<Window<MgPerL>>>,
-    /// Alkalinity of the whole liquor.
+    /// Alkalinity of the whole liquor, for a plan to be held against.
     pub alkalinity: Option<Window<MgPerLAsCaCO3>>,
     /// Calcium in the mash liquor; nothing preferred.
     pub mash_calcium: Option<Window<MgPerL>>,
@@ -115,6 +46,29 @@ pub struct Spec {
 }
 
 impl Spec {
+    /// What the solver of a plan looks at. It knows no window for the alkalinity of the
+    /// whole liquor: a plan holds its outcome against [`alkalinity`](Self::alkalinity).
+    #[must_use]
+    pub fn for_plan(&self) -> plan::Spec {
+        plan::Spec {
+            ions: self.ions,
+            mash_calcium: self.mash_calcium,
+            sulfate_to_chloride: self.sulfate_to_chloride,
+            sparge_alkalinity: self.sparge_alkalinity,
+            mash_ph: self.mash_ph,
+        }
+    }
+
+    /// What the palate of this beer bears of each ion, for the limits of a plan.
+    #[must_use]
+    pub fn taste_limits(&self) -> IonMap<Option<MgPerL>> {
+        IonMap::from_fn(|ion| match ion {
+            Ion::Lactate => self.highest_lactate,
+            Ion::Sodium => self.highest_sodium,
+            _ => None,
+        })
+    }
+
     /// What the form of a new beer begins with.
     ///
     /// Source: common practice, no source.

@@ -4,12 +4,12 @@ use std::collections::HashMap;
 
 use chemistry::ion::{Ion, IonMap};
 use chemistry::put_right::Aim;
-use chemistry::quantity::{Kilograms, Litres, MgPerL, MgPerLAsCaCO3, Ph};
+use chemistry::quantity::{Kilograms, Litres, MassRatio, MgPerL, MgPerLAsCaCO3, Ph};
 use sqlx::sqlite::SqliteRow;
 use sqlx::{Row, SqliteConnection};
 
 use super::operations::{ListAs, Sort};
-use super::spec::{IONS, MassRatio, Priority, Spec, Window};
+use super::spec::{IONS, Priority, Spec, USUAL_PRIORITY, Window};
 use super::{Beer, GristLine, Volumes};
 use crate::error::Error;
 use crate::id::{BeerId, MaltId};
@@ -67,23 +67,11 @@ fn window_rows(spec: &Spec) -> Vec<WindowRow> {
     ions.chain(others.into_iter().flatten()).collect()
 }
 
-/// A ratio that was checked when it was stored.
-fn ratio(value: f64) -> Option<MassRatio> {
-    MassRatio::new(value).ok()
-}
-
 fn put_window(spec: &mut Spec, row: &WindowRow) {
     match row.figure.as_str() {
         ALKALINITY => spec.alkalinity = Some(row.window(MgPerLAsCaCO3::clamped)),
         MASH_CALCIUM => spec.mash_calcium = Some(row.window(MgPerL::clamped)),
-        SULFATE_TO_CHLORIDE => {
-            spec.sulfate_to_chloride = Some(Window {
-                low: row.low.and_then(ratio),
-                high: row.high.and_then(ratio),
-                preferred: row.preferred.and_then(ratio),
-                priority: row.priority,
-            });
-        }
+        SULFATE_TO_CHLORIDE => spec.sulfate_to_chloride = Some(row.window(MassRatio::clamped)),
         SPARGE_ALKALINITY => spec.sparge_alkalinity = Some(row.window(MgPerLAsCaCO3::clamped)),
         figure => {
             if let Some(ion) = figure.strip_suffix("_mg_per_l").and_then(Ion::from_name) {
@@ -167,7 +155,7 @@ async fn complete(db: &mut SqliteConnection, mut beers: Vec<Beer>) -> Result<Vec
                 low: row.try_get("low")?,
                 high: row.try_get("high")?,
                 preferred: row.try_get("preferred")?,
-                priority: Priority::from_key(row.try_get("priority")?).unwrap_or_default(),
+                priority: Priority::from_key(row.try_get("priority")?).unwrap_or(USUAL_PRIORITY),
             };
             put_window(&mut beers[*place].spec, &window);
         }

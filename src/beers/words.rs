@@ -1,10 +1,10 @@
 //! A spec and a grist in words, for pages.
 
 use chemistry::ion::Ion;
-use chemistry::quantity::{MgPerL, MgPerLAsCaCO3};
+use chemistry::quantity::{MassRatio, MgPerL, MgPerLAsCaCO3};
 
 use super::Beer;
-use super::spec::{IONS, MassRatio, Spec, Window};
+use super::spec::{IONS, Priority, Spec, Window};
 use crate::brewery::Units;
 use crate::web::format::decimals;
 use crate::web::units::Measure;
@@ -32,6 +32,15 @@ pub(super) const fn ion_label(ion: Ion) -> &'static str {
         Ion::Chloride => "Chloride",
         Ion::Nitrate => "Nitrate, as NO₃",
         _ => ion.symbol(),
+    }
+}
+
+/// The priority as what to do with its window when not everything can be had.
+pub(super) const fn priority_words(priority: Priority) -> &'static str {
+    match priority {
+        Priority::High => "give up last",
+        Priority::Middle => "give up second",
+        Priority::Low => "give up first",
     }
 }
 
@@ -74,7 +83,7 @@ fn line<T: Copy>(
             .preferred
             .map(|value| with_unit(shown(value)))
             .unwrap_or_default(),
-        priority: window.priority.words(),
+        priority: priority_words(window.priority),
     }
 }
 
