@@ -72,12 +72,9 @@ impl Form {
         self.fields
             .iter()
             .filter_map(|(field, _)| {
-                field
-                    .strip_prefix(&prefix)?
-                    .split('.')
-                    .next()?
-                    .parse::<usize>()
-                    .ok()
+                // As in `listed`: a row numbered beyond that is no row.
+                let index = field.strip_prefix(&prefix)?.split('.').next()?;
+                index.parse::<usize>().ok().filter(|_| index.len() <= 4)
             })
             .max()
             .map_or(0, |last| last + 1)

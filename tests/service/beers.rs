@@ -415,3 +415,21 @@ async fn only_a_manager_is_offered_to_change_beers() {
         assert_eq!(refused.status, reqwest::StatusCode::FORBIDDEN, "{login}");
     }
 }
+
+#[tokio::test]
+async fn a_line_with_an_absurd_number_is_refused_and_costs_nothing() {
+    let desk = Desk::start().await;
+    let manager = desk.browser("manager").await;
+    let form = manager.open("/beers/new").await;
+    for line in ["4000000000", "18446744073709551615", "9999", "-1", "x"] {
+        let mut fields = crate::desk::offered(&form, "/beers/new", &[("name", "Sluice")]);
+        fields.push((format!("grist.{line}.kilograms"), "5".into()));
+        let answer = manager.post("/beers/new", &fields).await;
+        assert_eq!(
+            answer.status,
+            reqwest::StatusCode::UNPROCESSABLE_ENTITY,
+            "{line}"
+        );
+        assert_eq!(answer.field("name"), "Sluice");
+    }
+}
