@@ -109,7 +109,7 @@ pub struct TodaysWaterBody {
     assumed: Vec<String>,
     /// Figures outside the limits for drinking water.
     potable: Vec<PotableBody>,
-    /// What the checks of the newest test that counts come to.
+    /// What the checks of the newest test with enough lines to be judged come to.
     verdict: &'static str,
     /// What speaks against that test.
     findings: Vec<FindingBody>,

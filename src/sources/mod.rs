@@ -24,7 +24,7 @@ pub const fn kind_name(kind: WaterKind) -> &'static str {
         WaterKind::Mains => "Mains",
         WaterKind::Borehole => "Borehole or well",
         WaterKind::Surface => "River, lake or reservoir",
-        WaterKind::Permeate => "Permeate of reverse osmosis, or demineralised",
+        WaterKind::Permeate => "Permeate or demineralised",
         WaterKind::Other => "Bought-in or other",
     }
 }

@@ -10,7 +10,7 @@ use axum::routing::{get, post};
 use chemistry::report::{Analyte, Verdict, WaterKind};
 
 use super::api::SourceBody;
-use super::trend::{self, Trend, bare, capital};
+use super::trend::{self, Trend, bare, capital, doubt};
 use super::water_tests::pages::{TestRow, verdict_badge};
 use super::water_tests::{WaterTest, operations as tests};
 use super::{
@@ -75,6 +75,7 @@ struct SourceRow {
 }
 
 struct ShortFigure {
+    label: String,
     value: String,
     doubt: String,
     assumed: bool,
@@ -85,14 +86,16 @@ fn short(todays: &TodaysWater) -> Vec<ShortFigure> {
         .into_iter()
         .map(|analyte| match todays.figure(analyte) {
             Some(figure) => ShortFigure {
+                label: capital(analyte.name()),
                 value: bare(analyte, figure.value),
-                doubt: bare(analyte, figure.sd),
+                doubt: doubt(analyte, figure.sd),
                 assumed: figure.how == HowKnown::Assumed,
             },
             // Counted as none, and so little doubted that it is not listed.
             None => ShortFigure {
+                label: capital(analyte.name()),
                 value: bare(analyte, 0.0),
-                doubt: bare(analyte, 0.0),
+                doubt: doubt(analyte, 0.0),
                 assumed: true,
             },
         })
@@ -126,7 +129,7 @@ async fn list(State(db): State<Db>, framer: Framer, asked: Form) -> Result<ListP
                 .as_ref()
                 .map_or(true, |todays| todays.potable.is_empty()),
             figures: todays.map(|todays| short(&todays)),
-            last: duty.last.map_or("never".into(), |last| last.to_string()),
+            last: duty.last.map_or(String::new(), |last| last.to_string()),
             duty,
         });
     }
@@ -186,7 +189,7 @@ fn view(figure: &TodaysFigure) -> FigureView {
     let analyte = figure.analyte;
     let (value, doubt) = match figure.below {
         Some(limit) => (format!("< {}", bare(analyte, limit)), String::new()),
-        None => (bare(analyte, figure.value), bare(analyte, figure.sd)),
+        None => (bare(analyte, figure.value), doubt(analyte, figure.sd)),
     };
     let age = match figure.age_days {
         None => String::new(),

@@ -15,7 +15,7 @@ use chemistry::report::{
 };
 use chemistry::water::{MeasuredWater, Water};
 use jiff::civil::{Date, date};
-use statistics::local_level::{self, Damping, Observation, Prior, Settings, SourceKind};
+use statistics::local_level::{self, Damping, Observation, Prior, Range, Settings, SourceKind};
 use statistics::measurement::{self, Precision};
 use statistics::quantity::{Day, Sd, Share, Step, Value};
 
@@ -54,9 +54,9 @@ pub struct TodaysWater {
     pub tests: Vec<WaterTestId>,
     /// The figures outside the limits for drinking water.
     pub potable: Vec<PotableFinding>,
-    /// What speaks against the newest test that counts.
+    /// What speaks against the newest test with enough lines to be judged.
     pub findings: Vec<Finding>,
-    /// What the checks of that test come to.
+    /// What the checks of that test come to; [`Verdict::CannotBeJudged`] without one.
     pub verdict: Verdict,
 }
 
@@ -205,7 +205,7 @@ pub fn compose(
         .collect();
     let Some(newest) = tests.first() else {
         return Err(Error::Conflict(format!(
-            "No water test of “{}” counts for today's water. Enter one first",
+            "No water test of “{}” counts for today’s water. Enter one first",
             source.name
         )));
     };
@@ -232,7 +232,7 @@ pub fn compose(
     let speciation =
         Speciation::of_measured(&composition.water).map_err(|error| unusable(&source, &error))?;
     add_assumed(&mut figures, &composition);
-    let assessment = newest.assess()?;
+    let (verdict, findings) = judged(&tests)?;
     Ok(TodaysWater {
         water: *speciation.water(),
         measured: composition.water,
@@ -245,15 +245,25 @@ pub fn compose(
         latest: newest.sheet.sampled_on,
         tests: tests.iter().map(|test| test.id).collect(),
         potable: potable_findings(&known, limits),
-        verdict: assessment.verdict,
-        findings: assessment
-            .findings
-            .into_iter()
-            .filter(|finding| finding.severity > Severity::Info)
-            .collect(),
+        verdict,
+        findings,
         source,
         on,
     })
+}
+
+/// The verdict on the newest test that had one, and what speaks against it. A kit's
+/// single figure says nothing of the report before it.
+fn judged(tests: &[&WaterTest]) -> Result<(Verdict, Vec<Finding>), Error> {
+    for test in tests {
+        let assessment = test.assess()?;
+        if assessment.verdict != Verdict::CannotBeJudged {
+            let mut findings = assessment.findings;
+            findings.retain(|finding| finding.severity > Severity::Info);
+            return Ok((assessment.verdict, findings));
+        }
+    }
+    Ok((Verdict::CannotBeJudged, Vec::new()))
 }
 
 fn unusable(source: &Source, why: &dyn std::error::Error) -> Error {
@@ -263,6 +273,13 @@ fn unusable(source: &Source, why: &dyn std::error::Error) -> Error {
         why.to_string().trim_end_matches('.')
     ))
 }
+
+/// Most liquors lie within pH 7.0 and 8.2. With a range of 0.8 an old pH is never
+/// less well known than an assumed one, ± 0.4.
+const USUAL_PH: Range = Range {
+    least: Value::constant(7.2),
+    greatest: Value::constant(8.0),
+};
 
 /// One figure from its history, newest first; `None` without one.
 fn estimate(
@@ -286,7 +303,7 @@ fn estimate(
             mean: Value::clamped(seen.figure.best()),
             sd: Sd::clamped(seen.figure.sd()),
         }),
-        supplier_range: None,
+        supplier_range: (analyte == Analyte::Ph).then_some(USUAL_PH),
         damping: Damping::Odd,
     };
     let Some(level) = local_level::today(&observations, &settings, day(on)) else {

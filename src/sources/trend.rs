@@ -60,6 +60,21 @@ pub(super) fn bare(analyte: Analyte, value: f64) -> String {
     }
 }
 
+/// How far a figure may be out, without its unit.
+pub(super) fn doubt(analyte: Analyte, sd: f64) -> String {
+    match analyte {
+        Analyte::Ph => format::ph(sd),
+        _ => format::doubt(sd),
+    }
+}
+
+/// A figure with its doubt and unit, rounded for reading.
+fn estimate(analyte: Analyte, value: f64, sd: f64) -> String {
+    let unit = analyte.canonical_unit().label();
+    let text = format!("{} ± {} {unit}", bare(analyte, value), doubt(analyte, sd));
+    text.trim_end().to_owned()
+}
+
 /// What every test says of one analyte, with whether it counts; oldest first.
 pub(super) fn history(tests: &[WaterTest], analyte: Analyte) -> Result<Vec<(Seen, bool)>, Error> {
     let mut points = Vec::new();
@@ -111,7 +126,7 @@ pub(super) fn trend(
         let found = if below {
             format!("below {}", amount(analyte, seen.figure.canonical().get()))
         } else {
-            format!("{} ± {}", bare(analyte, value), amount(analyte, sd))
+            estimate(analyte, value, sd)
         };
         TrendPoint {
             x: x(seen.sampled_on),
@@ -137,11 +152,7 @@ pub(super) fn trend(
     };
     let centre = todays.map(|t| Level {
         y: y(t.value),
-        text: format!(
-            "today {} ± {}",
-            bare(analyte, t.value),
-            amount(analyte, t.sd)
-        ),
+        text: format!("today {}", estimate(analyte, t.value, t.sd)),
     });
     Some(Trend {
         text: format!(

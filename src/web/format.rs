@@ -33,6 +33,21 @@ pub fn figure(value: f64) -> String {
     decimals(value, places)
 }
 
+/// How far a figure may be out: two significant digits from 0.01 up.
+pub fn doubt(sd: f64) -> String {
+    let size = sd.abs();
+    let places = if size >= 9.95 {
+        0
+    } else if size >= 0.995 {
+        1
+    } else if size >= 0.0995 {
+        2
+    } else {
+        3
+    };
+    decimals(sd, places)
+}
+
 /// A pH, two decimals.
 pub fn ph(value: f64) -> String {
     decimals(value, 2)

@@ -14,6 +14,11 @@
   const SENT_FOR_MS = 20000;
   const pending = new WeakMap();
 
+  // Read as an attribute: a form may have a field named "method", which would stand in for form.method.
+  function methodOf(form) {
+    return (form.getAttribute("method") || "get").toLowerCase();
+  }
+
   function place(root, element) {
     if (!element || !root.contains(element)) return null;
     let from = null, to = null;
@@ -38,9 +43,10 @@
     const abort = new AbortController();
     pending.set(form, { abort });
     target.setAttribute("aria-busy", "true");
-    const method = (form.dataset.liveMethod || form.method || "get").toUpperCase();
+    const method = (form.dataset.liveMethod || methodOf(form)).toUpperCase();
     const body = new URLSearchParams();
-    for (const [name, value] of new FormData(form)) if (typeof value === "string") body.append(name, value);
+    // Names beginning with _ belong to sending the form for good, such as the key that applies it once.
+    for (const [name, value] of new FormData(form)) if (typeof value === "string" && !name.startsWith("_")) body.append(name, value);
     const address = new URL(form.dataset.live, location.href);
     if (method === "GET") address.search = body;
     try {
@@ -101,7 +107,7 @@
 
   document.addEventListener("submit", (event) => {
     const form = event.target;
-    if (event.defaultPrevented || form.method !== "post") return;
+    if (event.defaultPrevented || methodOf(form) !== "post") return;
     if (form.dataset.sent) { event.preventDefault(); return; }
     // After this turn, so that the pressed button's own name and value still go with the form.
     setTimeout(() => rest(form, true), 0);

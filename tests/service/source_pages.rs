@@ -64,7 +64,7 @@ async fn a_source_and_its_first_test_are_typed_and_todays_water_is_shown() {
     let potassium = figures.iter().find(|f| f.starts_with("Potassium")).unwrap();
     assert!(potassium.contains("assumed"), "{potassium}");
     let list = qa.open("/sources").await;
-    assert!(list.words().contains("60.0 ±"), "{}", list.words());
+    assert!(list.words().contains("60.0 ± "), "{}", list.words());
 }
 
 #[tokio::test]

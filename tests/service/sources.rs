@@ -331,6 +331,37 @@ async fn a_kit_test_of_one_figure_moves_that_figure_and_no_other() {
 }
 
 #[tokio::test]
+async fn averages_are_what_to_expect_and_no_sample_of_any_day() {
+    let desk = Desk::start().await;
+    let program = desk.full_program("qa").await;
+    let id = mains(&program).await;
+    let tests = format!("/sources/{id}/water-tests");
+    let mut averages = balanced();
+    averages["sample_kind"] = json!("average");
+    averages["sampled_on"] = json!("2020-12-31");
+    assert_eq!(program.post(&tests, &averages).await.status, 201);
+    let todays = format!("/sources/{id}/todays-water");
+    let before = program.get(&todays).await;
+    let calcium = figure(&before.body, "calcium");
+    assert_eq!(calcium["how"], "average");
+    assert_eq!(calcium["age_days"], Value::Null);
+    // 20 % of 60 mg/L within a year, and the laboratory's 2.5 %: 12.1; it does not age.
+    let sd = calcium["sd"].as_f64().unwrap();
+    assert!((11.9..12.3).contains(&sd), "{sd}");
+
+    let mut sample = balanced();
+    sample["sampled_on"] = json!(leat::web::format::today("UTC"));
+    let sample = with(sample, "calcium", "66", "mg_per_l");
+    assert_eq!(program.post(&tests, &sample).await.status, 201);
+    let after = program.get(&todays).await;
+    let calcium = figure(&after.body, "calcium");
+    // Between the two, nearly all of the sample: 1.6² against 12.1².
+    let value = calcium["value"].as_f64().unwrap();
+    assert!((65.5..66.0).contains(&value), "{value}");
+    assert_eq!(calcium["how"], "laboratory");
+}
+
+#[tokio::test]
 async fn bad_lines_are_named_one_by_one() {
     let desk = Desk::start().await;
     let program = desk.full_program("qa").await;

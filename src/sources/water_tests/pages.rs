@@ -19,7 +19,7 @@ use crate::id::{SourceId, WaterTestId};
 use crate::people::Permission;
 use crate::record;
 use crate::record::pages::Line;
-use crate::sources::trend::{bare, capital};
+use crate::sources::trend::{bare, capital, doubt};
 use crate::sources::{Source, operations as sources};
 use crate::web::App;
 use crate::web::extract::At;
@@ -97,7 +97,6 @@ struct VerdictView {
     /// Lines that cannot be read.
     unread: Vec<String>,
     findings: Vec<FindingView>,
-    balance: Option<BalanceView>,
     conductivity: String,
     potable: Vec<String>,
     offers: Vec<Offer>,
@@ -109,12 +108,6 @@ struct VerdictView {
 struct FindingView {
     kind: &'static str,
     sentence: String,
-}
-
-struct BalanceView {
-    cations: String,
-    anions: String,
-    difference: String,
 }
 
 struct Offer {
@@ -144,11 +137,6 @@ impl VerdictView {
                     sentence: finding.sentence.clone(),
                 })
                 .collect(),
-            balance: assessment.balance.as_ref().map(|balance| BalanceView {
-                cations: format::decimals(balance.cations.get(), 2),
-                anions: format::decimals(balance.anions.get(), 2),
-                difference: format::decimals(balance.percent_difference(), 1),
-            }),
             conductivity: assessment
                 .calculated_conductivity
                 .map(MicrosiemensPerCm::get)
@@ -507,7 +495,7 @@ fn line_view(line: &TestLine, check: &Check) -> LineView {
         ),
         doubt: match canonical.qualifier() {
             chemistry::report::Qualifier::Measured => {
-                figure.map_or(String::new(), |figure| bare(analyte, figure.sd()))
+                figure.map_or(String::new(), |figure| doubt(analyte, figure.sd()))
             }
             chemistry::report::Qualifier::Below => String::new(),
         },
