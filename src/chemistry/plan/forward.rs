@@ -128,7 +128,7 @@ pub fn evaluate(
     let sparge_liquor = to(Vessel::SpargeLiquor).added_to(&tank, volumes.sparge);
     let whole = sum_of(problem, doses, |_| true).added_to(&blend, liquor);
 
-    let inputs = mash_inputs(problem, shares, doses, blend);
+    let inputs = mash_with(problem, shares, doses, blend);
     let target = problem.spec.mash_ph.target;
     let outcome = Outcome {
         blend,
@@ -208,7 +208,14 @@ fn sum_of(problem: &Problem, doses: &[Dose], counts: impl Fn(&Dose) -> bool) -> 
         })
 }
 
-fn mash_inputs(problem: &Problem, shares: &[Fraction], doses: &[Dose], blend: Water) -> MashInputs {
+/// The mash that these shares and doses make: what its prediction is made of, and what a
+/// put-right works on.
+#[must_use]
+pub fn mash_inputs(problem: &Problem, shares: &[Fraction], doses: &[Dose]) -> MashInputs {
+    mash_with(problem, shares, doses, blended(problem, shares))
+}
+
+fn mash_with(problem: &Problem, shares: &[Fraction], doses: &[Dose], blend: Water) -> MashInputs {
     let volumes = problem.volumes;
     let tank_share = volumes.mash.value.get() / volumes.liquor.get();
     let additions = doses

@@ -30,7 +30,7 @@ mod rounding;
 
 use std::fmt;
 
-pub use forward::{Broken, Dose, Finding, Outcome, Standing, evaluate};
+pub use forward::{Broken, Dose, Finding, Outcome, Standing, evaluate, mash_inputs};
 pub use problem::{
     Limits, PlanError, Preference, Priority, Problem, ShelfItem, Source, Spec, Volumes, Window,
 };
