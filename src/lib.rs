@@ -18,6 +18,7 @@ pub mod id;
 pub mod input;
 pub mod malts;
 pub mod people;
+pub mod plans;
 pub mod record;
 pub mod server;
 pub mod shelf;

@@ -96,6 +96,8 @@ pub fn done_sentence(key: &str) -> Option<&'static str> {
         "approved" => "Approved. Its inputs are frozen.",
         "unapproved" => "The approval was taken back.",
         "revised" => "A new revision was begun.",
+        "read" => "Read anew: water, beer, malts and shelf are as they are now.",
+        "taken_back" => "Taken back: that line is not in.",
         "dosed" => "Saved: that dose is in.",
         "measured" => "The reading is saved.",
         "closed" => "The batch is closed.",

@@ -26,6 +26,7 @@ use crate::people::passwords::Passwords;
 
 pub mod api;
 pub mod assets;
+pub mod chart;
 pub mod extract;
 pub mod form;
 pub mod format;
@@ -75,6 +76,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::record::pages::routes())
         .merge(crate::brewery::pages::routes())
         .merge(crate::beers::pages::routes())
+        .merge(crate::plans::pages::routes())
         .merge(crate::sources::pages::routes())
         .merge(help::routes())
         .fallback(problem::no_such_page)
@@ -88,6 +90,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::record::api::routes())
         .merge(crate::brewery::api::routes())
         .merge(crate::beers::api::routes())
+        .merge(crate::plans::api::routes())
         .merge(crate::shelf::api::routes())
         .merge(crate::sources::api::routes())
         .split_for_parts();

@@ -1,0 +1,408 @@
+//! Plans: the treatment of one batch, from draft to closed.
+//!
+//! A plan holds its [`Inputs`]: water, grist, volumes, shelf and spec as they were
+//! when it was drafted. Everything it shows is computed from those and from its
+//! shares and doses by the chemistry, again on every look. An approval freezes them.
+//! The brewer weighs out the [`Dose`]s, reads the mash ([`MashCheck`]) and closes the
+//! batch with an [`Outcome`]; closed batches teach the next prediction ([`learning`]).
+//!
+//! Read [`operations`] for the rules, [`inputs`] for what is frozen, [`compute`] for
+//! how a treatment is worked out.
+
+use chemistry::material::Vessel;
+use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
+use jiff::civil::Date;
+
+use crate::id::{BeerId, DoseId, MashCheckId, PlanId, UtcTime};
+
+pub mod api;
+pub mod bodies;
+pub mod brew_day;
+pub mod compute;
+pub mod gather;
+pub mod inputs;
+pub mod learning;
+pub mod mash_checks;
+pub mod operations;
+pub mod pages;
+mod sheet;
+pub mod store;
+pub mod weigh_out;
+pub mod words;
+
+pub use inputs::Inputs;
+
+/// Where a plan stands.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum State {
+    /// May be changed.
+    Draft,
+    /// Frozen, ready to weigh out.
+    Approved,
+    /// Everything planned is in.
+    Dosed,
+    /// The batch is done and its outcome written down.
+    Closed,
+    /// Will not be brewed.
+    Withdrawn,
+}
+
+impl State {
+    /// Every state, in the order of a batch's life.
+    pub const ALL: [Self; 5] = [
+        Self::Draft,
+        Self::Approved,
+        Self::Dosed,
+        Self::Closed,
+        Self::Withdrawn,
+    ];
+
+    /// As stored and sent.
+    pub const fn key(self) -> &'static str {
+        match self {
+            Self::Draft => "draft",
+            Self::Approved => "approved",
+            Self::Dosed => "dosed",
+            Self::Closed => "closed",
+            Self::Withdrawn => "withdrawn",
+        }
+    }
+
+    /// As shown.
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::Draft => "Draft",
+            Self::Approved => "Approved",
+            Self::Dosed => "Dosed",
+            Self::Closed => "Closed",
+            Self::Withdrawn => "Withdrawn",
+        }
+    }
+
+    /// The state with this key.
+    pub fn from_key(key: &str) -> Option<Self> {
+        Self::ALL.into_iter().find(|state| state.key() == key)
+    }
+}
+
+/// How the treatment of a plan was chosen.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Choice {
+    /// The best of this way.
+    Way(chemistry::plan::Way),
+    /// Amounts were moved by hand.
+    ByHand,
+}
+
+impl Choice {
+    /// As stored and sent.
+    pub const fn key(self) -> &'static str {
+        match self {
+            Self::Way(way) => way.key(),
+            Self::ByHand => "by_hand",
+        }
+    }
+
+    /// In words.
+    pub const fn words(self) -> &'static str {
+        match self {
+            Self::Way(way) => words::way(way),
+            Self::ByHand => "moved by hand",
+        }
+    }
+
+    /// The choice with this key.
+    pub fn from_key(key: &str) -> Option<Self> {
+        if key == "by_hand" {
+            Some(Self::ByHand)
+        } else {
+            chemistry::plan::Way::from_key(key).map(Self::Way)
+        }
+    }
+}
+
+/// One revision of the treatment of one batch.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Plan {
+    /// Its identifier.
+    pub id: PlanId,
+    /// The brewery's number of the batch.
+    pub batch: String,
+    /// Counts the revisions of this batch's plan, from one.
+    pub revision: i64,
+    /// The plan this one takes the place of.
+    pub replaces: Option<PlanId>,
+    /// What is brewed.
+    pub beer_id: BeerId,
+    /// Its name when the plan was drafted.
+    pub beer_name: String,
+    /// The day it is brewed.
+    pub brewed_on: Date,
+    /// Where it stands.
+    pub state: State,
+    /// What it is computed from.
+    pub inputs: Inputs,
+    /// When those were read.
+    pub inputs_read_at: UtcTime,
+    /// How its treatment was chosen.
+    pub choice: Choice,
+    /// Share of each source in the liquor.
+    pub shares: Vec<Fraction>,
+    /// What goes where, in the order of weighing out.
+    pub doses: Vec<Dose>,
+    /// When and by whom it was drafted.
+    pub drafted: Deed,
+    /// When, by whom and, where it needed one, for which reason it was approved.
+    pub approved: Option<Deed>,
+    /// The prediction of that moment.
+    pub prediction: Option<Prediction>,
+    /// When, by whom and why it was withdrawn.
+    pub withdrawn: Option<Deed>,
+    /// When, by whom and with which note it was closed.
+    pub closed: Option<Deed>,
+    /// Predicted against measured.
+    pub outcome: Option<Outcome>,
+    /// Counts changes, so that two people do not overwrite each other.
+    pub version: i64,
+}
+
+impl Plan {
+    /// Where its page is.
+    pub fn address(&self) -> String {
+        format!("/plans/{}", self.id)
+    }
+}
+
+/// Who did it, when, and why if that was said.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Deed {
+    /// When.
+    pub at: UtcTime,
+    /// Who, by the name of that day.
+    pub by: String,
+    /// Why; empty if that was not asked.
+    pub reason: String,
+}
+
+/// A mash pH as it was predicted.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Prediction {
+    /// Expected, cooled sample.
+    pub ph: Ph,
+    /// One standard deviation.
+    pub sd: PhShift,
+    /// Lower end of the 90 % interval.
+    pub low: Ph,
+    /// Upper end.
+    pub high: Ph,
+}
+
+/// One material, one amount, one vessel: planned and actual.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Dose {
+    /// Its identifier.
+    pub id: DoseId,
+    /// Its place in the weigh-out.
+    pub position: i64,
+    /// Where it goes.
+    pub vessel: Vessel,
+    /// Its place on the shelf of the plan's inputs.
+    pub material: usize,
+    /// How much was planned, g or mL.
+    pub planned: DoseAmount,
+    /// The mash check whose first step it is.
+    pub mash_check: Option<MashCheckId>,
+    /// What went in.
+    pub weighed: Option<Weighed>,
+}
+
+impl Dose {
+    /// What is in, or will be: the actual amount where it is known.
+    pub fn amount(&self) -> DoseAmount {
+        self.weighed
+            .as_ref()
+            .map_or(self.planned, |weighed| weighed.actual)
+    }
+}
+
+/// A dose that is in.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Weighed {
+    /// How much, g or mL.
+    pub actual: DoseAmount,
+    /// Of which lot.
+    pub lot: String,
+    /// When.
+    pub at: UtcTime,
+    /// By whom.
+    pub by: String,
+}
+
+/// When in the making of beer a pH is read.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Stage {
+    /// The treated liquor.
+    Liquor,
+    /// The mash.
+    Mash,
+    /// The first runnings.
+    FirstRunnings,
+    /// The last runnings.
+    LastRunnings,
+    /// The full kettle, before the boil.
+    KettleFull,
+    /// The end of the boil.
+    EndOfBoil,
+    /// The end of fermentation.
+    EndOfFermentation,
+    /// The package.
+    Package,
+}
+
+impl Stage {
+    /// Every stage, in order.
+    pub const ALL: [Self; 8] = [
+        Self::Liquor,
+        Self::Mash,
+        Self::FirstRunnings,
+        Self::LastRunnings,
+        Self::KettleFull,
+        Self::EndOfBoil,
+        Self::EndOfFermentation,
+        Self::Package,
+    ];
+
+    /// As stored and sent.
+    pub const fn key(self) -> &'static str {
+        match self {
+            Self::Liquor => "liquor",
+            Self::Mash => "mash",
+            Self::FirstRunnings => "first_runnings",
+            Self::LastRunnings => "last_runnings",
+            Self::KettleFull => "kettle_full",
+            Self::EndOfBoil => "end_of_boil",
+            Self::EndOfFermentation => "end_of_fermentation",
+            Self::Package => "package",
+        }
+    }
+
+    /// As shown.
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::Liquor => "Liquor",
+            Self::Mash => "Mash",
+            Self::FirstRunnings => "First runnings",
+            Self::LastRunnings => "Last runnings",
+            Self::KettleFull => "Kettle full",
+            Self::EndOfBoil => "End of boil",
+            Self::EndOfFermentation => "End of fermentation",
+            Self::Package => "Package",
+        }
+    }
+
+    /// The stage with this key.
+    pub fn from_key(key: &str) -> Option<Self> {
+        Self::ALL.into_iter().find(|stage| stage.key() == key)
+    }
+}
+
+/// A pH reading of a batch.
+#[derive(Clone, Debug, PartialEq)]
+pub struct MashCheck {
+    /// Its identifier.
+    pub id: MashCheckId,
+    /// Which plan's batch.
+    pub plan_id: PlanId,
+    /// When in the making of the beer.
+    pub stage: Stage,
+    /// When.
+    pub read_at: UtcTime,
+    /// Minutes since strike.
+    pub minute: Minutes,
+    /// As the meter showed it.
+    pub ph: Ph,
+    /// Temperature of the sample in the meter's cup.
+    pub sample: Celsius,
+    /// Which meter.
+    pub meter: String,
+    /// One standard deviation of the meter at its last calibration.
+    pub meter_sd: PhShift,
+    /// Whether the meter was checked in buffer after a surprising reading.
+    pub meter_checked: bool,
+    /// What was advised, as it was shown.
+    pub advised: Advised,
+    /// By whom.
+    pub read_by: String,
+    /// When, by whom and why the reading was withdrawn.
+    pub withdrawn: Option<Deed>,
+}
+
+/// What was said to a mash check.
+#[derive(Clone, Debug, PartialEq, serde::Serialize, serde::Deserialize, utoipa::ToSchema)]
+pub struct Advised {
+    /// The reading on the basis of a cooled sample.
+    pub reading_ph: f64,
+    /// Its standard deviation.
+    pub reading_sd: f64,
+    /// What was expected of the mash at that moment; absent at other stages.
+    pub expected_ph: Option<f64>,
+    /// Its standard deviation.
+    pub expected_sd: Option<f64>,
+    /// `inside`, `cannot_be_told`, `below` or `above`; `noted` at other stages.
+    pub verdict: String,
+    /// `leave`, `step`, `read_again` or `stop`.
+    pub advice: String,
+    /// What to do, in a heading.
+    pub title: String,
+    /// Why, in sentences.
+    pub words: Vec<String>,
+    /// The first step, if one is advised.
+    pub step: Option<Step>,
+}
+
+/// Half of the computed dose, to be added now.
+#[derive(Clone, Debug, PartialEq, serde::Serialize, serde::Deserialize, utoipa::ToSchema)]
+pub struct Step {
+    /// Place of the material on the plan's shelf.
+    pub material: usize,
+    /// Its name.
+    pub name: String,
+    /// How much to add now, g or mL, on the step of the scale.
+    pub amount: f64,
+    /// `g` or `mL`.
+    pub unit: String,
+    /// What the target would take in full, g or mL.
+    pub full_dose: f64,
+    /// `lower` or `raise`.
+    pub direction: String,
+    /// The pH to expect after it.
+    pub expected_ph: f64,
+    /// Its standard deviation.
+    pub expected_sd: f64,
+    /// When to read again, min.
+    pub reread_after_minutes: f64,
+}
+
+/// Predicted against measured for one batch.
+#[derive(Clone, Debug, PartialEq, serde::Serialize, serde::Deserialize, utoipa::ToSchema)]
+pub struct Outcome {
+    /// The pH predicted at approval.
+    pub predicted_ph: f64,
+    /// Its standard deviation.
+    pub predicted_sd: f64,
+    /// What the balance says with what was really weighed in before the reading, and
+    /// nothing learned.
+    pub untrained_ph: f64,
+    /// The reading that counts, cooled basis; absent if the mash was not read.
+    pub measured_ph: Option<f64>,
+    /// Its standard deviation.
+    pub measured_sd: Option<f64>,
+    /// Which mash check it was.
+    pub mash_check_id: Option<MashCheckId>,
+    /// Whether it counts for learning; a reading that was spoilt does not.
+    pub counts: bool,
+    /// How far each malt moves this mash.
+    pub malts: Vec<learning::Taught>,
+    /// Doubt of the untrained prediction from everything but the malts' own pH.
+    pub other_sd: f64,
+}

@@ -1,0 +1,909 @@
+//! Plans at the desk: the list, drafting, moving amounts, approving, closing.
+
+use askama::Template;
+use askama_web::WebTemplate;
+use axum::Router;
+use axum::extract::State;
+use axum::response::{IntoResponse, Redirect, Response};
+use axum::routing::{get, post};
+use chemistry::material::Vessel;
+use chemistry::plan::{Outcome, Way};
+
+use super::api::{ClosingBody, NewPlanBody, TreatmentBody};
+use super::bodies::InputsBody;
+use super::inputs::Inputs;
+use super::operations::{self, Closing, NewPlan, Treatment};
+use super::sheet::{self, DoseRow, Facts, Group, WayCard, consequences};
+use super::store::{Filter, Listing, Order};
+use super::{MashCheck, Plan, State as PlanState, mash_checks, words};
+use crate::beers;
+use crate::brewery::Units;
+use crate::db::Db;
+use crate::error::Error;
+use crate::id::{BeerId, MashCheckId, PlanId};
+use crate::input::Problems;
+use crate::people::Permission;
+use crate::record;
+use crate::record::pages::Line;
+use crate::sources;
+use crate::web::App;
+use crate::web::extract::At;
+use crate::web::form::{Choice, Form};
+use crate::web::format;
+use crate::web::layout::{Framer, Page};
+use crate::web::units::{Measure, shown_in, typed_in_si};
+
+/// The pages.
+pub fn routes() -> Router<App> {
+    Router::new()
+        .route("/plans", get(list))
+        .route("/plans/new", get(new).post(create))
+        .route("/plans/{id}", get(show))
+        .route("/plans/{id}/treatment", post(move_amounts))
+        .route("/plans/{id}/consequences", post(show_consequences))
+        .route("/plans/{id}/trial", post(show_trial))
+        .route("/plans/{id}/inputs.json", get(show_inputs))
+        .route("/plans/{id}/way", post(take_way))
+        .route("/plans/{id}/inputs", post(refresh))
+        .route("/plans/{id}/schedule", post(reschedule))
+        .route("/plans/{id}/approval", post(approve))
+        .route("/plans/{id}/approval/taking-back", post(take_back_approval))
+        .route("/plans/{id}/withdrawal", post(withdraw))
+        .route("/plans/{id}/revisions", post(revise))
+        .route("/plans/{id}/closing", get(show_closing).post(close))
+        .merge(super::brew_day::routes())
+}
+
+/// Plans on one page of the list.
+const PAGE: i64 = 25;
+
+#[derive(Template, WebTemplate)]
+#[template(path = "plans/list.html")]
+struct ListPage {
+    page: Page,
+    rows: Vec<ListRow>,
+    asked: Form,
+    states: Vec<Choice>,
+    filtered: bool,
+    order: &'static str,
+    sorts: Vec<SortHead>,
+    earlier: Option<String>,
+    later: Option<String>,
+    words: String,
+}
+
+struct SortHead {
+    label: &'static str,
+    address: String,
+    direction: &'static str,
+}
+
+pub(super) struct ListRow {
+    pub(super) plan: Listing,
+    pub(super) predicted: String,
+    pub(super) measured: String,
+    pub(super) weighed: String,
+}
+
+impl From<Listing> for ListRow {
+    fn from(plan: Listing) -> Self {
+        Self {
+            predicted: plan.prediction.map_or_else(String::new, |it| {
+                format!(
+                    "{} ({} to {})",
+                    format::ph(it.ph.get()),
+                    format::ph(it.low.get()),
+                    format::ph(it.high.get())
+                )
+            }),
+            measured: plan
+                .outcome
+                .as_ref()
+                .and_then(|it| it.measured_ph)
+                .map_or_else(String::new, format::ph),
+            weighed: format!("{} of {}", plan.weighed, plan.doses),
+            plan,
+        }
+    }
+}
+
+async fn list(State(db): State<Db>, framer: Framer, asked: Form) -> Result<ListPage, Error> {
+    let filter = Filter {
+        state: PlanState::from_key(asked.value("state")),
+        beer: asked.value("beer_id").parse().ok(),
+        batch: Some(asked.value("batch").trim().to_owned()).filter(|batch| !batch.is_empty()),
+    };
+    let order = Order::ALL
+        .into_iter()
+        .find(|order| order.key() == asked.value("order"))
+        .unwrap_or_default();
+    let number = asked
+        .value("page")
+        .parse::<i64>()
+        .unwrap_or(1)
+        .clamp(1, 100_000);
+    let mut found = operations::list(
+        &db,
+        &framer.member,
+        &filter,
+        order,
+        (number - 1) * PAGE,
+        PAGE + 1,
+    )
+    .await?;
+    let more = found.len() > usize::try_from(PAGE).unwrap_or(usize::MAX);
+    found.truncate(usize::try_from(PAGE).unwrap_or(usize::MAX));
+    let address_of = |order: Order, number: i64| {
+        let query = |name: &str| crate::web::form::percent(asked.value(name));
+        format!(
+            "/plans?state={}&beer_id={}&batch={}&order={}&page={number}",
+            query("state"),
+            query("beer_id"),
+            query("batch"),
+            order.key()
+        )
+    };
+    let address = |number: i64| address_of(order, number);
+    let by_day = if order == Order::Latest {
+        Order::Earliest
+    } else {
+        Order::Latest
+    };
+    let sorts = [
+        ("Batch", Order::Batch),
+        ("Beer", Order::Beer),
+        ("Brewed", by_day),
+    ]
+    .map(|(label, other)| SortHead {
+        label,
+        address: address_of(other, 1),
+        direction: match (label, order) {
+            ("Batch", Order::Batch) | ("Beer", Order::Beer) | ("Brewed", Order::Earliest) => {
+                "ascending"
+            }
+            ("Brewed", Order::Latest) => "descending",
+            _ => "none",
+        },
+    })
+    .into();
+    let states = PlanState::ALL.map(|state| (state.key(), state.name()));
+    let states = std::iter::once(("", "Every state")).chain(states);
+    Ok(ListPage {
+        page: framer.page("Plans", "plans").await,
+        states: Choice::list(states, asked.value("state")),
+        filtered: filter.state.is_some() || filter.beer.is_some() || filter.batch.is_some(),
+        order: order.key(),
+        sorts,
+        earlier: (number > 1).then(|| address(number - 1)),
+        later: more.then(|| address(number + 1)),
+        words: format!("page {number}"),
+        rows: found.into_iter().map(Into::into).collect(),
+        asked,
+    })
+}
+
+#[derive(Template, WebTemplate)]
+#[template(path = "plans/new.html")]
+struct NewPage {
+    page: Page,
+    typed: Form,
+    beers: Vec<Choice>,
+    ways: Vec<Choice>,
+    sources: Vec<NewSource>,
+}
+
+struct NewSource {
+    id: String,
+    name: String,
+    detail: String,
+    usable: bool,
+}
+
+async fn new_page(db: &Db, framer: &Framer, typed: Form) -> Result<NewPage, Error> {
+    let page = framer.page("New plan", "plans").await;
+    let beers = beers::operations::list_in_use(db, &framer.member).await?;
+    let mut offered = Vec::new();
+    for source in sources::operations::list(db, &framer.member)
+        .await?
+        .into_iter()
+        .filter(|source| source.in_use)
+    {
+        let (detail, usable) =
+            match sources::operations::todays_water(db, &framer.member, source.id).await {
+                Ok(water) => (
+                    format!(
+                        "alkalinity {} mg/L as CaCO₃, last tested {}",
+                        format::figure(water.water.alkalinity_as_caco3().get()),
+                        water.latest
+                    ),
+                    true,
+                ),
+                Err(Error::Conflict(_)) => ("no water test yet".to_owned(), false),
+                Err(error) => return Err(error),
+            };
+        offered.push(NewSource {
+            id: source.id.to_string(),
+            name: source.name,
+            detail,
+            usable,
+        });
+    }
+    Ok(NewPage {
+        beers: Choice::list(
+            beers
+                .into_iter()
+                .map(|beer| (beer.id.to_string(), beer.name)),
+            typed.value("beer_id"),
+        ),
+        ways: Choice::list(
+            Way::ALL.map(|way| (way.key(), words::way(way))),
+            typed.value("way"),
+        ),
+        sources: offered,
+        page,
+        typed,
+    })
+}
+
+async fn new(State(db): State<Db>, framer: Framer, asked: Form) -> Result<NewPage, Error> {
+    framer.member.may(Permission::DraftPlans)?;
+    let zone = crate::brewery::operations::settings(&db).await?.time_zone;
+    let mut typed = Form::empty()
+        .with("beer_id", asked.value("beer_id"))
+        .with("brewed_on", format::today(&zone).to_string())
+        .with("way", Way::ClosestToPreferred.key());
+    for index in 0..40 {
+        typed = typed.with(format!("sources.{index}.used"), "yes");
+    }
+    new_page(&db, &framer, typed).await
+}
+
+async fn create(State(db): State<Db>, framer: Framer, typed: Form) -> Result<Response, Error> {
+    let drafted = async {
+        framer.member.may(Permission::DraftPlans)?;
+        let mut body: NewPlanBody = typed.body()?;
+        // An unticked box sends nothing.
+        for source in &mut body.sources {
+            source.used.get_or_insert_default();
+        }
+        operations::draft(&db, &framer.member, NewPlan::try_from(body)?).await
+    };
+    match drafted.await {
+        Ok(plan) => Ok(Redirect::to(&format!("/plans/{}", plan.id)).into_response()),
+        Err(error) => {
+            let (status, typed) = typed.refused(error)?;
+            Ok((status, new_page(&db, &framer, typed).await?).into_response())
+        }
+    }
+}
+
+#[derive(Template, WebTemplate)]
+#[template(path = "plans/show.html")]
+struct ShowPage {
+    page: Page,
+    plan: Plan,
+    typed: Form,
+    may_draft: bool,
+    may_approve: bool,
+    may_brew: bool,
+    successor: Option<(PlanId, i64)>,
+    facts: Facts,
+    shares: Vec<ShareRow>,
+    groups: Vec<Group>,
+    rows: Vec<DoseRow>,
+    ways: Vec<WayCard>,
+    outside_potable: Vec<String>,
+    assumed: Vec<String>,
+    checks: Vec<CheckRow>,
+    outcome: Option<OutcomeRow>,
+    learned: Option<sheet::LearnedWords>,
+    history: Vec<Line>,
+    read_at: String,
+    deeds: Vec<(String, String)>,
+    grist: Vec<(String, String, String)>,
+    volumes: Vec<(&'static str, String)>,
+    unweighed_steps: bool,
+    cautions: Vec<(String, Vec<&'static str>)>,
+    trial: bool,
+}
+
+struct ShareRow {
+    name: String,
+    field: String,
+    percent: String,
+    litres: String,
+    tested: String,
+}
+
+struct CheckRow {
+    check: MashCheck,
+    at: String,
+    reading: String,
+    sample: String,
+    expected: String,
+}
+
+struct OutcomeRow {
+    predicted: String,
+    measured: String,
+    difference: String,
+    inside: &'static str,
+}
+
+fn check_row(check: MashCheck, time_zone: &str, units: Units) -> CheckRow {
+    CheckRow {
+        at: format::moment(check.read_at, time_zone),
+        reading: format!(
+            "{} ± {}",
+            format::ph(check.advised.reading_ph),
+            format::ph(check.advised.reading_sd)
+        ),
+        sample: format!(
+            "{} at {} {}",
+            format::ph(check.ph.get()),
+            format::decimals(units.shown(Measure::Temperature, check.sample.get()), 0),
+            units.label(Measure::Temperature)
+        ),
+        expected: check
+            .advised
+            .expected_ph
+            .map_or_else(String::new, format::ph),
+        check,
+    }
+}
+
+fn outcome_row(outcome: &super::Outcome) -> OutcomeRow {
+    let predicted = format!(
+        "{} ± {}",
+        format::ph(outcome.predicted_ph),
+        format::ph(outcome.predicted_sd)
+    );
+    match (outcome.measured_ph, outcome.measured_sd) {
+        (Some(measured), Some(sd)) => {
+            let difference = measured - outcome.predicted_ph;
+            // 1.645 standard deviations hold nine in ten (normal distribution, any table).
+            let within = difference.abs() <= 1.645 * outcome.predicted_sd.hypot(sd);
+            OutcomeRow {
+                predicted,
+                measured: format!("{} ± {}", format::ph(measured), format::ph(sd)),
+                difference: format::decimals(difference, 2),
+                inside: if within {
+                    "inside the 90 % interval"
+                } else {
+                    "outside the 90 % interval"
+                },
+            }
+        }
+        _ => OutcomeRow {
+            predicted,
+            measured: "not read".into(),
+            difference: String::new(),
+            inside: "",
+        },
+    }
+}
+
+/// Which amounts of a treatment form are typed in the brewery's units.
+fn local_fields(inputs: &Inputs, typed: &Form) -> Vec<(String, Measure)> {
+    (0..typed.rows("doses"))
+        .map(|index| {
+            let material = typed
+                .row("doses", &index, "material")
+                .parse()
+                .unwrap_or(usize::MAX);
+            (
+                format!("doses.{index}.amount"),
+                words::dose_measure(inputs, material),
+            )
+        })
+        .collect()
+}
+
+/// The treatment of a draft as its form begins: every material in every vessel it may go
+/// to, with the amount that is planned.
+fn treatment_form(plan: &Plan, units: Units) -> Form {
+    let mut typed = Form::empty().with("version", plan.version.to_string());
+    for (index, share) in plan.shares.iter().enumerate() {
+        typed = typed.with(
+            format!("shares_percent.{index}"),
+            format::decimals(share.get() * 100.0, 2),
+        );
+    }
+    let mut index = 0;
+    for vessel in Vessel::ALL {
+        for (material, item) in plan.inputs.problem.shelf.iter().enumerate() {
+            let planned = plan.doses.iter().find(|dose| {
+                dose.material == material && dose.vessel == vessel && dose.weighed.is_none()
+            });
+            if !item.vessels.contains(&vessel) && planned.is_none() {
+                continue;
+            }
+            let amount = planned.map_or_else(String::new, |dose| dose.planned.get().to_string());
+            typed = typed
+                .with(format!("doses.{index}.material"), material.to_string())
+                .with(format!("doses.{index}.vessel"), vessel.key())
+                .with(format!("doses.{index}.amount"), amount);
+            index += 1;
+        }
+    }
+    let fields = local_fields(&plan.inputs, &typed);
+    shown_in(&typed, units, &fields)
+}
+
+async fn show_page(
+    db: &Db,
+    framer: &Framer,
+    id: PlanId,
+    refused: Option<Form>,
+    tried: Option<(Plan, Outcome)>,
+) -> Result<ShowPage, Error> {
+    let mut shown = operations::show(db, &framer.member, id).await?;
+    if let Some((plan, outcome)) = &tried {
+        shown.plan = plan.clone();
+        shown.outcome = outcome.clone();
+    }
+    let plan = shown.plan;
+    let page = framer
+        .page(format!("{} {}", plan.batch, plan.beer_name), "plans")
+        .await;
+    let units = page.settings.units;
+    let zone = page.settings.time_zone.clone();
+    let lesson = operations::lesson(db, &framer.member, &plan).await?;
+    let checks = mash_checks::list(db, &framer.member, id).await?;
+    let history =
+        record::operations::of_subject(db, &framer.member, "plan", &id.to_string(), 20).await?;
+    let typed = match refused {
+        Some(typed) if typed.rows("doses") > 0 => typed,
+        Some(typed) => {
+            let mut begun = treatment_form(&plan, units).with("reason", typed.value("reason"));
+            begun.problems.clone_from(&typed.problems);
+            begun.with("withdrawal_reason", typed.value("withdrawal_reason"))
+        }
+        None => treatment_form(&plan, units),
+    };
+    let liquor = plan.inputs.problem.volumes.liquor.get();
+    let shares = plan
+        .inputs
+        .sources
+        .iter()
+        .zip(&plan.shares)
+        .enumerate()
+        .map(|(index, (source, share))| ShareRow {
+            name: source.name.clone(),
+            field: format!("shares_percent.{index}"),
+            percent: format::decimals(share.get() * 100.0, 1),
+            litres: units.show(Measure::Volume, share.get() * liquor),
+            tested: source
+                .tested_on
+                .map_or_else(String::new, |date| format!("last tested {date}")),
+        })
+        .collect();
+    let mut deeds = vec![(
+        "Drafted".to_owned(),
+        format!(
+            "{}, {}",
+            plan.drafted.by,
+            format::moment(plan.drafted.at, &zone)
+        ),
+    )];
+    for (what, deed) in [
+        ("Approved", &plan.approved),
+        ("Closed", &plan.closed),
+        ("Withdrawn", &plan.withdrawn),
+    ] {
+        if let Some(deed) = deed {
+            let reason = if deed.reason.is_empty() {
+                String::new()
+            } else {
+                format!(": {}", deed.reason)
+            };
+            deeds.push((
+                what.to_owned(),
+                format!("{}, {}{reason}", deed.by, format::moment(deed.at, &zone)),
+            ));
+        }
+    }
+    Ok(ShowPage {
+        may_draft: page.can(Permission::DraftPlans),
+        may_approve: page.can(Permission::ApprovePlans),
+        may_brew: page.can(Permission::BrewBatches),
+        successor: shown.successor,
+        facts: consequences(&plan, &shown.outcome, &page.settings),
+        groups: sheet::groups(&plan.inputs, &typed, units),
+        rows: sheet::dose_rows(&plan, units, &zone),
+        ways: sheet::way_cards(&plan, &shown.ways, &page.settings),
+        outside_potable: plan.inputs.outside_potable(&plan.shares),
+        assumed: sheet::assumed(&plan.inputs),
+        outcome: plan.outcome.as_ref().map(outcome_row),
+        learned: sheet::learned(&plan, &shown.outcome, &lesson)?,
+        history: history.iter().map(|entry| Line::of(entry, &zone)).collect(),
+        read_at: format::moment(plan.inputs_read_at, &zone),
+        grist: sheet::grist(&plan.inputs, units),
+        volumes: sheet::volumes(&plan.inputs, units),
+        cautions: sheet::cautions(&plan),
+        trial: tried.is_some(),
+        unweighed_steps: plan
+            .doses
+            .iter()
+            .any(|dose| dose.mash_check.is_some() && dose.weighed.is_none()),
+        checks: checks
+            .into_iter()
+            .map(|check| check_row(check, &zone, units))
+            .collect(),
+        shares,
+        deeds,
+        page,
+        typed,
+        plan,
+    })
+}
+
+async fn show(State(db): State<Db>, framer: Framer, At(id): At<PlanId>) -> Result<ShowPage, Error> {
+    show_page(&db, &framer, id, None, None).await
+}
+
+/// The page of the plan again when `changed` was refused, with what stood in the way; to
+/// `to` when it was done.
+async fn answer<T>(
+    db: &Db,
+    framer: &Framer,
+    id: PlanId,
+    typed: Form,
+    changed: Result<T, Error>,
+    to: impl FnOnce(T) -> String,
+) -> Result<Response, Error> {
+    match changed {
+        Ok(done) => Ok(Redirect::to(&to(done)).into_response()),
+        Err(error) => {
+            let (status, typed) = typed.refused(error)?;
+            Ok((status, show_page(db, framer, id, Some(typed), None).await?).into_response())
+        }
+    }
+}
+
+fn version(typed: &Form) -> Option<i64> {
+    typed.value("version").parse().ok()
+}
+
+async fn move_amounts(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let moved = async {
+        framer.member.may(Permission::DraftPlans)?;
+        let treatment = typed_treatment(&db, &framer, id, &typed).await?;
+        operations::move_amounts(&db, &framer.member, id, version(&typed), &treatment).await
+    };
+    let moved = moved.await;
+    answer(&db, &framer, id, typed, moved, |plan| {
+        format!("/plans/{}?done=saved", plan.id)
+    })
+    .await
+}
+
+async fn typed_treatment(
+    db: &Db,
+    framer: &Framer,
+    id: PlanId,
+    typed: &Form,
+) -> Result<Treatment, Error> {
+    let plan = operations::find(db, &framer.member, id).await?;
+    let units = crate::brewery::operations::settings(db).await?.units;
+    let fields = local_fields(&plan.inputs, typed);
+    typed_in_si(typed, units, &fields)
+        .body::<TreatmentBody>()?
+        .try_into()
+}
+
+#[derive(Template, WebTemplate)]
+#[template(path = "plans/consequences.html")]
+struct ConsequencesPart {
+    facts: Facts,
+    problems: Vec<String>,
+}
+
+async fn show_consequences(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let tried = async {
+        let treatment = typed_treatment(&db, &framer, id, &typed).await?;
+        operations::try_out(&db, &framer.member, id, &treatment).await
+    };
+    let settings = crate::brewery::operations::settings(&db).await?;
+    match tried.await {
+        Ok((plan, outcome)) => Ok(ConsequencesPart {
+            facts: consequences(&plan, &outcome, &settings),
+            problems: Vec::new(),
+        }
+        .into_response()),
+        Err(error) => {
+            let (status, typed) = typed.refused(error)?;
+            let shown = operations::show(&db, &framer.member, id).await?;
+            let problems = typed
+                .problems
+                .iter()
+                .map(|problem| problem.message.clone())
+                .collect();
+            let facts = consequences(&shown.plan, &shown.outcome, &settings);
+            Ok((status, ConsequencesPart { facts, problems }).into_response())
+        }
+    }
+}
+
+/// The page with what the typed amounts would do, for those without scripts.
+async fn show_trial(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let tried = async {
+        let treatment = typed_treatment(&db, &framer, id, &typed).await?;
+        operations::try_out(&db, &framer.member, id, &treatment).await
+    };
+    match tried.await {
+        Ok(tried) => Ok(show_page(&db, &framer, id, Some(typed), Some(tried))
+            .await?
+            .into_response()),
+        Err(error) => {
+            let (status, typed) = typed.refused(error)?;
+            Ok((
+                status,
+                show_page(&db, &framer, id, Some(typed), None).await?,
+            )
+                .into_response())
+        }
+    }
+}
+
+async fn show_inputs(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+) -> Result<axum::Json<InputsBody>, Error> {
+    let plan = operations::find(&db, &framer.member, id).await?;
+    Ok(axum::Json(InputsBody::from(&plan.inputs)))
+}
+
+async fn take_way(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let taken = async {
+        let mut problems = Problems::new();
+        let way = problems.choice("way", typed.value("way"), Way::from_key);
+        problems.finish()?;
+        operations::take_way(
+            &db,
+            &framer.member,
+            id,
+            version(&typed),
+            way.unwrap_or(Way::ClosestToPreferred),
+        )
+        .await
+    };
+    let taken = taken.await;
+    answer(&db, &framer, id, typed, taken, |plan| {
+        format!("/plans/{}?done=saved", plan.id)
+    })
+    .await
+}
+
+async fn refresh(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let read = operations::refresh(&db, &framer.member, id, version(&typed)).await;
+    answer(&db, &framer, id, typed, read, |plan| {
+        format!("/plans/{}?done=read", plan.id)
+    })
+    .await
+}
+
+async fn reschedule(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let moved = async {
+        let mut problems = Problems::new();
+        let batch = problems.text("batch", typed.value("batch"), 40);
+        let day = problems.date("brewed_on", typed.value("brewed_on"));
+        problems.finish()?;
+        match (batch, day) {
+            (Some(batch), Some(day)) => {
+                operations::reschedule(&db, &framer.member, id, version(&typed), batch, day).await
+            }
+            _ => Err(Error::field("", "Fill in every field.")),
+        }
+    };
+    let moved = moved.await;
+    answer(&db, &framer, id, typed, moved, |plan| {
+        format!("/plans/{}?done=saved", plan.id)
+    })
+    .await
+}
+
+async fn approve(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let approved = async {
+        let mut problems = Problems::new();
+        let reason = problems.optional_text("reason", typed.value("reason"), 500);
+        problems.finish()?;
+        operations::approve(&db, &framer.member, id, version(&typed), reason).await
+    };
+    let approved = approved.await;
+    answer(&db, &framer, id, typed, approved, |plan| {
+        format!("/plans/{}?done=approved", plan.id)
+    })
+    .await
+}
+
+async fn take_back_approval(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let taken = operations::take_back_approval(&db, &framer.member, id, version(&typed)).await;
+    answer(&db, &framer, id, typed, taken, |plan| {
+        format!("/plans/{}?done=unapproved", plan.id)
+    })
+    .await
+}
+
+async fn withdraw(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let withdrawn = async {
+        let mut problems = Problems::new();
+        let reason = problems.text("withdrawal_reason", typed.value("withdrawal_reason"), 500);
+        problems.finish()?;
+        operations::withdraw(
+            &db,
+            &framer.member,
+            id,
+            version(&typed),
+            reason.unwrap_or_default(),
+        )
+        .await
+    };
+    let withdrawn = withdrawn.await;
+    answer(&db, &framer, id, typed, withdrawn, |plan| {
+        format!("/plans/{}?done=withdrawn", plan.id)
+    })
+    .await
+}
+
+async fn revise(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let revised = operations::revise(&db, &framer.member, id).await;
+    answer(&db, &framer, id, typed, revised, |plan| {
+        format!("/plans/{}?done=revised", plan.id)
+    })
+    .await
+}
+
+#[derive(Template, WebTemplate)]
+#[template(path = "plans/closing.html")]
+struct ClosingPage {
+    page: Page,
+    plan: Plan,
+    typed: Form,
+    checks: Vec<Choice>,
+}
+
+async fn closing_page(
+    db: &Db,
+    framer: &Framer,
+    id: PlanId,
+    typed: Form,
+) -> Result<ClosingPage, Error> {
+    let plan = operations::find(db, &framer.member, id).await?;
+    let page = framer
+        .page(format!("Close {} {}", plan.batch, plan.beer_name), "plans")
+        .await;
+    let checks = mash_checks::list(db, &framer.member, id).await?;
+    let checks = checks
+        .iter()
+        .filter(|check| check.stage == super::Stage::Mash && check.withdrawn.is_none());
+    let checks = checks.map(|check| {
+        let words = format!(
+            "minute {}: {} ± {}",
+            format::decimals(check.minute.get(), 0),
+            format::ph(check.advised.reading_ph),
+            format::ph(check.advised.reading_sd)
+        );
+        (check.id.to_string(), words)
+    });
+    Ok(ClosingPage {
+        checks: Choice::list(checks, typed.value("mash_check_id")),
+        page,
+        plan,
+        typed,
+    })
+}
+
+async fn show_closing(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+) -> Result<ClosingPage, Error> {
+    let plan = operations::find(&db, &framer.member, id).await?;
+    let checks = mash_checks::list(&db, &framer.member, id).await?;
+    let good = checks.iter().find(|check| {
+        check.stage == super::Stage::Mash
+            && check.withdrawn.is_none()
+            && check.advised.advice != "read_again"
+    });
+    let typed = Form::empty()
+        .with("version", plan.version.to_string())
+        .with(
+            "mash_check_id",
+            good.map(|check| check.id.to_string()).unwrap_or_default(),
+        )
+        .with("counts", "yes");
+    closing_page(&db, &framer, id, typed).await
+}
+
+async fn close(
+    State(db): State<Db>,
+    framer: Framer,
+    At(id): At<PlanId>,
+    typed: Form,
+) -> Result<Response, Error> {
+    let closed = async {
+        let mut body: ClosingBody = typed.body()?;
+        body.counts.get_or_insert_default();
+        operations::close(
+            &db,
+            &framer.member,
+            id,
+            version(&typed),
+            Closing::try_from(body)?,
+        )
+        .await
+    };
+    match closed.await {
+        Ok(plan) => Ok(Redirect::to(&format!("/plans/{}?done=closed", plan.id)).into_response()),
+        Err(error) => {
+            let (status, typed) = typed.refused(error)?;
+            Ok((status, closing_page(&db, &framer, id, typed).await?).into_response())
+        }
+    }
+}
+
+/// The plans of one beer, for its page.
+pub async fn of_beer(db: &Db, framer: &Framer, beer: BeerId) -> Result<Vec<Listing>, Error> {
+    let filter = Filter {
+        beer: Some(beer),
+        ..Filter::default()
+    };
+    operations::list(db, &framer.member, &filter, Order::Latest, 0, 10).await
+}
+
+/// Where a check's page returns to.
+pub(super) fn check_address(plan: PlanId, check: MashCheckId) -> String {
+    format!("/plans/{plan}/mash-checks/{check}")
+}

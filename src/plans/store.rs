@@ -1,0 +1,591 @@
+//! SQL for plans, doses and mash checks.
+
+use chemistry::material::Vessel;
+use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
+use serde::{Deserialize, Serialize};
+use sqlx::{Row, SqliteConnection, sqlite::SqliteRow};
+
+use super::bodies::InputsBody;
+use super::{
+    Choice, Deed, Dose, Inputs, MashCheck, Outcome, Plan, Prediction, Stage, State, Weighed,
+};
+use crate::error::Error;
+use crate::id::{BeerId, MashCheckId, PlanId, UtcTime};
+
+/// A plan as lists show it.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Listing {
+    /// Its identifier.
+    pub id: PlanId,
+    /// The batch.
+    pub batch: String,
+    /// Which revision.
+    pub revision: i64,
+    /// The beer.
+    pub beer_id: BeerId,
+    /// Its name.
+    pub beer_name: String,
+    /// The day it is brewed.
+    pub brewed_on: jiff::civil::Date,
+    /// Where it stands.
+    pub state: State,
+    /// The prediction of its approval.
+    pub prediction: Option<Prediction>,
+    /// Predicted against measured.
+    pub outcome: Option<Outcome>,
+    /// Doses planned.
+    pub doses: i64,
+    /// Doses that are in.
+    pub weighed: i64,
+}
+
+#[derive(Serialize, Deserialize)]
+struct PredictionRow {
+    ph: f64,
+    sd: f64,
+    low: f64,
+    high: f64,
+}
+
+fn prediction_json(prediction: Prediction) -> String {
+    let row = PredictionRow {
+        ph: prediction.ph.get(),
+        sd: prediction.sd.get(),
+        low: prediction.low.get(),
+        high: prediction.high.get(),
+    };
+    serde_json::to_string(&row).unwrap_or_default()
+}
+
+fn unreadable(error: impl Into<Box<dyn std::error::Error + Send + Sync>>) -> Error {
+    Error::internal("A stored plan cannot be read", error)
+}
+
+fn prediction(text: Option<&str>) -> Result<Option<Prediction>, Error> {
+    let row: Option<PredictionRow> = text
+        .map(serde_json::from_str)
+        .transpose()
+        .map_err(unreadable)?;
+    Ok(row.map(|row| Prediction {
+        ph: Ph::clamped(row.ph),
+        sd: PhShift::clamped(row.sd),
+        low: Ph::clamped(row.low),
+        high: Ph::clamped(row.high),
+    }))
+}
+
+fn deed(row: &SqliteRow, at: &str, by: &str, reason: Option<&str>) -> Result<Option<Deed>, Error> {
+    let Some(at) = row.try_get::<Option<UtcTime>, _>(at)? else {
+        return Ok(None);
+    };
+    let reason = match reason {
+        Some(column) => row
+            .try_get::<Option<String>, _>(column)?
+            .unwrap_or_default(),
+        None => String::new(),
+    };
+    Ok(Some(Deed {
+        at,
+        by: row.try_get::<Option<String>, _>(by)?.unwrap_or_default(),
+        reason,
+    }))
+}
+
+fn plan(row: &SqliteRow, doses: Vec<Dose>) -> Result<Plan, Error> {
+    let body: InputsBody = serde_json::from_str(row.try_get("inputs")?).map_err(unreadable)?;
+    let shares: Vec<f64> = serde_json::from_str(row.try_get("shares")?).map_err(unreadable)?;
+    let outcome: Option<&str> = row.try_get("outcome")?;
+    Ok(Plan {
+        id: row.try_get("id")?,
+        batch: row.try_get("batch")?,
+        revision: row.try_get("revision")?,
+        replaces: row.try_get("replaces")?,
+        beer_id: row.try_get("beer_id")?,
+        beer_name: row.try_get("beer_name")?,
+        brewed_on: row
+            .try_get::<&str, _>("brewed_on")?
+            .parse()
+            .map_err(unreadable)?,
+        state: state(row.try_get("state")?)?,
+        inputs: Inputs::try_from(body)?,
+        inputs_read_at: row.try_get("inputs_read_at")?,
+        choice: Choice::from_key(row.try_get("way")?).ok_or_else(|| unreadable("unknown way"))?,
+        shares: shares.into_iter().map(Fraction::clamped).collect(),
+        doses,
+        drafted: Deed {
+            at: row.try_get("created_at")?,
+            by: row.try_get("created_by")?,
+            reason: String::new(),
+        },
+        approved: deed(row, "approved_at", "approved_by", Some("approval_reason"))?,
+        prediction: prediction(row.try_get("prediction")?)?,
+        withdrawn: deed(
+            row,
+            "withdrawn_at",
+            "withdrawn_by",
+            Some("withdrawal_reason"),
+        )?,
+        closed: deed(row, "closed_at", "closed_by", Some("closing_note"))?,
+        outcome: outcome
+            .map(serde_json::from_str)
+            .transpose()
+            .map_err(unreadable)?,
+        version: row.try_get("version")?,
+    })
+}
+
+fn state(key: &str) -> Result<State, Error> {
+    State::from_key(key).ok_or_else(|| unreadable(format!("unknown state {key}")))
+}
+
+fn dose(row: &SqliteRow) -> Result<Dose, Error> {
+    let weighed = match row.try_get::<Option<UtcTime>, _>("weighed_at")? {
+        None => None,
+        Some(at) => Some(Weighed {
+            actual: DoseAmount::clamped(row.try_get("actual")?),
+            lot: row.try_get::<Option<String>, _>("lot")?.unwrap_or_default(),
+            at,
+            by: row
+                .try_get::<Option<String>, _>("weighed_by")?
+                .unwrap_or_default(),
+        }),
+    };
+    Ok(Dose {
+        id: row.try_get("id")?,
+        position: row.try_get("position")?,
+        vessel: Vessel::from_key(row.try_get("vessel")?)
+            .ok_or_else(|| unreadable("unknown vessel"))?,
+        material: usize::try_from(row.try_get::<i64, _>("material")?).map_err(unreadable)?,
+        planned: DoseAmount::clamped(row.try_get("planned")?),
+        mash_check: row.try_get("mash_check_id")?,
+        weighed,
+    })
+}
+
+pub(super) async fn insert(db: &mut SqliteConnection, plan: &Plan) -> Result<(), sqlx::Error> {
+    sqlx::query(
+        "INSERT INTO plans (id, batch, revision, replaces, beer_id, beer_name, brewed_on, state, inputs,
+                            inputs_read_at, way, shares, created_at, created_by, version)
+         VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+    )
+    .bind(plan.id)
+    .bind(&plan.batch)
+    .bind(plan.revision)
+    .bind(plan.replaces)
+    .bind(plan.beer_id)
+    .bind(&plan.beer_name)
+    .bind(plan.brewed_on.to_string())
+    .bind(plan.state.key())
+    .bind(inputs_json(&plan.inputs))
+    .bind(plan.inputs_read_at)
+    .bind(plan.choice.key())
+    .bind(shares_json(&plan.shares))
+    .bind(plan.drafted.at)
+    .bind(&plan.drafted.by)
+    .bind(plan.version)
+    .execute(&mut *db)
+    .await?;
+    insert_doses(db, plan.id, &plan.doses).await
+}
+
+fn inputs_json(inputs: &Inputs) -> String {
+    serde_json::to_string(&InputsBody::from(inputs)).unwrap_or_default()
+}
+
+fn shares_json(shares: &[Fraction]) -> String {
+    serde_json::to_string(&shares.iter().map(|share| share.get()).collect::<Vec<_>>())
+        .unwrap_or_default()
+}
+
+pub(super) async fn insert_doses(
+    db: &mut SqliteConnection,
+    plan: PlanId,
+    doses: &[Dose],
+) -> Result<(), sqlx::Error> {
+    for dose in doses {
+        let weighed = dose.weighed.as_ref();
+        sqlx::query(
+            "INSERT INTO doses (id, plan_id, position, vessel, material, planned, mash_check_id, actual, lot,
+                                weighed_at, weighed_by)
+             VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+        )
+        .bind(dose.id)
+        .bind(plan)
+        .bind(dose.position)
+        .bind(dose.vessel.key())
+        .bind(i64::try_from(dose.material).unwrap_or(i64::MAX))
+        .bind(dose.planned.get())
+        .bind(dose.mash_check)
+        .bind(weighed.map(|weighed| weighed.actual.get()))
+        .bind(weighed.map(|weighed| &weighed.lot))
+        .bind(weighed.map(|weighed| weighed.at))
+        .bind(weighed.map(|weighed| &weighed.by))
+        .execute(&mut *db)
+        .await?;
+    }
+    Ok(())
+}
+
+/// Writes a draft anew: batch, day, inputs, treatment and doses.
+pub(super) async fn update_draft(
+    db: &mut SqliteConnection,
+    plan: &Plan,
+) -> Result<(), sqlx::Error> {
+    sqlx::query(
+        "UPDATE plans SET batch = ?, brewed_on = ?, beer_name = ?, inputs = ?, inputs_read_at = ?, way = ?,
+                          shares = ?, version = ?
+         WHERE id = ? AND state = 'draft'",
+    )
+    .bind(&plan.batch)
+    .bind(plan.brewed_on.to_string())
+    .bind(&plan.beer_name)
+    .bind(inputs_json(&plan.inputs))
+    .bind(plan.inputs_read_at)
+    .bind(plan.choice.key())
+    .bind(shares_json(&plan.shares))
+    .bind(plan.version)
+    .bind(plan.id)
+    .execute(&mut *db)
+    .await?;
+    sqlx::query("DELETE FROM doses WHERE plan_id = ?")
+        .bind(plan.id)
+        .execute(&mut *db)
+        .await?;
+    insert_doses(db, plan.id, &plan.doses).await
+}
+
+/// Writes where a plan stands: state, approval, withdrawal, closing.
+pub(super) async fn update_state(
+    db: &mut SqliteConnection,
+    plan: &Plan,
+) -> Result<(), sqlx::Error> {
+    let (approved, withdrawn, closed) = (
+        plan.approved.as_ref(),
+        plan.withdrawn.as_ref(),
+        plan.closed.as_ref(),
+    );
+    sqlx::query(
+        "UPDATE plans SET state = ?, approved_at = ?, approved_by = ?, approval_reason = ?, prediction = ?,
+                          withdrawn_at = ?, withdrawn_by = ?, withdrawal_reason = ?, closed_at = ?, closed_by = ?,
+                          closing_note = ?, outcome = ?, version = ?
+         WHERE id = ?",
+    )
+    .bind(plan.state.key())
+    .bind(approved.map(|deed| deed.at))
+    .bind(approved.map(|deed| &deed.by))
+    .bind(approved.map(|deed| &deed.reason))
+    .bind(plan.prediction.map(prediction_json))
+    .bind(withdrawn.map(|deed| deed.at))
+    .bind(withdrawn.map(|deed| &deed.by))
+    .bind(withdrawn.map(|deed| &deed.reason))
+    .bind(closed.map(|deed| deed.at))
+    .bind(closed.map(|deed| &deed.by))
+    .bind(closed.map(|deed| &deed.reason))
+    .bind(plan.outcome.as_ref().and_then(|outcome| serde_json::to_string(outcome).ok()))
+    .bind(plan.version)
+    .bind(plan.id)
+    .execute(db)
+    .await?;
+    Ok(())
+}
+
+pub(super) async fn find(db: &mut SqliteConnection, id: PlanId) -> Result<Option<Plan>, Error> {
+    let row = sqlx::query(
+        "SELECT id, batch, revision, replaces, beer_id, beer_name, brewed_on, state, inputs, inputs_read_at, way,
+                shares, created_at, created_by, approved_at, approved_by, approval_reason, prediction, withdrawn_at,
+                withdrawn_by, withdrawal_reason, closed_at, closed_by, closing_note, outcome, version
+         FROM plans WHERE id = ?",
+    )
+    .bind(id)
+    .fetch_optional(&mut *db)
+    .await?;
+    let Some(row) = row else { return Ok(None) };
+    let doses = sqlx::query(
+        "SELECT id, position, vessel, material, planned, mash_check_id, actual, lot, weighed_at, weighed_by
+         FROM doses WHERE plan_id = ? ORDER BY position",
+    )
+    .bind(id)
+    .fetch_all(&mut *db)
+    .await?;
+    plan(&row, doses.iter().map(dose).collect::<Result<_, _>>()?).map(Some)
+}
+
+/// The revision that takes a plan's place, if one was begun and not withdrawn.
+pub(super) async fn successor(
+    db: &mut SqliteConnection,
+    id: PlanId,
+) -> Result<Option<(PlanId, i64)>, Error> {
+    let row =
+        sqlx::query("SELECT id, revision FROM plans WHERE replaces = ? AND state <> 'withdrawn'")
+            .bind(id)
+            .fetch_optional(db)
+            .await?;
+    row.map(|row| Ok((row.try_get("id")?, row.try_get("revision")?)))
+        .transpose()
+}
+
+/// The highest revision of a batch's plan; zero if there is none.
+pub(super) async fn last_revision(db: &mut SqliteConnection, batch: &str) -> Result<i64, Error> {
+    Ok(
+        sqlx::query_scalar("SELECT coalesce(max(revision), 0) FROM plans WHERE batch = ?")
+            .bind(batch)
+            .fetch_one(db)
+            .await?,
+    )
+}
+
+/// What to list.
+#[derive(Clone, Debug, Default)]
+pub struct Filter {
+    /// Only plans in this state.
+    pub state: Option<State>,
+    /// Only plans of this beer.
+    pub beer: Option<BeerId>,
+    /// Only plans of batches whose number holds this.
+    pub batch: Option<String>,
+}
+
+/// How a list is sorted.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Order {
+    /// Latest brewing day first.
+    #[default]
+    Latest,
+    /// Earliest brewing day first.
+    Earliest,
+    /// By batch number.
+    Batch,
+    /// By beer.
+    Beer,
+}
+
+impl Order {
+    /// Every order.
+    pub const ALL: [Self; 4] = [Self::Latest, Self::Earliest, Self::Batch, Self::Beer];
+
+    /// As addresses name it.
+    pub const fn key(self) -> &'static str {
+        match self {
+            Self::Latest => "latest",
+            Self::Earliest => "earliest",
+            Self::Batch => "batch",
+            Self::Beer => "beer",
+        }
+    }
+}
+
+pub(super) async fn list(
+    db: &mut SqliteConnection,
+    filter: &Filter,
+    order: Order,
+    skip: i64,
+    limit: i64,
+) -> Result<Vec<Listing>, Error> {
+    let rows = sqlx::query(
+        "SELECT id, batch, revision, beer_id, beer_name, brewed_on, state, prediction, outcome,
+                (SELECT count(*) FROM doses WHERE plan_id = plans.id) AS doses,
+                (SELECT count(*) FROM doses WHERE plan_id = plans.id AND weighed_at IS NOT NULL) AS weighed
+         FROM plans
+         WHERE (?1 IS NULL OR state = ?1) AND (?2 IS NULL OR beer_id = ?2)
+           AND (?3 IS NULL OR instr(lower(batch), lower(?3)) > 0)
+         ORDER BY CASE ?4 WHEN 'latest' THEN brewed_on END DESC,
+                  CASE ?4 WHEN 'earliest' THEN brewed_on WHEN 'batch' THEN batch WHEN 'beer' THEN beer_name END,
+                  id DESC
+         LIMIT ?5 OFFSET ?6",
+    )
+    .bind(filter.state.map(State::key))
+    .bind(filter.beer)
+    .bind(&filter.batch)
+    .bind(order.key())
+    .bind(limit)
+    .bind(skip)
+    .fetch_all(db)
+    .await?;
+    rows.iter().map(listing).collect()
+}
+
+/// Plans made before `before`, the latest made first.
+pub(super) async fn made_before(
+    db: &mut SqliteConnection,
+    filter: &Filter,
+    before: Option<PlanId>,
+    limit: i64,
+) -> Result<Vec<Listing>, Error> {
+    let rows = sqlx::query(
+        "SELECT id, batch, revision, beer_id, beer_name, brewed_on, state, prediction, outcome,
+                (SELECT count(*) FROM doses WHERE plan_id = plans.id) AS doses,
+                (SELECT count(*) FROM doses WHERE plan_id = plans.id AND weighed_at IS NOT NULL) AS weighed
+         FROM plans
+         WHERE (?1 IS NULL OR state = ?1) AND (?2 IS NULL OR beer_id = ?2)
+           AND (?3 IS NULL OR instr(lower(batch), lower(?3)) > 0) AND (?4 IS NULL OR id < ?4)
+         ORDER BY id DESC LIMIT ?5",
+    )
+    .bind(filter.state.map(State::key))
+    .bind(filter.beer)
+    .bind(&filter.batch)
+    .bind(before)
+    .bind(limit)
+    .fetch_all(db)
+    .await?;
+    rows.iter().map(listing).collect()
+}
+
+fn listing(row: &SqliteRow) -> Result<Listing, Error> {
+    let outcome: Option<&str> = row.try_get("outcome")?;
+    Ok(Listing {
+        id: row.try_get("id")?,
+        batch: row.try_get("batch")?,
+        revision: row.try_get("revision")?,
+        beer_id: row.try_get("beer_id")?,
+        beer_name: row.try_get("beer_name")?,
+        brewed_on: row
+            .try_get::<&str, _>("brewed_on")?
+            .parse()
+            .map_err(unreadable)?,
+        state: state(row.try_get("state")?)?,
+        prediction: prediction(row.try_get("prediction")?)?,
+        outcome: outcome
+            .map(serde_json::from_str)
+            .transpose()
+            .map_err(unreadable)?,
+        doses: row.try_get("doses")?,
+        weighed: row.try_get("weighed")?,
+    })
+}
+
+/// Writes what went in, or that nothing did.
+pub(super) async fn update_weighed(
+    db: &mut SqliteConnection,
+    dose: &Dose,
+) -> Result<(), sqlx::Error> {
+    let weighed = dose.weighed.as_ref();
+    sqlx::query(
+        "UPDATE doses SET actual = ?, lot = ?, weighed_at = ?, weighed_by = ? WHERE id = ?",
+    )
+    .bind(weighed.map(|weighed| weighed.actual.get()))
+    .bind(weighed.map(|weighed| &weighed.lot))
+    .bind(weighed.map(|weighed| weighed.at))
+    .bind(weighed.map(|weighed| &weighed.by))
+    .bind(dose.id)
+    .execute(db)
+    .await?;
+    Ok(())
+}
+
+pub(super) async fn insert_check(
+    db: &mut SqliteConnection,
+    check: &MashCheck,
+) -> Result<(), sqlx::Error> {
+    sqlx::query(
+        "INSERT INTO mash_checks (id, plan_id, stage, read_at, minute, ph, sample_c, meter, meter_sd,
+                                  meter_checked, assessment, full_dose, read_by)
+         VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+    )
+    .bind(check.id)
+    .bind(check.plan_id)
+    .bind(check.stage.key())
+    .bind(check.read_at)
+    .bind(check.minute.get())
+    .bind(check.ph.get())
+    .bind(check.sample.get())
+    .bind(&check.meter)
+    .bind(check.meter_sd.get())
+    .bind(check.meter_checked)
+    .bind(serde_json::to_string(&check.advised).unwrap_or_default())
+    .bind(check.advised.step.as_ref().map(|step| step.full_dose))
+    .bind(&check.read_by)
+    .execute(db)
+    .await?;
+    Ok(())
+}
+
+/// Every mash check of a plan, the earliest first.
+pub(super) async fn checks(
+    db: &mut SqliteConnection,
+    plan: PlanId,
+) -> Result<Vec<MashCheck>, Error> {
+    let rows = sqlx::query(
+        "SELECT id, plan_id, stage, read_at, minute, ph, sample_c, meter, meter_sd, meter_checked, assessment,
+                read_by, withdrawn_at, withdrawn_by, withdrawal_reason
+         FROM mash_checks WHERE plan_id = ? ORDER BY read_at, id",
+    )
+    .bind(plan)
+    .fetch_all(db)
+    .await?;
+    rows.iter().map(check).collect()
+}
+
+fn check(row: &SqliteRow) -> Result<MashCheck, Error> {
+    Ok(MashCheck {
+        id: row.try_get("id")?,
+        plan_id: row.try_get("plan_id")?,
+        stage: Stage::from_key(row.try_get("stage")?).ok_or_else(|| unreadable("unknown stage"))?,
+        read_at: row.try_get("read_at")?,
+        minute: Minutes::clamped(row.try_get("minute")?),
+        ph: Ph::clamped(row.try_get("ph")?),
+        sample: Celsius::clamped(row.try_get("sample_c")?),
+        meter: row.try_get("meter")?,
+        meter_sd: PhShift::clamped(row.try_get("meter_sd")?),
+        meter_checked: row.try_get("meter_checked")?,
+        advised: serde_json::from_str(row.try_get("assessment")?).map_err(unreadable)?,
+        read_by: row.try_get("read_by")?,
+        withdrawn: deed(
+            row,
+            "withdrawn_at",
+            "withdrawn_by",
+            Some("withdrawal_reason"),
+        )?,
+    })
+}
+
+pub(super) async fn withdraw_check(
+    db: &mut SqliteConnection,
+    id: MashCheckId,
+    deed: &Deed,
+) -> Result<(), sqlx::Error> {
+    sqlx::query("UPDATE mash_checks SET withdrawn_at = ?, withdrawn_by = ?, withdrawal_reason = ? WHERE id = ?")
+        .bind(deed.at)
+        .bind(&deed.by)
+        .bind(&deed.reason)
+        .bind(id)
+        .execute(db)
+        .await?;
+    Ok(())
+}
+
+/// Adds one dose, a first step, behind the others.
+pub(super) async fn add_dose(
+    db: &mut SqliteConnection,
+    plan: PlanId,
+    dose: &Dose,
+) -> Result<(), sqlx::Error> {
+    insert_doses(db, plan, std::slice::from_ref(dose)).await
+}
+
+/// Removes first steps that were advised and not given.
+pub(super) async fn drop_open_steps(
+    db: &mut SqliteConnection,
+    plan: PlanId,
+) -> Result<(), sqlx::Error> {
+    sqlx::query(
+        "DELETE FROM doses WHERE plan_id = ? AND mash_check_id IS NOT NULL AND weighed_at IS NULL",
+    )
+    .bind(plan)
+    .execute(db)
+    .await?;
+    Ok(())
+}
+
+/// The outcomes of closed plans, the earliest brewed first.
+pub(super) async fn outcomes(db: &mut SqliteConnection) -> Result<Vec<Outcome>, Error> {
+    let rows: Vec<String> = sqlx::query_scalar(
+        "SELECT outcome FROM (SELECT outcome, brewed_on, closed_at FROM plans WHERE state = 'closed'
+                              ORDER BY brewed_on DESC, closed_at DESC LIMIT 200)
+         ORDER BY brewed_on, closed_at",
+    )
+    .fetch_all(db)
+    .await?;
+    rows.iter()
+        .map(|row| serde_json::from_str(row).map_err(unreadable))
+        .collect()
+}

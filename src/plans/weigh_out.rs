@@ -1,0 +1,151 @@
+//! The weigh-out: what goes in, line by line.
+
+use chemistry::quantity::DoseAmount;
+
+use super::operations::{title, weighed_json};
+use super::{Dose, Plan, State, Weighed, store};
+use crate::db::Db;
+use crate::error::Error;
+use crate::id::{DoseId, PlanId, UtcTime};
+use crate::people::{Member, Permission};
+use crate::record;
+
+/// Writes down that a dose is in. A dose that is in already is refused with who weighed
+/// it, so that none goes in twice.
+pub async fn weigh(
+    db: &Db,
+    by: &Member,
+    plan_id: PlanId,
+    dose_id: DoseId,
+    actual: DoseAmount,
+    lot: String,
+) -> Result<Plan, Error> {
+    by.may(Permission::BrewBatches)?;
+    let mut tx = db.begin().await?;
+    let plan = open(&mut tx, plan_id).await?;
+    let mut dose = find(&plan, dose_id)?.clone();
+    if let Some(weighed) = &dose.weighed {
+        return Err(Error::Conflict(format!(
+            "{} weighed this in already, at {}. Do not add it again",
+            weighed.by,
+            weighed.at.timestamp().strftime("%H:%M UTC")
+        )));
+    }
+    dose.weighed = Some(Weighed {
+        actual,
+        lot: lot.clone(),
+        at: UtcTime::now(),
+        by: by.name.clone(),
+    });
+    store::update_weighed(&mut tx, &dose).await?;
+    let name = format!(
+        "{} into the {}, {}",
+        material(&plan, &dose),
+        dose.vessel.name(),
+        title(&plan)
+    );
+    let planned = serde_json::json!({"planned": dose.planned.get()});
+    let change = record::Change::of(
+        "weighed in",
+        "dose",
+        dose_id,
+        &name,
+        Some(planned),
+        Some(weighed_json(actual, &lot)),
+    );
+    record::append(&mut tx, by, change).await?;
+    let after = settle(&mut tx, &plan).await?;
+    tx.commit().await?;
+    Ok(after)
+}
+
+/// Takes back that a dose is in: it was a slip of the finger.
+pub async fn take_back(
+    db: &Db,
+    by: &Member,
+    plan_id: PlanId,
+    dose_id: DoseId,
+    reason: String,
+) -> Result<Plan, Error> {
+    by.may(Permission::BrewBatches)?;
+    let mut tx = db.begin().await?;
+    let plan = open(&mut tx, plan_id).await?;
+    let mut dose = find(&plan, dose_id)?.clone();
+    let Some(weighed) = dose.weighed.take() else {
+        return Err(Error::Conflict("This is not weighed in".into()));
+    };
+    store::update_weighed(&mut tx, &dose).await?;
+    let name = format!(
+        "{} into the {}, {}",
+        material(&plan, &dose),
+        dose.vessel.name(),
+        title(&plan)
+    );
+    let before = weighed_json(weighed.actual, &weighed.lot);
+    let change = record::Change::of(
+        "weighing taken back",
+        "dose",
+        dose_id,
+        &name,
+        Some(before),
+        None,
+    );
+    record::append(&mut tx, by, change.because(Some(reason))).await?;
+    let after = settle(&mut tx, &plan).await?;
+    tx.commit().await?;
+    Ok(after)
+}
+
+async fn open(tx: &mut sqlx::SqliteConnection, id: PlanId) -> Result<Plan, Error> {
+    let plan = store::find(tx, id).await?.ok_or(Error::NotFound("plan"))?;
+    if !matches!(plan.state, State::Approved | State::Dosed) {
+        return Err(Error::Conflict(format!(
+            "This plan is {}: only an approved plan is weighed out",
+            plan.state.name().to_lowercase()
+        )));
+    }
+    if let Some((_, revision)) = store::successor(tx, id).await? {
+        return Err(Error::Conflict(format!(
+            "Revision {revision} of this plan is being drafted. Wait until it is approved or withdrawn"
+        )));
+    }
+    Ok(plan)
+}
+
+fn find(plan: &Plan, id: DoseId) -> Result<&Dose, Error> {
+    plan.doses
+        .iter()
+        .find(|dose| dose.id == id)
+        .ok_or(Error::NotFound("dose of this plan"))
+}
+
+fn material(plan: &Plan, dose: &Dose) -> String {
+    plan.inputs
+        .problem
+        .shelf
+        .get(dose.material)
+        .map_or_else(String::new, |item| item.name.clone())
+}
+
+/// The plan is dosed once every planned line is in, and approved again when one is taken
+/// back.
+async fn settle(tx: &mut sqlx::SqliteConnection, plan: &Plan) -> Result<Plan, Error> {
+    let mut after = store::find(tx, plan.id)
+        .await?
+        .ok_or(Error::NotFound("plan"))?;
+    let everything_in = after
+        .doses
+        .iter()
+        .all(|dose| dose.mash_check.is_some() || dose.weighed.is_some());
+    let state = if everything_in {
+        State::Dosed
+    } else {
+        State::Approved
+    };
+    if state != after.state {
+        after.state = state;
+        after.version += 1;
+        store::update_state(tx, &after).await?;
+    }
+    Ok(after)
+}
