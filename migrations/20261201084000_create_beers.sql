@@ -31,7 +31,7 @@ CREATE TABLE beer_windows (
     beer_id   TEXT NOT NULL REFERENCES beers (id),
     figure    TEXT NOT NULL CHECK (figure IN (
         'calcium_mg_per_l', 'magnesium_mg_per_l', 'sodium_mg_per_l', 'potassium_mg_per_l',
-        'sulfate_mg_per_l', 'chloride_mg_per_l', 'nitrate_mg_per_l', 'alkalinity_mg_per_l_as_caco3',
+        'sulfate_mg_per_l', 'chloride_mg_per_l', 'nitrate_mg_per_l',
         'mash_calcium_mg_per_l', 'sulfate_to_chloride', 'sparge_alkalinity_mg_per_l_as_caco3')),
     low       REAL CHECK (low >= 0),
     high      REAL CHECK (high >= 0),

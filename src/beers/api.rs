@@ -86,8 +86,6 @@ pub struct SpecBody {
     pub chloride_mg_per_l: WindowBody,
     /// Nitrate (as NO₃) in the whole liquor, mg/L.
     pub nitrate_mg_per_l: WindowBody,
-    /// Alkalinity of the whole liquor, mg/L as CaCO₃.
-    pub alkalinity_mg_per_l_as_caco3: WindowBody,
     /// Calcium in the mash liquor, mg/L.
     pub mash_calcium_mg_per_l: RangeBody,
     /// Mass of sulfate per mass of chloride in the whole liquor.
@@ -182,7 +180,6 @@ impl From<&Spec> for SpecBody {
             sulfate_mg_per_l: ion(Ion::Sulfate),
             chloride_mg_per_l: ion(Ion::Chloride),
             nitrate_mg_per_l: ion(Ion::Nitrate),
-            alkalinity_mg_per_l_as_caco3: WindowBody::of(spec.alkalinity, MgPerLAsCaCO3::get),
             mash_calcium_mg_per_l: RangeBody::of(spec.mash_calcium, MgPerL::get),
             sulfate_to_chloride: RangeBody::of(spec.sulfate_to_chloride, MassRatio::get),
             sparge_alkalinity_mg_per_l_as_caco3: RangeBody::of(

@@ -153,7 +153,12 @@ fn thickness(volumes: &Volumes, grist: &[GristLine], problems: &mut Problems) {
     }
 }
 
-fn spec(body: &SpecBody, volumes: Option<&Volumes>, problems: &mut Problems) -> Option<Spec> {
+/// Checks a spec. `volumes` as far as they are known: a spec can contradict them.
+pub(crate) fn spec(
+    body: &SpecBody,
+    volumes: Option<&Volumes>,
+    problems: &mut Problems,
+) -> Option<Spec> {
     let mut ions = IonMap::from_fn(|_| None);
     for (ion, sent) in body.ion_windows() {
         let field = format!("{}_mg_per_l", ion.name());
@@ -164,10 +169,6 @@ fn spec(body: &SpecBody, volumes: Option<&Volumes>, problems: &mut Problems) -> 
             window(sent, "mg/L as CaCO₃", as_caco3, problems)
         })
     };
-    let alkalinity = part(
-        "alkalinity_mg_per_l_as_caco3",
-        &body.alkalinity_mg_per_l_as_caco3,
-    );
     let sparge_alkalinity = part(
         "sparge_alkalinity_mg_per_l_as_caco3",
         &body.sparge_alkalinity_mg_per_l_as_caco3.as_window(),
@@ -190,7 +191,6 @@ fn spec(body: &SpecBody, volumes: Option<&Volumes>, problems: &mut Problems) -> 
     let highest_sodium = most("highest_sodium_mg_per_l", &body.highest_sodium_mg_per_l);
     let spec = Spec {
         ions,
-        alkalinity,
         mash_calcium,
         sulfate_to_chloride,
         sparge_alkalinity,

@@ -15,7 +15,8 @@ pub mod spec;
 pub mod store;
 mod words;
 
-pub use spec::{Spec, Window};
+pub(crate) use check::spec as check_spec;
+pub use spec::Spec;
 
 use crate::id::{BeerId, MaltId};
 

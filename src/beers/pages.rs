@@ -287,12 +287,6 @@ fn window_rows(typed: &Form) -> Vec<WindowRow> {
     });
     let others = [
         (
-            "Alkalinity",
-            "mg/L as CaCO₃",
-            "alkalinity_mg_per_l_as_caco3",
-            true,
-        ),
-        (
             "Calcium in the mash liquor",
             "mg/L",
             "mash_calcium_mg_per_l",

@@ -29,8 +29,6 @@ pub struct Spec {
     /// Each of [`IONS`] in the whole liquor: everything added in any vessel, over all
     /// the liquor of the batch.
     pub ions: IonMap<Option<Window<MgPerL>>>,
-    /// Alkalinity of the whole liquor, for a plan to be held against.
-    pub alkalinity: Option<Window<MgPerLAsCaCO3>>,
     /// Calcium in the mash liquor; nothing preferred.
     pub mash_calcium: Option<Window<MgPerL>>,
     /// Sulfate to chloride in the whole liquor, mass by mass; nothing preferred.
@@ -46,8 +44,8 @@ pub struct Spec {
 }
 
 impl Spec {
-    /// What the solver of a plan looks at. It knows no window for the alkalinity of the
-    /// whole liquor: a plan holds its outcome against [`alkalinity`](Self::alkalinity).
+    /// What the solver of a plan looks at. Of the alkalinity of the whole liquor the mash
+    /// pH decides; only that of the sparge liquor has a window.
     #[must_use]
     pub fn for_plan(&self) -> plan::Spec {
         plan::Spec {
@@ -67,6 +65,21 @@ impl Spec {
             Ion::Sodium => self.highest_sodium,
             _ => None,
         })
+    }
+
+    /// The spec a plan was made for, without the limits of taste, which a plan holds
+    /// elsewhere.
+    #[must_use]
+    pub fn of_plan(spec: &plan::Spec) -> Self {
+        Self {
+            ions: spec.ions,
+            mash_calcium: spec.mash_calcium,
+            sulfate_to_chloride: spec.sulfate_to_chloride,
+            sparge_alkalinity: spec.sparge_alkalinity,
+            mash_ph: spec.mash_ph,
+            highest_lactate: None,
+            highest_sodium: None,
+        }
     }
 
     /// What the form of a new beer begins with.
@@ -92,7 +105,6 @@ impl Spec {
         ions[Ion::Nitrate] = window(None, 50.0, Priority::Low);
         Self {
             ions,
-            alkalinity: None,
             mash_calcium: window(Some(50.0), 200.0, Priority::Middle),
             sulfate_to_chloride: None,
             sparge_alkalinity: Some(Window {

@@ -14,7 +14,6 @@ use super::{Beer, GristLine, Volumes};
 use crate::error::Error;
 use crate::id::{BeerId, MaltId};
 
-const ALKALINITY: &str = "alkalinity_mg_per_l_as_caco3";
 const MASH_CALCIUM: &str = "mash_calcium_mg_per_l";
 const SULFATE_TO_CHLORIDE: &str = "sulfate_to_chloride";
 const SPARGE_ALKALINITY: &str = "sparge_alkalinity_mg_per_l_as_caco3";
@@ -55,8 +54,6 @@ fn window_rows(spec: &Spec) -> Vec<WindowRow> {
         Some(WindowRow::of(figure, spec.ions[ion]?, MgPerL::get))
     });
     let others = [
-        spec.alkalinity
-            .map(|w| WindowRow::of(ALKALINITY, w, MgPerLAsCaCO3::get)),
         spec.mash_calcium
             .map(|w| WindowRow::of(MASH_CALCIUM, w, MgPerL::get)),
         spec.sulfate_to_chloride
@@ -69,7 +66,6 @@ fn window_rows(spec: &Spec) -> Vec<WindowRow> {
 
 fn put_window(spec: &mut Spec, row: &WindowRow) {
     match row.figure.as_str() {
-        ALKALINITY => spec.alkalinity = Some(row.window(MgPerLAsCaCO3::clamped)),
         MASH_CALCIUM => spec.mash_calcium = Some(row.window(MgPerL::clamped)),
         SULFATE_TO_CHLORIDE => spec.sulfate_to_chloride = Some(row.window(MassRatio::clamped)),
         SPARGE_ALKALINITY => spec.sparge_alkalinity = Some(row.window(MgPerLAsCaCO3::clamped)),
@@ -99,7 +95,6 @@ fn beer(row: &SqliteRow) -> Result<Beer, Error> {
         },
         spec: Spec {
             ions: IonMap::from_fn(|_| None),
-            alkalinity: None,
             mash_calcium: None,
             sulfate_to_chloride: None,
             sparge_alkalinity: None,

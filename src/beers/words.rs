@@ -52,7 +52,6 @@ pub(super) fn spec_lines(spec: &Spec) -> Vec<SpecLine> {
     let as_caco3 =
         |label, window: Option<_>| Some(line(label, window?, "mg/L as CaCO₃", MgPerLAsCaCO3::get));
     let others = [
-        as_caco3("Alkalinity", spec.alkalinity),
         spec.mash_calcium
             .map(|w| line("Calcium in the mash liquor", w, "mg/L", MgPerL::get)),
         spec.sulfate_to_chloride

@@ -358,8 +358,9 @@ impl TryFrom<InputsBody> for Inputs {
                 *limit = Some(other);
             }
         };
-        lower(&mut most[Ion::Lactate], spec.highest_lactate);
-        lower(&mut most[Ion::Sodium], spec.highest_sodium);
+        for (ion, limit) in spec.taste_limits().iter() {
+            lower(&mut most[ion], *limit);
+        }
         let (sources, source_labels) = sources.into_iter().unzip();
         let (grist, malts) = grist.into_iter().unzip();
         let (shelf, shelf_labels) = shelf.into_iter().unzip();
@@ -371,7 +372,7 @@ impl TryFrom<InputsBody> for Inputs {
                 grist,
                 settings,
                 offset,
-                spec: spec.into(),
+                spec: spec.for_plan(),
                 limits: Limits {
                     ions: most,
                     lowest_alkalinity: MgPerLAsCaCO3::clamped(lowest_alkalinity),
@@ -937,7 +938,7 @@ impl From<&Inputs> for InputsBody {
                 .zip(&inputs.shelf)
                 .map(|(item, label)| ShelfItemBody::of(item, label))
                 .collect(),
-            spec: SpecBody::from(&beers::Spec::from(&problem.spec)),
+            spec: SpecBody::from(&beers::Spec::of_plan(&problem.spec)),
             limits: LimitsBody {
                 highest_ions_mg_per_l: limits.collect(),
                 lowest_alkalinity_mg_per_l_as_caco3: problem.limits.lowest_alkalinity.get().into(),

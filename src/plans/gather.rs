@@ -57,8 +57,9 @@ pub async fn inputs(
             (limit, other) => limit.or(other),
         };
     };
-    lower(&mut limits[Ion::Lactate], beer.spec.highest_lactate);
-    lower(&mut limits[Ion::Sodium], beer.spec.highest_sodium);
+    for (ion, limit) in beer.spec.taste_limits().iter() {
+        lower(&mut limits[ion], *limit);
+    }
     let mash = beer.volumes.mash_l;
     let mut inputs = Inputs {
         problem: Problem {
@@ -72,7 +73,7 @@ pub async fn inputs(
             grist,
             settings: settings.mash,
             offset: Estimate::new(PhShift::constant(0.0), 0.0),
-            spec: beer.spec.into(),
+            spec: beer.spec.for_plan(),
             limits: Limits {
                 ions: limits,
                 lowest_alkalinity: MgPerLAsCaCO3::constant(0.0),
