@@ -299,9 +299,17 @@ pub fn solve_all(problem: &Problem) -> Result<[(Way, Ending); 4], PlanError> {
         let conflict = obstacles::conflict(problem, &model)?;
         return Ok(Way::ALL.map(|way| (way, Ending::Impossible(conflict.clone()))));
     };
-    let [closest, fewest, blending, cheapest] =
-        Way::ALL.map(|way| one_way(problem, &model, &frozen, way).map(|ending| (way, ending)));
-    Ok([closest?, fewest?, blending?, cheapest?])
+    // The ways share nothing that changes.
+    let ways = std::thread::scope(|scope| {
+        let running = Way::ALL.map(|way| {
+            let (model, frozen) = (&model, &frozen);
+            scope.spawn(move || one_way(problem, model, frozen, way))
+        });
+        running.map(|way| way.join().unwrap_or(Err(PlanError::Unsettled)))
+    });
+    let [closest, fewest, blending, cheapest] = ways;
+    let [a, b, c, d] = Way::ALL;
+    Ok([(a, closest?), (b, fewest?), (c, blending?), (d, cheapest?)])
 }
 
 fn one_way(

@@ -29,8 +29,8 @@ const RATIO_SCALE: f64 = 50.0;
 /// one hundredth of an ion missed.
 const TIE_BREAK: f64 = 1e-4;
 
-/// No addition goes beyond this, g or mL per litre of liquor: far above any dose, it
-/// keeps the solver from looking at acid and base that cancel without end.
+/// All additions together stay below this, g and mL per litre of liquor: far above any
+/// dose, it keeps the solver from looking at acid and base that cancel without end.
 const MOST_PER_LITRE: f64 = 100.0;
 
 /// Optima this small, relative to the scales above, are nought, and an optimum is held
@@ -136,7 +136,7 @@ impl Model {
     pub(super) const FIRST_LIMIT: usize = 2;
 
     /// The program in which windows and mash stand as told. The rows are, in order:
-    /// shares, mash, limits, then the two sides of each window that is on.
+    /// shares, mash, limits, the two sides of each window that is on, and all additions.
     pub(super) fn program(&self, mash: MashHold, windows: &[Hold], allowed: &Allowed) -> Program {
         let width = self.width();
         let (mut lower, mut upper) = (self.lower.clone(), self.upper.clone());
@@ -221,6 +221,13 @@ impl Model {
                 });
             }
         }
+        let mut additions = vec![0.0; width];
+        additions[self.sources..self.first_miss()].fill(1.0);
+        rows.push(Row {
+            coefficients: additions,
+            low: f64::NEG_INFINITY,
+            high: MOST_PER_LITRE,
+        });
         Program { lower, upper, rows }
     }
 
@@ -420,6 +427,11 @@ impl<'a> Builder<'a> {
         let of_sources = |of: &dyn Fn(&super::Source) -> f64| -> Vec<f64> {
             problem.sources.iter().map(of).collect()
         };
+        // A whole needs no row of its own: the shares make one together.
+        let highest = |source: &super::Source| match source.highest.get() {
+            1.0 => f64::INFINITY,
+            highest => highest,
+        };
         let joined = |mut shares: Vec<f64>, of: &dyn Fn(&Addition) -> f64| {
             shares.extend(self.additions.iter().map(of));
             shares
@@ -427,9 +439,7 @@ impl<'a> Builder<'a> {
         Model {
             sources,
             lower: joined(of_sources(&|source| source.lowest.get()), &|_| 0.0),
-            upper: joined(of_sources(&|source| source.highest.get()), &|_| {
-                MOST_PER_LITRE
-            }),
+            upper: joined(of_sources(&highest), &|_| f64::INFINITY),
             hard: self.hard(),
             windows: self.windows(),
             mash: self.mash(),

@@ -13,8 +13,12 @@ use super::problem::{PlanError, Problem};
 use super::program::{Answer, Objective, Program, Row};
 use super::{Conflict, Limit, Measure, Obstacle, Relief, Requirement, Shortfall, Treatment};
 
-/// A pressure below this is the solver's own noise, relative to the scales of the rows.
-const PRESSURE: f64 = 1e-6;
+/// A pressure below this is the solver's own noise: lifting the row by all its scale
+/// would buy a ten-thousandth of the scale of what is missed.
+const PRESSURE: f64 = 1e-4;
+
+/// How many obstacles are lifted to see what that buys.
+const LIFTED: usize = 2;
 
 /// Relief that is worth saying, relative to what is missed.
 const WORTH_SAYING: f64 = 0.01;
@@ -97,29 +101,33 @@ fn explain(
     let Some(question) = Question::about(model, frozen, exact, requirement) else {
         return Ok((Vec::new(), None));
     };
-    let answer = settled(question.program.solve(&question.objective))?;
-    let mut reliefs = Vec::new();
-    for obstacle in question.pressing(&answer) {
+    let answer = settled(question.program.solve_roughly(&question.objective))?;
+    let mut pressing = question.pressing(&answer);
+    pressing.sort_by(|(a, _), (b, _)| b.total_cmp(a));
+    // What lifting each of the heaviest buys, the best first; the others follow as they are.
+    let mut bought: Vec<(f64, f64, Obstacle, Program)> = Vec::new();
+    for &(_, obstacle) in pressing.iter().take(LIFTED) {
         let lifted = question.without(obstacle);
         // Nothing can be said of an obstacle the solver does not settle without.
-        let Ok(better) = lifted.solve(&question.objective) else {
-            continue;
-        };
-        let bought = answer.value - better.value;
-        let worth_saying = bought > MISSED.max(WORTH_SAYING * answer.value);
-        let relief = if worth_saying {
-            question.relief(problem, requirement, obstacle, lifted, better.value)?
-        } else {
-            None
-        };
-        reliefs.push((bought, obstacle, relief));
+        if let Ok(better) = lifted.solve_roughly(&question.objective) {
+            bought.push((answer.value - better.value, better.value, obstacle, lifted));
+        }
     }
-    reliefs.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
-    let relief = reliefs.first().and_then(|(.., relief)| *relief);
-    let in_the_way = reliefs
-        .into_iter()
-        .map(|(_, obstacle, _)| obstacle)
-        .collect();
+    bought.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
+    let mut in_the_way: Vec<Obstacle> = bought.iter().map(|(.., obstacle, _)| *obstacle).collect();
+    for (_, obstacle) in pressing {
+        if !in_the_way.contains(&obstacle) {
+            in_the_way.push(obstacle);
+        }
+    }
+    let relief = match bought.into_iter().next() {
+        Some((worth, left, obstacle, lifted))
+            if worth > MISSED.max(WORTH_SAYING * answer.value) =>
+        {
+            question.relief(problem, requirement, obstacle, lifted, left)?
+        }
+        _ => None,
+    };
     Ok((in_the_way, relief))
 }
 
@@ -168,8 +176,8 @@ impl<'a> Question<'a> {
         self.misses.len() == 2
     }
 
-    /// Whatever presses against the answer.
-    fn pressing(&self, answer: &Answer) -> Vec<Obstacle> {
+    /// Whatever presses against the answer, and how hard.
+    fn pressing(&self, answer: &Answer) -> Vec<(f64, Obstacle)> {
         let model = self.model;
         let mut pressing = Vec::new();
         for source in 0..model.sources {
@@ -178,26 +186,29 @@ impl<'a> Question<'a> {
             let share = answer.columns[source];
             let (low, high) = (self.program.lower[source], self.program.upper[source]);
             if leans > PRESSURE && share - low < 1e-4 && low > 0.0 {
-                pressing.push(Obstacle::Limit(Limit::LowestShare(source)));
+                pressing.push((leans, Obstacle::Limit(Limit::LowestShare(source))));
             }
             if leans < -PRESSURE && high - share < 1e-4 && high < 1.0 {
-                pressing.push(Obstacle::Limit(Limit::HighestShare(source)));
+                pressing.push((-leans, Obstacle::Limit(Limit::HighestShare(source))));
             }
         }
         for (index, hard) in model.hard.iter().enumerate() {
-            if answer.pressures[Model::FIRST_LIMIT + index] > PRESSURE {
-                pressing.push(Obstacle::Limit(hard.limit));
+            let pressure = answer.pressures[Model::FIRST_LIMIT + index];
+            if pressure > PRESSURE {
+                pressing.push((pressure, Obstacle::Limit(hard.limit)));
             }
         }
-        if !self.asks_about_mash() && answer.pressures[Model::MASH_ROW].abs() > PRESSURE {
-            pressing.push(Obstacle::Requirement(Requirement::MashPh));
+        let pressure = answer.pressures[Model::MASH_ROW].abs();
+        if !self.asks_about_mash() && pressure > PRESSURE {
+            pressing.push((pressure, Obstacle::Requirement(Requirement::MashPh)));
         }
         for (index, window) in model.windows.iter().enumerate() {
-            let presses = model
+            let pressure = model
                 .window_rows(&self.windows, index)
-                .any(|row| answer.pressures[row].abs() > PRESSURE);
-            if presses && self.windows[index] != Hold::Counted {
-                pressing.push(Obstacle::Requirement(window.requirement));
+                .map(|row| answer.pressures[row].abs())
+                .fold(0.0, f64::max);
+            if pressure > PRESSURE && self.windows[index] != Hold::Counted {
+                pressing.push((pressure, Obstacle::Requirement(window.requirement)));
             }
         }
         pressing
@@ -212,7 +223,9 @@ impl<'a> Question<'a> {
         };
         match obstacle {
             Obstacle::Limit(Limit::LowestShare(source)) => program.lower[source] = 0.0,
-            Obstacle::Limit(Limit::HighestShare(source)) => program.upper[source] = 1.0,
+            Obstacle::Limit(Limit::HighestShare(source)) => {
+                program.upper[source] = f64::INFINITY;
+            }
             Obstacle::Limit(limit) => {
                 for (hard, row) in model
                     .hard
@@ -284,7 +297,7 @@ impl<'a> Question<'a> {
                 }
             }
         }
-        let Ok(answer) = lifted.solve(&Objective::linear(least)) else {
+        let Ok(answer) = lifted.solve_roughly(&Objective::linear(least)) else {
             return Ok(None);
         };
         let shares = model.shares(&answer.columns);
@@ -393,7 +406,7 @@ impl Elastic {
                 limits.push(limit);
             }
             program.lower[source] = 0.0;
-            program.upper[source] = 1.0;
+            program.upper[source] = f64::INFINITY;
         }
         program.lower.resize(width, 0.0);
         program.upper.resize(width, f64::INFINITY);

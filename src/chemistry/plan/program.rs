@@ -89,9 +89,8 @@ pub(super) fn dot(a: &[f64], b: &[f64]) -> f64 {
 }
 
 /// Accuracy, and how far the rows are loosened, in turn. Held optima leave a thin room;
-/// where the method gets stuck in it, less accuracy and then a hundred-millionth more
-/// room lets it through.
-const ATTEMPTS: [(f64, f64); 4] = [(1e-10, 0.0), (1e-8, 0.0), (1e-9, 1e-8), (1e-8, 1e-7)];
+/// where the method gets stuck in it, a hair more room lets it through.
+const ATTEMPTS: [(f64, f64); 4] = [(1e-10, 0.0), (1e-9, 1e-10), (1e-9, 1e-9), (1e-8, 1e-7)];
 
 /// Both sides of a row nearer than this are an equation.
 const EQUAL: f64 = 1e-12;
@@ -103,6 +102,9 @@ fn settings(tolerance: f64) -> DefaultSettings<f64> {
         .tol_gap_abs(tolerance)
         .tol_gap_rel(tolerance)
         .tol_feas(tolerance)
+        .reduced_tol_gap_abs(10.0 * tolerance)
+        .reduced_tol_gap_rel(10.0 * tolerance)
+        .reduced_tol_feas(10.0 * tolerance)
         .max_threads(1)
         .presolve_enable(false)
         .build()
@@ -118,10 +120,22 @@ struct Line {
     row: Option<(usize, f64)>,
 }
 
+/// The same for an answer that is only talked about.
+const ROUGH_ATTEMPTS: [(f64, f64); 2] = [(1e-7, 0.0), (1e-6, 1e-7)];
+
 impl Program {
     pub(super) fn solve(&self, objective: &Objective) -> Result<Answer, NoAnswer> {
+        self.attempts(objective, &ATTEMPTS)
+    }
+
+    /// To about a millionth, in fewer steps.
+    pub(super) fn solve_roughly(&self, objective: &Objective) -> Result<Answer, NoAnswer> {
+        self.attempts(objective, &ROUGH_ATTEMPTS)
+    }
+
+    fn attempts(&self, objective: &Objective, attempts: &[(f64, f64)]) -> Result<Answer, NoAnswer> {
         let mut ended = Err(NoAnswer::Unsettled);
-        for (tolerance, loosened) in ATTEMPTS {
+        for &(tolerance, loosened) in attempts {
             ended = self.attempt(objective, tolerance, loosened);
             if !matches!(ended, Err(NoAnswer::Unsettled)) {
                 break;
