@@ -136,6 +136,8 @@ pub struct Seen {
     pub figure: Figure,
     /// Where the test has it from.
     pub how: HowKnown,
+    /// Whether it is an average, and so no sample of any day.
+    pub is_average: bool,
 }
 
 /// Everything a test says, in the figures today's water is made of: alkalinity also
@@ -153,6 +155,7 @@ pub fn seen(test: &WaterTest) -> Result<Vec<Seen>, Error> {
         sampled_on: test.sheet.sampled_on,
         figure,
         how,
+        is_average: test.sheet.sample_kind == SampleKind::Average,
     };
     let mut all = Vec::new();
     for analyte in Analyte::ALL.into_iter().filter(|a| is_followed(*a)) {
@@ -288,10 +291,9 @@ fn estimate(
     kind: WaterKind,
     on: Date,
 ) -> Result<Option<(Figure, TodaysFigure)>, Error> {
-    let is_average = |seen: &&Seen| seen.how == HowKnown::Average;
-    let samples: Vec<&Seen> = history.iter().filter(|seen| !is_average(seen)).collect();
+    let samples: Vec<&Seen> = history.iter().filter(|seen| !seen.is_average).collect();
     // A supplier's average is no sample of any day: it is what to expect before one.
-    let average = history.iter().find(is_average);
+    let average = history.iter().find(|seen| seen.is_average);
     let Some(newest) = samples.first().copied().or(average) else {
         return Ok(None);
     };

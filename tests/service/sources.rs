@@ -336,7 +336,9 @@ async fn averages_are_what_to_expect_and_no_sample_of_any_day() {
     let program = desk.full_program("qa").await;
     let id = mains(&program).await;
     let tests = format!("/sources/{id}/water-tests");
-    let mut averages = balanced();
+    let averages = with(balanced(), "magnesium", "", "");
+    let mut averages = with(averages, "total_hardness", "191", "mg_per_l_as_caco3");
+    averages["accepted"] = json!({"magnesium": "rest_of_hardness"});
     averages["sample_kind"] = json!("average");
     averages["sampled_on"] = json!("2020-12-31");
     assert_eq!(program.post(&tests, &averages).await.status, 201);
@@ -345,6 +347,9 @@ async fn averages_are_what_to_expect_and_no_sample_of_any_day() {
     let calcium = figure(&before.body, "calcium");
     assert_eq!(calcium["how"], "average");
     assert_eq!(calcium["age_days"], Value::Null);
+    let magnesium = figure(&before.body, "magnesium");
+    assert_eq!(magnesium["how"], "rest_of_hardness");
+    assert_eq!(magnesium["age_days"], Value::Null);
     // 20 % of 60 mg/L within a year, and the laboratory's 2.5 %: 12.1; it does not age.
     let sd = calcium["sd"].as_f64().unwrap();
     assert!((11.9..12.3).contains(&sd), "{sd}");
