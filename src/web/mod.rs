@@ -93,6 +93,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::plans::api::routes())
         .merge(crate::shelf::api::routes())
         .merge(crate::sources::api::routes())
+        .merge(crate::malts::api::routes())
         .split_for_parts();
     let api = api
         .fallback(problem::no_such_endpoint)

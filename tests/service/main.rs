@@ -10,6 +10,7 @@
 mod beers;
 mod desk;
 mod help;
+mod malts;
 mod people;
 mod shelf;
 mod source_pages;
