@@ -48,6 +48,16 @@ pub fn doubt(sd: f64) -> String {
     decimals(sd, places)
 }
 
+/// A figure somebody entered: as many digits as it has, at most four that count.
+pub fn entered(value: f64) -> String {
+    let rounded: f64 = format!("{value:.3e}").parse().unwrap_or(value);
+    let text = rounded.to_string();
+    match text.strip_prefix('-') {
+        Some(positive) => format!("\u{2212}{positive}"),
+        None => text,
+    }
+}
+
 /// A pH, two decimals.
 pub fn ph(value: f64) -> String {
     decimals(value, 2)

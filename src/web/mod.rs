@@ -32,6 +32,7 @@ pub mod form;
 pub mod format;
 pub mod help;
 pub mod layout;
+pub mod list;
 pub mod problem;
 pub mod repeat;
 pub mod session;

@@ -22,6 +22,11 @@ pub enum Measure {
     DoseMass,
     /// A poured dose: millilitres or US fluid ounces.
     DoseVolume,
+    /// A weighed dose in so much liquor: grams per hectolitre or ounces per US barrel.
+    DoseMassPerBatch,
+    /// A poured dose in so much liquor: millilitres per hectolitre or US fluid ounces per
+    /// US barrel.
+    DoseVolumePerBatch,
     /// Temperature: °C or °F.
     Temperature,
     /// Price of a solid per kilogram or pound.
@@ -53,6 +58,10 @@ impl Units {
             (Self::Us, Measure::DoseMass) => "oz",
             (Self::Metric, Measure::DoseVolume) => "mL",
             (Self::Us, Measure::DoseVolume) => "fl oz",
+            (Self::Metric, Measure::DoseMassPerBatch) => "g/hL",
+            (Self::Us, Measure::DoseMassPerBatch) => "oz/bbl",
+            (Self::Metric, Measure::DoseVolumePerBatch) => "mL/hL",
+            (Self::Us, Measure::DoseVolumePerBatch) => "fl oz/bbl",
             (Self::Metric, Measure::Temperature) => "°C",
             (Self::Us, Measure::Temperature) => "°F",
             (Self::Metric, Measure::PricePerMass) => "per kg",
@@ -64,7 +73,7 @@ impl Units {
         }
     }
 
-    /// How many SI units (L, kg, g, mL) make one of the shown units.
+    /// How many SI units (L, kg, g, mL, and g or mL per hL) make one of the shown units.
     const fn size(self, measure: Measure) -> f64 {
         match (self, measure) {
             (Self::Metric, Measure::Batch) => 100.0,
@@ -74,6 +83,12 @@ impl Units {
             (Self::Us, Measure::Malt) => KILOGRAMS_PER_POUND,
             (Self::Us, Measure::DoseMass) => KILOGRAMS_PER_POUND * 1000.0 / 16.0,
             (Self::Us, Measure::DoseVolume) => LITRES_PER_GALLON * 1000.0 / 128.0,
+            (Self::Us, Measure::DoseMassPerBatch) => {
+                self.size(Measure::DoseMass) * 100.0 / LITRES_PER_BARREL
+            }
+            (Self::Us, Measure::DoseVolumePerBatch) => {
+                self.size(Measure::DoseVolume) * 100.0 / LITRES_PER_BARREL
+            }
             (Self::Us, Measure::PricePerMass) => 1.0 / KILOGRAMS_PER_POUND,
             (Self::Us, Measure::PricePerVolume) => 1.0 / LITRES_PER_GALLON,
             (Self::Us, Measure::PriceOfWater) => 1.0 / LITRES_PER_GALLON,
@@ -156,6 +171,8 @@ mod tests {
             (Measure::Malt, 0.453_592),
             (Measure::DoseMass, 28.349_52),
             (Measure::DoseVolume, 29.573_53),
+            (Measure::DoseMassPerBatch, 28.349_52 / 1.173_48),
+            (Measure::DoseVolumePerBatch, 29.573_53 / 1.173_48),
         ] {
             assert!(
                 (Units::Us.stored(measure, 1.0) / si - 1.0).abs() < 3e-6,
