@@ -17,7 +17,9 @@ use crate::id::{MaterialId, MaterialLotId};
 pub mod api;
 pub mod entered;
 pub mod operations;
+pub mod pages;
 pub mod store;
+pub mod words;
 
 /// What one kilogram of a solid or one litre of a liquid costs, in the brewery's
 /// currency.

@@ -2,7 +2,10 @@
 
 use serde_json::{Value, json};
 
-use crate::desk::{Answer, Desk, Program};
+use leat::brewery::{Settings, Units};
+use reqwest::StatusCode;
+
+use crate::desk::{Answer, Browser, Desk, Program, Seen, offered};
 
 fn gypsum() -> Value {
     json!({
@@ -249,4 +252,241 @@ async fn only_a_manager_keeps_the_shelf_and_a_brewer_keeps_no_lots() {
         assert_eq!(program.post(&lots, &lot).await.status, lot_status);
         assert_eq!(program.get(&lots).await.status, 200);
     }
+}
+
+/// Fills in the form for a new material of this substance.
+async fn filled(browser: &Browser, substance: &str, typed: &[(&str, &str)]) -> Seen {
+    let form = browser
+        .open(&format!("/shelf/new?substance={substance}"))
+        .await;
+    browser.fill(&form, "/shelf/new", typed).await
+}
+
+#[tokio::test]
+async fn an_empty_shelf_offers_the_usual_materials_in_one_go() {
+    let desk = Desk::start().await;
+    let browser = desk.browser("manager").await;
+    let empty = browser.open("/shelf").await;
+    let names = offered(&empty, "/shelf/usual", &[]);
+    assert!(names.iter().any(|(name, _)| name == "usual.gypsum"));
+    let fields = [
+        ("usual.citric_acid_anhydrous", "yes"),
+        ("usual.lactic_acid", "no"),
+    ];
+    let shelf = browser.fill(&empty, "/shelf/usual", &fields).await;
+    assert_eq!(shelf.path, "/shelf");
+    let rows = shelf.texts("tbody th a");
+    for name in ["Gypsum", "Epsom salt", "Citric acid, anhydrous"] {
+        assert!(rows.iter().any(|row| row == name), "{rows:?}");
+    }
+    assert!(!rows.iter().any(|row| row == "Lactic acid"), "{rows:?}");
+    assert!(shelf.words().contains("usual for it, assumed"));
+
+    let none: Vec<(String, String)> = Vec::new();
+    let refused = browser.post("/shelf/usual", &none).await;
+    assert_eq!(refused.status, StatusCode::UNPROCESSABLE_ENTITY);
+    for login in ["qa", "brewer"] {
+        let browser = desk.browser(login).await;
+        let page = browser.post("/shelf/usual", &names).await;
+        assert_eq!(page.status, StatusCode::FORBIDDEN);
+    }
+}
+
+#[tokio::test]
+async fn a_form_with_slips_comes_back_as_typed_with_each_slip_at_its_field() {
+    let desk = Desk::start().await;
+    let browser = desk.browser("manager").await;
+    let page = filled(
+        &browser,
+        "lactic_acid",
+        &[
+            ("name", "Lactic <88>"),
+            ("strength.percent", "88 %"),
+            ("scale_step_g_or_ml", "five"),
+            ("price_per_kg_or_l", "1e308"),
+            ("notes", "blue drum"),
+        ],
+    )
+    .await;
+    assert_eq!(page.status, StatusCode::UNPROCESSABLE_ENTITY);
+    for (name, value) in [
+        ("name", "Lactic <88>"),
+        ("strength.percent", "88 %"),
+        ("scale_step_g_or_ml", "five"),
+        ("price_per_kg_or_l", "1e308"),
+        ("notes", "blue drum"),
+    ] {
+        assert_eq!(page.field(name), value, "{name}");
+    }
+    for name in [
+        "strength.percent",
+        "strength.density_g_per_ml",
+        "scale_step_g_or_ml",
+        "price_per_kg_or_l",
+    ] {
+        assert!(page.error(name).is_some(), "{name}");
+    }
+    assert_eq!(page.error("name"), None);
+}
+
+#[tokio::test]
+async fn a_material_is_entered_changed_and_taken_out_of_use_through_its_forms() {
+    let desk = Desk::start().await;
+    let browser = desk.browser("manager").await;
+    let fields = [
+        ("name", "Lactic"),
+        ("strength.percent", "88,0"),
+        ("strength.density_g_per_ml", "1,206"),
+        ("price_per_kg_or_l", "6,40"),
+    ];
+    let page = filled(&browser, "lactic_acid", &fields).await;
+    assert!(
+        page.words().contains("88.0 ± 2.6 % w/w, 1.206 g/mL"),
+        "{}",
+        page.words()
+    );
+    assert!(
+        page.words()
+            .contains("Add acid to water, never water to acid.")
+    );
+    assert!(page.words().contains("Follow the safety data sheet"));
+    assert!(page.words().contains("€ 6.40 per L"));
+
+    let place = format!("{}/edit", page.path);
+    let form = browser.open(&place).await;
+    assert_eq!(form.field("strength.percent"), "88");
+    let changed = browser
+        .fill(&form, &place, &[("name", "Lactic acid, drum")])
+        .await;
+    assert!(changed.words().contains("Lactic acid, drum"));
+    let stale = browser.fill(&form, &place, &[("name", "Other")]).await;
+    assert_eq!(stale.status, StatusCode::CONFLICT);
+    assert_eq!(stale.field("name"), "Other");
+
+    let form = browser.open(&place).await;
+    browser.fill(&form, &place, &[("in_use", "no")]).await;
+    assert!(browser.open("/shelf").await.texts("tbody th").is_empty());
+    let retired = browser.open("/shelf?retired=yes").await;
+    assert_eq!(retired.texts("tbody th a"), ["Lactic acid, drum"]);
+
+    let record = browser.open("/record").await;
+    assert!(
+        record
+            .words()
+            .contains("changed material “Lactic acid, drum”")
+    );
+}
+
+#[tokio::test]
+async fn a_form_sent_twice_with_one_key_adds_one_material() {
+    let desk = Desk::start().await;
+    let browser = desk.browser("manager").await;
+    let form = browser.open("/shelf/new?substance=gypsum").await;
+    let fields = offered(&form, "/shelf/new", &[("name", "Gypsum, once")]);
+    let first = browser.post("/shelf/new", &fields).await;
+    let second = browser.post("/shelf/new", &fields).await;
+    assert_eq!(first.path, second.path);
+    let shelf = browser.open("/shelf").await;
+    assert_eq!(shelf.texts("tbody th a"), ["Gypsum, once"]);
+}
+
+#[tokio::test]
+async fn an_opened_pack_says_on_its_page_that_it_is_taken_as_damp() {
+    let desk = Desk::start().await;
+    let manager = desk.browser("manager").await;
+    let page = filled(&manager, "calcium_chloride_dihydrate", &[]).await;
+    let qa = desk.browser("qa").await;
+    let place = format!("{}/lots/new", page.path);
+    let form = qa.open(&place).await;
+    let wrong = [("code", "A1"), ("opened_on", "2199-05-05")];
+    let wrong = qa.fill(&form, &place, &wrong).await;
+    assert_eq!(wrong.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert!(
+        wrong
+            .error("opened_on")
+            .unwrap()
+            .contains("has not come yet")
+    );
+    let fields = [
+        ("code", "A1"),
+        ("received_on", "2026-01-01"),
+        ("opened_on", "2026-01-02"),
+        ("use_by", "2026-02-01"),
+        ("assay_percent", "99,1"),
+    ];
+    let page = qa.fill(&form, &place, &fields).await;
+    let words = page.words();
+    assert!(words.contains("The current pack is open"), "{words}");
+    assert!(words.contains("90 ± 7 %"), "{words}");
+    assert!(words.contains("past it"), "{words}");
+}
+
+/// 1 oz is 28.3495 g and 1 bbl 1.17348 hL: 1 oz/bbl is 24.159 g/hL.
+#[tokio::test]
+async fn a_us_brewery_types_and_reads_ounces_per_barrel_and_the_api_stays_metric() {
+    let desk = Desk::start().await;
+    let by = desk.member("manager").await;
+    let settings = Settings {
+        units: Units::Us,
+        currency: "USD".into(),
+        ..Settings::default()
+    };
+    leat::brewery::operations::revise(&desk.app.db, &by, settings, None)
+        .await
+        .unwrap();
+    let browser = desk.browser("manager").await;
+    let fields = [
+        ("scale_step_g_or_ml", "0.1"),
+        ("highest_g_or_ml_per_hl", "2"),
+        ("price_per_kg_or_l", "3"),
+    ];
+    let page = filled(&browser, "gypsum", &fields).await;
+    let words = page.words();
+    for figure in [
+        "0.1 oz",
+        "2 oz/bbl",
+        "USD 3.00 per lb",
+        "What 1 oz/bbl brings",
+    ] {
+        assert!(words.contains(figure), "{figure}: {words}");
+    }
+    let form = browser.open(&format!("{}/edit", page.path)).await;
+    assert_eq!(form.field("highest_g_or_ml_per_hl"), "2");
+    let program = desk.full_program("manager").await;
+    let listed = program.get("/materials").await;
+    let stored = &listed.body["items"][0];
+    let near = |name: &str, wanted: f64| {
+        let value = stored[name].as_f64().unwrap();
+        assert!((value / wanted - 1.0).abs() < 1e-4, "{name}: {value}");
+    };
+    near("scale_step_g_or_ml", 2.83495);
+    near("highest_g_or_ml_per_hl", 2.0 * 24.159);
+    near("price_per_kg_or_l", 3.0 / 0.453_592);
+}
+
+#[tokio::test]
+async fn a_long_shelf_is_paged_and_sorts_by_price() {
+    let desk = Desk::start().await;
+    let program = desk.full_program("manager").await;
+    for number in 0..45 {
+        let mut body = gypsum();
+        body["name"] = format!("Gypsum {number:02}").into();
+        body["price_per_kg_or_l"] = (100 - number).into();
+        added(&program, &body).await;
+    }
+    let first = program.get("/materials?limit=40").await;
+    let cursor = first.body["next_cursor"].as_str().unwrap();
+    let second = program
+        .get(&format!("/materials?limit=40&cursor={cursor}"))
+        .await;
+    assert_eq!(second.body["items"].as_array().unwrap().len(), 5);
+    assert_eq!(second.body["next_cursor"], Value::Null);
+
+    let browser = desk.browser("brewer").await;
+    let page = browser.open("/shelf?sort=price").await;
+    let rows = page.texts("tbody th a");
+    assert_eq!((rows.len(), rows[0].as_str()), (40, "Gypsum 44"));
+    assert!(page.words().contains("1 to 40 of 45"));
+    let rest = browser.open("/shelf?sort=price&after=40").await;
+    assert_eq!(rest.texts("tbody th a")[4], "Gypsum 00");
 }
