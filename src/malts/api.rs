@@ -4,13 +4,13 @@ use axum::extract::{Query, State};
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::mash::Behaviour;
-use chemistry::quantity::{Estimate, MeqPerKg, Ph};
+use chemistry::quantity::{Estimate, MeqPerKg};
 use serde::{Deserialize, Serialize};
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
 use super::entered::{NewMaltBody, NewMaltLotBody, NewTitrationBody};
-use super::{Malt, MaltLot, Titration, acid_demand, operations};
+use super::{Malt, MaltLot, QUOTED_PH, Titration, acid_demand, operations};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MaltId, MaltLotId, MaltTitrationId, UtcTime};
@@ -19,9 +19,6 @@ use crate::people::{Member, Permission};
 use crate::web::App;
 use crate::web::extract::{At, Json, ListQuery, Listed, if_match};
 use crate::web::problem::Problem;
-
-/// The pH at which acid demands are quoted.
-pub const QUOTED_PH: Ph = Ph::constant(5.4);
 
 /// What is known of a malt's acidity, as calculations take it.
 #[derive(Debug, Serialize, utoipa::ToSchema)]

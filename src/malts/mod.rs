@@ -19,7 +19,9 @@ use crate::id::{MaltId, MaltLotId, MaltTitrationId, UtcTime};
 pub mod api;
 pub mod entered;
 pub mod operations;
+pub mod pages;
 pub mod store;
+pub mod words;
 
 /// A grist ingredient.
 #[derive(Clone, Debug, PartialEq)]
@@ -140,10 +142,33 @@ impl Titration {
         self.jars.iter().map(jar).collect()
     }
 
+    /// Where a malt that behaves so would have settled in each jar.
+    pub fn settled(&self, behaviour: &Behaviour) -> Vec<Ph> {
+        let jars = self.jars_per_kilogram();
+        jars.iter()
+            .map(|jar| settled(behaviour, jar.acid))
+            .collect()
+    }
+
     /// What it says of the malt.
     pub fn fit(&self) -> Result<Fit, TitrationError> {
         titration::fit(&self.jars_per_kilogram())
     }
+}
+
+/// The pH at which a malt takes this much acid, between 3 and 9: the demand falls with
+/// rising pH everywhere.
+fn settled(behaviour: &Behaviour, acid: MeqPerKg) -> Ph {
+    let (mut low, mut high) = (3.0, 9.0);
+    for _ in 0..50 {
+        let middle = f64::midpoint(low, high);
+        if behaviour.acid_demand(Ph::clamped(middle)) > acid {
+            low = middle;
+        } else {
+            high = middle;
+        }
+    }
+    Ph::clamped(f64::midpoint(low, high))
 }
 
 impl MaltLot {
@@ -260,6 +285,9 @@ pub struct KnownMalt {
     /// How that is known, in words.
     pub how_known: &'static str,
 }
+
+/// The pH at which acid demands are quoted.
+pub const QUOTED_PH: Ph = Ph::constant(5.4);
 
 /// The acid a malt takes to this pH, with its doubt: every doubt of the behaviour on
 /// its own, added as independent errors.

@@ -77,6 +77,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::record::pages::routes())
         .merge(crate::brewery::pages::routes())
         .merge(crate::shelf::pages::routes())
+        .merge(crate::malts::pages::routes())
         .merge(crate::beers::pages::routes())
         .merge(crate::plans::pages::routes())
         .merge(crate::sources::pages::routes())

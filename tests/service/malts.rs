@@ -4,7 +4,10 @@ use chemistry::mash::{Behaviour, Groups};
 use chemistry::quantity::{Estimate, Ph, RelativeBuffering};
 use serde_json::{Value, json};
 
-use crate::desk::{Answer, Desk, Program};
+use leat::brewery::{Settings, Units};
+use reqwest::StatusCode;
+
+use crate::desk::{Answer, Desk, Program, offered};
 
 fn pale() -> Value {
     json!({"name": "Pale", "class": "pale_ale", "colour": "5,5", "in_use": true})
@@ -274,4 +277,132 @@ async fn only_a_manager_keeps_malts_and_a_brewer_keeps_no_lots() {
         assert_eq!(program.post(&lots, &lot).await.status, lot_status);
         assert_eq!(program.get(&lots).await.status, 200);
     }
+}
+
+#[tokio::test]
+async fn a_malt_its_lot_and_its_titration_are_entered_through_their_forms() {
+    let desk = Desk::start().await;
+    let manager = desk.browser("manager").await;
+    let form = manager.open("/malts/new").await;
+    let fields = [("name", "Pale"), ("class", "pale_ale"), ("colour", "5,5")];
+    let page = manager.fill(&form, "/malts/new", &fields).await;
+    assert!(page.words().contains("class default, assumed"));
+    assert!(page.words().contains("Assumed, not measured"));
+    let malt = page.path;
+
+    let qa = desk.browser("qa").await;
+    let place = format!("{malt}/lots/new");
+    let form = qa.open(&place).await;
+    let fields = [("code", "L1"), ("wort_ph", "5,95")];
+    let lot = qa.fill(&form, &place, &fields).await;
+    assert!(lot.words().contains("sheet of the lot"), "{}", lot.words());
+    assert!(lot.words().contains("5.85 ± 0.07"), "{}", lot.words());
+
+    let place = format!("{}/titrations/new", lot.path);
+    let form = qa.open(&place).await;
+    let jars: Vec<(String, String)> = jars()
+        .iter()
+        .enumerate()
+        .flat_map(|(index, jar)| {
+            let jar = jar.as_object().unwrap().clone();
+            jar.into_iter().map(move |(name, value)| {
+                let value = value.as_str().unwrap().to_owned();
+                (format!("jars.{index}.{name}"), value)
+            })
+        })
+        .collect();
+    let mut fields = vec![
+        ("malt_g", "50"),
+        ("acid_meq_per_ml", "0,1"),
+        ("base_meq_per_ml", "0,1"),
+        ("tested_on", "2026-02-03"),
+    ];
+    fields.extend(
+        jars.iter()
+            .map(|(name, value)| (name.as_str(), value.as_str())),
+    );
+    let mut slipped = fields.clone();
+    slipped.push(("jars.5.acid_ml", "3 mL"));
+    let refused = qa.fill(&form, &place, &slipped).await;
+    assert_eq!(refused.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert!(refused.error("jars.5.acid_ml").is_some());
+    assert!(refused.error("jars.5.ph").is_some());
+    assert_eq!(refused.field("jars.5.acid_ml"), "3 mL");
+    assert_eq!(refused.field("jars.1.ph"), "5,60");
+
+    let lot = qa.fill(&form, &place, &fields).await;
+    let words = lot.words();
+    assert!(words.contains("titrated lot"), "{words}");
+    assert!(words.contains("5.80 ± 0.02"), "{words}");
+    let again = qa.post(&place, &offered(&form, &place, &fields)).await;
+    assert_eq!(again.texts("article").len(), 1, "one key, one titration");
+
+    let withdrawal = lot.html();
+    let selector = scraper::Selector::parse("article form").unwrap();
+    let action = withdrawal.select(&selector).next().unwrap();
+    let action = action.value().attr("action").unwrap().to_owned();
+    let back = qa.fill(&lot, &action, &[("reason", "Old buffers")]).await;
+    assert!(
+        back.words().contains("sheet of the lot"),
+        "{}",
+        back.words()
+    );
+    assert!(back.words().contains("Old buffers"));
+
+    let brewer = desk.browser("brewer").await;
+    let read = brewer.open(&lot.path).await;
+    assert_eq!(read.status, StatusCode::OK);
+    assert!(read.texts("main form").is_empty());
+    let refused = brewer.open(&place).await;
+    assert_eq!(refused.status, StatusCode::FORBIDDEN);
+}
+
+#[tokio::test]
+async fn a_malt_form_with_slips_comes_back_as_typed_and_a_stale_one_is_refused() {
+    let desk = Desk::start().await;
+    let browser = desk.browser("manager").await;
+    let form = browser.open("/malts/new").await;
+    let fields = [("name", "Pale"), ("class", ""), ("colour", "pale")];
+    let page = browser.fill(&form, "/malts/new", &fields).await;
+    assert_eq!(page.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert_eq!(page.field("colour"), "pale");
+    assert!(page.error("class").is_some() && page.error("colour").is_some());
+
+    let fields = [("name", "Pale"), ("class", "pale_ale")];
+    let malt = browser
+        .fill(&page, "/malts/new", &[fields[0], fields[1], ("colour", "")])
+        .await;
+    let place = format!("{}/edit", malt.path);
+    let form = browser.open(&place).await;
+    browser
+        .fill(&form, &place, &[("supplier", "Lower Lock")])
+        .await;
+    let stale = browser
+        .fill(&form, &place, &[("supplier", "Upper Lock")])
+        .await;
+    assert_eq!(stale.status, StatusCode::CONFLICT);
+    assert_eq!(stale.field("supplier"), "Upper Lock");
+    let other = desk.browser("qa").await.open(&place).await;
+    assert_eq!(other.status, StatusCode::FORBIDDEN);
+}
+
+#[tokio::test]
+async fn a_us_brewery_types_lovibond_and_reads_it_back() {
+    let desk = Desk::start().await;
+    let by = desk.member("manager").await;
+    let settings = Settings {
+        units: Units::Us,
+        ..Settings::default()
+    };
+    leat::brewery::operations::revise(&desk.app.db, &by, settings, None)
+        .await
+        .unwrap();
+    let browser = desk.browser("manager").await;
+    let form = browser.open("/malts/new").await;
+    assert_eq!(form.field("colour_unit"), "lovibond");
+    let fields = [("name", "Crystal"), ("class", "crystal"), ("colour", "60")];
+    let page = browser.fill(&form, "/malts/new", &fields).await;
+    assert!(page.words().contains("60 °L"), "{}", page.words());
+    let form = browser.open(&format!("{}/edit", page.path)).await;
+    assert_eq!(form.field("colour"), "60");
 }
