@@ -114,16 +114,24 @@ fn explain(
         }
     }
     bought.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
+    // Where one by itself buys something, those that by themselves buy nothing are only
+    // near by.
+    let enough = MISSED.max(WORTH_SAYING * answer.value);
+    let idle: Vec<Obstacle> = match bought.first() {
+        Some((most, ..)) if *most > enough => bought
+            .extract_if(.., |(worth, ..)| *worth <= enough)
+            .map(|(.., obstacle, _)| obstacle)
+            .collect(),
+        _ => Vec::new(),
+    };
     let mut in_the_way: Vec<Obstacle> = bought.iter().map(|(.., obstacle, _)| *obstacle).collect();
     for (_, obstacle) in pressing {
-        if !in_the_way.contains(&obstacle) {
+        if !in_the_way.contains(&obstacle) && !idle.contains(&obstacle) {
             in_the_way.push(obstacle);
         }
     }
     let relief = match bought.into_iter().next() {
-        Some((worth, left, obstacle, lifted))
-            if worth > MISSED.max(WORTH_SAYING * answer.value) =>
-        {
+        Some((worth, left, obstacle, lifted)) if worth > enough => {
             question.relief(problem, requirement, obstacle, lifted, left)?
         }
         _ => None,
