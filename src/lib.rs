@@ -13,6 +13,7 @@ pub mod beers;
 pub mod brewery;
 pub mod config;
 pub mod db;
+pub mod demo;
 pub mod error;
 pub mod id;
 pub mod input;

@@ -9,6 +9,7 @@ use tokio::net::TcpListener;
 
 use crate::config::Config;
 use crate::db::Db;
+use crate::demo;
 use crate::error::Error;
 use crate::people::{self, passwords::Passwords};
 use crate::web::throttle::Throttle;
@@ -26,6 +27,9 @@ impl Server {
     pub async fn open(config: &Config) -> Result<Self, Error> {
         let db = Db::open(&config.database).await?;
         let passwords = Passwords::start()?;
+        if config.demo {
+            demo::fill(&db, &passwords).await?;
+        }
         let mut token = [0_u8; 18];
         getrandom::fill(&mut token)
             .map_err(|error| Error::internal("No random numbers could be had", error))?;
