@@ -146,7 +146,7 @@ const BOREHOLE: Average = Average {
     sulfate: 11.0,
     chloride: 13.0,
     nitrate: 4.5,
-    ph: 7.0,
+    ph: 7.2,
 };
 const PERMEATE: Average = Average {
     calcium: 0.8,
@@ -157,7 +157,7 @@ const PERMEATE: Average = Average {
     sulfate: 0.4,
     chloride: 2.2,
     nitrate: 0.0,
-    ph: 6.4,
+    ph: 7.1,
 };
 
 async fn fill_sources(

@@ -13,11 +13,19 @@ pub struct FieldProblem {
     pub message: String,
 }
 
+fn told(problems: &[FieldProblem]) -> String {
+    problems
+        .iter()
+        .map(|problem| format!("{} {}", problem.field, problem.message))
+        .collect::<Vec<_>>()
+        .join(" ")
+}
+
 /// Why an operation did not happen. Nothing was saved.
 #[derive(Debug, thiserror::Error)]
 pub enum Error {
     /// Mend these fields and send again.
-    #[error("Some fields need mending")]
+    #[error("Some fields need mending: {}", told(.0))]
     Invalid(Vec<FieldProblem>),
     /// Check the link.
     #[error("There is no such {0}")]
