@@ -268,6 +268,16 @@ impl Problems {
         }
     }
 
+    /// Refuses a doubt whose figure is missing, which would else be dropped in silence.
+    pub fn doubt_needs_figure(&mut self, field: &str, doubt: &Number, figure: &Number) {
+        if figure.is_missing() && !doubt.is_missing() {
+            self.add(
+                field,
+                "Enter the figure this belongs to, or leave this blank.",
+            );
+        }
+    }
+
     /// One of a closed list, by key.
     pub fn choice<T>(
         &mut self,

@@ -203,6 +203,7 @@ fn own_ph(
     let sd = problems.optional_quantity("distilled_ph_sd", &body.distilled_ph_sd, |sd| {
         within(sd, "pH", 0.01, 1.0)
     });
+    problems.doubt_needs_figure("distilled_ph_sd", &body.distilled_ph_sd, &body.distilled_ph);
     let usual_sd = usual.map_or(0.1, |usual| usual.distilled_ph.sd);
     value.map(|value| Estimate::new(value, sd.unwrap_or(usual_sd)))
 }
@@ -225,6 +226,11 @@ fn own_buffering(
         problems.optional_quantity("relative_buffering_sd", &body.relative_buffering_sd, |sd| {
             within(sd, "times pale malt", 0.005, 2.0)
         });
+    problems.doubt_needs_figure(
+        "relative_buffering_sd",
+        &body.relative_buffering_sd,
+        &body.relative_buffering,
+    );
     let relative_sd = usual.map_or(0.25, |usual| {
         usual.buffering.sd / usual.buffering.value.get()
     });
@@ -246,6 +252,7 @@ fn lactic(
     let sd = problems.optional_quantity("lactic_sd_percent", lactic_sd_percent, |sd| {
         within(sd, "%", 0.0, 5.0)
     });
+    problems.doubt_needs_figure("lactic_sd_percent", lactic_sd_percent, lactic_percent);
     value.map(|value| Estimate::new(value, sd.unwrap_or(LACTIC_SD_PERCENT) / 100.0))
 }
 
@@ -257,6 +264,7 @@ impl CoefficientsBody {
             ("a3_meq_per_kg_ph3", &self.a3_meq_per_kg_ph3),
         ];
         if terms.iter().all(|(_, number)| number.is_missing()) {
+            problems.doubt_needs_figure("sd_percent", &self.sd_percent, &Number::Missing);
             return None;
         }
         let [a1, a2, a3] =

@@ -109,6 +109,7 @@ fn assay(
     let sd = problems.optional_quantity("assay_sd_percent", assay_sd_percent, |percent| {
         within(percent, "%", 0.0, 50.0)
     });
+    problems.doubt_needs_figure("assay_sd_percent", assay_sd_percent, assay_percent);
     value.map(|value| Estimate::new(value, sd.map_or(usual_sd, |percent| percent / 100.0)))
 }
 

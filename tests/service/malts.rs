@@ -188,6 +188,15 @@ async fn what_no_malt_can_be_is_refused_at_its_field() {
             "/distilled_ph_sd",
         ),
         (json!({"relative_buffering": "-1"}), "/relative_buffering"),
+        (json!({"distilled_ph_sd": 0.1}), "/distilled_ph_sd"),
+        (
+            json!({"relative_buffering_sd": 0.1}),
+            "/relative_buffering_sd",
+        ),
+        (
+            json!({"coefficients": {"sd_percent": 10}}),
+            "/coefficients/sd_percent",
+        ),
         (json!({"lactic_percent": 3}), "/lactic_percent"),
         (
             json!({"class": "acidulated", "distilled_ph": 3.6}),

@@ -156,6 +156,7 @@ async fn what_no_material_can_be_is_refused_at_its_field() {
             json!({"highest_g_or_ml_per_hl": "1.000,5"}),
             "/highest_g_or_ml_per_hl",
         ),
+        (json!({"assay_sd_percent": 1}), "/assay_sd_percent"),
         (json!({"vessels": {}}), "/vessels"),
         (
             json!({"strength": {"percent": 80, "density_g_per_ml": 1.2}}),
