@@ -180,6 +180,9 @@ impl MaltLot {
     }
 }
 
+/// How a malt is known of which nothing was entered but its class and colour.
+pub const ASSUMED: &str = "class default, assumed";
+
 impl Malt {
     /// How it meets acid and base, from the best that is known of it and of this lot, and
     /// in words how that is known.
@@ -238,7 +241,7 @@ impl Malt {
             Behaviour::Groups(groups) => {
                 let how_known = match (self.distilled_ph, self.buffering) {
                     (Some(_), Some(_)) => "own figures of the malt",
-                    (None, None) => "class default, assumed",
+                    (None, None) => ASSUMED,
                     _ => "own figures of the malt, the rest assumed for its class",
                 };
                 let groups = Groups::new(
@@ -247,7 +250,7 @@ impl Malt {
                 );
                 (Behaviour::Groups(groups), how_known)
             }
-            _ => (assumed, "class default, assumed"),
+            _ => (assumed, ASSUMED),
         }
     }
 

@@ -182,7 +182,7 @@ async fn show(
         may_change: page.can(Permission::KeepMalts),
         may_keep_lots: page.can(Permission::KeepLots),
         known: Known::of(&malt, current.as_ref()),
-        assumed: Known::from(&malt.assumed(), "class default, assumed"),
+        assumed: Known::from(&malt.assumed(), super::ASSUMED),
         lot_in_force: current.map(|lot| lot.code),
         lots: lots
             .iter()

@@ -11,8 +11,8 @@ use crate::web::format;
 pub struct Known {
     /// How it is known.
     pub how: &'static str,
-    /// Its badge: `done` when it was measured, `plain` when it is assumed.
-    pub badge: &'static str,
+    /// Whether all of it is assumed.
+    pub assumed: bool,
     /// pH in distilled water.
     pub ph: String,
     /// Its standard deviation.
@@ -57,11 +57,7 @@ impl Known {
             |value: Option<f64>| value.map_or_else(String::new, |value| format::decimals(value, 2));
         Self {
             how,
-            badge: if how.ends_with("assumed") {
-                "plain"
-            } else {
-                "done"
-            },
+            assumed: how == super::ASSUMED,
             ph: format::ph(ph.value.get()),
             ph_doubt: format::decimals(ph.sd, 2),
             buffering: text(buffering.map(|buffering| buffering.value.get())),

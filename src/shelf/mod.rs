@@ -254,10 +254,13 @@ impl Material {
             .collect()
     }
 
-    /// Vessels it goes into here, though that is not usual for the substance.
+    /// Vessels it goes into here, though that is not usual for the substance. None where
+    /// nothing is usual.
     pub fn unusual_vessels(&self) -> Vec<Vessel> {
         let usual = self.substance.default_vessels();
         let chosen = self.vessels.iter().copied();
-        chosen.filter(|vessel| !usual.contains(vessel)).collect()
+        chosen
+            .filter(|vessel| !usual.is_empty() && !usual.contains(vessel))
+            .collect()
     }
 }

@@ -401,7 +401,7 @@ async fn edit_page(
                 let name = format!("vessels.{}", vessel.key());
                 VesselBox {
                     ticked: typed.ticked(&name),
-                    words: if usual.contains(&vessel) {
+                    words: if usual.is_empty() || usual.contains(&vessel) {
                         words::capital(vessel.name())
                     } else {
                         format!("{} (unusual for it)", words::capital(vessel.name()))
