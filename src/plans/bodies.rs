@@ -592,7 +592,7 @@ impl MaltBody {
             },
             ([a1, a2, a3], None) => {
                 let mut read = |number: &Number| {
-                    problems.quantity("coefficients", number, |value| Ok::<_, String>(value))
+                    problems.quantity("coefficients", number, Ok::<_, String>)
                 };
                 let coefficients = [read(a1)?, read(a2)?, read(a3)?];
                 let relative_sd = RelativeSd::clamped(own_buffering_sd);

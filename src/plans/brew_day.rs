@@ -8,7 +8,7 @@ use axum::extract::State;
 use axum::response::{IntoResponse, Redirect, Response};
 use axum::routing::{get, post};
 
-use super::api::{METER_SD, NewMashCheckBody, WeighedBody};
+use super::asked::{METER_SD, NewMashCheckBody, WeighedBody};
 use super::mash_checks::{self, NewMashCheck};
 use super::pages::{ListRow, check_address};
 use super::store::{Filter, Order};

@@ -15,7 +15,9 @@ use jiff::civil::Date;
 
 use crate::id::{BeerId, DoseId, MashCheckId, PlanId, UtcTime};
 
+pub mod answers;
 pub mod api;
+pub mod asked;
 pub mod bodies;
 pub mod brew_day;
 pub mod compute;

@@ -9,7 +9,7 @@ use axum::routing::{get, post};
 use chemistry::material::Vessel;
 use chemistry::plan::{Outcome, Way};
 
-use super::api::{ClosingBody, NewPlanBody, TreatmentBody};
+use super::asked::{ClosingBody, NewPlanBody, TreatmentBody};
 use super::bodies::InputsBody;
 use super::inputs::Inputs;
 use super::operations::{self, Closing, NewPlan, Treatment};

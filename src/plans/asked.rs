@@ -1,0 +1,385 @@
+//! What is sent about plans: drafts, treatments, weighed amounts, readings, reasons.
+//! Forms and the API become the same bodies, and every rule about a field is here.
+
+use chemistry::material::Vessel;
+use chemistry::plan::{self, Way};
+use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
+use serde::{Deserialize, Serialize};
+
+use super::Stage;
+use super::bodies::InputsBody;
+use super::mash_checks::NewMashCheck;
+use super::operations::{Closing, NewPlan, SourceChoice, Treatment};
+use crate::error::Error;
+use crate::id::{BeerId, MashCheckId};
+use crate::input::{Flag, Number, Problems};
+
+/// A plan to be drafted.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct NewPlanBody {
+    /// The brewery's number of the batch.
+    pub batch: String,
+    /// What is brewed: an identifier of `/beers`.
+    pub beer_id: String,
+    /// The day it is brewed, `2026-03-31`.
+    pub brewed_on: String,
+    /// How to choose the treatment: `closest_to_preferred`, `fewest_additions`,
+    /// `least_blending_water` or `cheapest`; the first when not given.
+    pub way: String,
+    /// Which sources may be used; every source in use when empty.
+    pub sources: Vec<SourceChoiceBody>,
+}
+
+/// A source and how much of it may be used.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct SourceChoiceBody {
+    /// An identifier of `/sources`.
+    pub source_id: String,
+    /// Whether it may be used; yes when not given.
+    pub used: Option<Flag>,
+    /// Least share of the liquor, per cent; 0 when not given.
+    pub lowest_percent: Number,
+    /// Greatest share of the liquor, per cent; 100 when not given.
+    pub highest_percent: Number,
+}
+
+impl TryFrom<NewPlanBody> for NewPlan {
+    type Error = Error;
+
+    fn try_from(body: NewPlanBody) -> Result<Self, Error> {
+        let mut problems = Problems::new();
+        let batch = problems.text("batch", &body.batch, 40);
+        let beer_id = problems.choice("beer_id", &body.beer_id, |key| key.parse::<BeerId>().ok());
+        let brewed_on = problems.date("brewed_on", &body.brewed_on);
+        let way = if body.way.trim().is_empty() {
+            Some(Way::ClosestToPreferred)
+        } else {
+            problems.choice("way", &body.way, Way::from_key)
+        };
+        let mut sources = Vec::new();
+        let mut all_off = !body.sources.is_empty();
+        for (index, source) in body.sources.iter().enumerate() {
+            if source.used.is_some_and(|used| !used.0) {
+                continue;
+            }
+            all_off = false;
+            problems.within(format!("sources.{index}"), |problems| {
+                let source_id =
+                    problems.choice("source_id", &source.source_id, |key| key.parse().ok());
+                let percent = |value: f64| {
+                    if (0.0..=100.0).contains(&value) {
+                        Ok(Fraction::clamped(value / 100.0))
+                    } else {
+                        Err("Enter 0 to 100 %")
+                    }
+                };
+                let lowest =
+                    problems.optional_quantity("lowest_percent", &source.lowest_percent, percent);
+                let highest =
+                    problems.optional_quantity("highest_percent", &source.highest_percent, percent);
+                let (lowest, highest) = (
+                    lowest.unwrap_or(Fraction::constant(0.0)),
+                    highest.unwrap_or(Fraction::constant(1.0)),
+                );
+                if lowest > highest {
+                    problems.add("lowest_percent", "The least share is above the greatest.");
+                }
+                sources.extend(source_id.map(|source_id| SourceChoice {
+                    source_id,
+                    lowest,
+                    highest,
+                }));
+            });
+        }
+        if all_off {
+            problems.add("sources", "Choose at least one source.");
+        }
+        problems.finish()?;
+        match (batch, beer_id, brewed_on, way) {
+            (Some(batch), Some(beer_id), Some(brewed_on), Some(way)) => Ok(Self {
+                batch,
+                beer_id,
+                brewed_on,
+                way,
+                sources,
+            }),
+            _ => Err(Error::field("", "Fill in every field.")),
+        }
+    }
+}
+
+/// A draft's treatment.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct TreatmentBody {
+    /// Share of each source, per cent, in the order of the inputs. They must add up to
+    /// 100.
+    pub shares_percent: Vec<Number>,
+    /// What goes where. Amounts of nothing are left out.
+    pub doses: Vec<DoseInputBody>,
+}
+
+/// One amount of a draft.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct DoseInputBody {
+    /// Place of the material on the plan's shelf, counting from 0.
+    pub material: Number,
+    /// `liquor_tank`, `mash`, `sparge_liquor` or `kettle`.
+    pub vessel: String,
+    /// How much, g or mL.
+    pub amount: Number,
+}
+
+/// How far shares may be from a whole before they are refused, per cent: two decimals of
+/// rounding for each of a few sources.
+const SHARES_TOLERANCE: f64 = 0.11;
+
+impl TryFrom<TreatmentBody> for Treatment {
+    type Error = Error;
+
+    fn try_from(body: TreatmentBody) -> Result<Self, Error> {
+        let mut problems = Problems::new();
+        let mut shares = Vec::new();
+        for (index, share) in body.shares_percent.iter().enumerate() {
+            let field = format!("shares_percent.{index}");
+            let check = |value: f64| {
+                if (0.0..=100.0).contains(&value) {
+                    Ok(value)
+                } else {
+                    Err("Enter 0 to 100 %")
+                }
+            };
+            if share.is_missing() {
+                shares.push(0.0);
+            } else {
+                shares.extend(problems.quantity(&field, share, check));
+            }
+        }
+        let sum: f64 = shares.iter().sum();
+        if problems.is_empty() && (sum - 100.0).abs() > SHARES_TOLERANCE {
+            let last = body.shares_percent.len().saturating_sub(1);
+            problems.add(
+                format!("shares_percent.{last}"),
+                format!(
+                    "The shares add up to {} %; they must add up to 100 %.",
+                    crate::web::format::decimals(sum, 1)
+                ),
+            );
+        }
+        let mut doses = Vec::new();
+        for (index, dose) in body
+            .doses
+            .iter()
+            .enumerate()
+            .filter(|(_, dose)| !dose.amount.is_missing())
+        {
+            problems.within(format!("doses.{index}"), |problems| {
+                let whole = |value: f64| {
+                    if (0.0..1000.0).contains(&value) && value.fract() == 0.0 {
+                        Ok(value as usize)
+                    } else {
+                        Err("Enter a place on the shelf")
+                    }
+                };
+                let material = problems.quantity("material", &dose.material, whole);
+                let vessel = problems.choice("vessel", &dose.vessel, Vessel::from_key);
+                let amount = problems.quantity("amount", &dose.amount, DoseAmount::new);
+                if let (Some(material), Some(vessel), Some(amount)) = (material, vessel, amount) {
+                    doses.push(plan::Dose {
+                        material,
+                        vessel,
+                        amount,
+                    });
+                }
+            });
+        }
+        problems.finish()?;
+        Ok(Self {
+            shares: shares
+                .into_iter()
+                .map(|share| Fraction::clamped(share / sum))
+                .collect(),
+            doses,
+        })
+    }
+}
+
+/// Why something is done.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct ReasonBody {
+    /// The reason, in words.
+    pub reason: String,
+}
+
+impl ReasonBody {
+    /// The reason, which must be there.
+    pub fn needed(&self) -> Result<String, Error> {
+        let mut problems = Problems::new();
+        let reason = problems.text("reason", &self.reason, 500);
+        problems.finish()?;
+        Ok(reason.unwrap_or_default())
+    }
+
+    /// The reason, if one was given.
+    pub fn optional(&self) -> Result<Option<String>, Error> {
+        let mut problems = Problems::new();
+        let reason = problems.optional_text("reason", &self.reason, 500);
+        problems.finish()?;
+        Ok(reason)
+    }
+}
+
+/// What was weighed in.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct WeighedBody {
+    /// How much went in, g or mL.
+    pub actual: Number,
+    /// Of which lot.
+    pub lot: String,
+}
+
+impl WeighedBody {
+    /// The amount and the lot, checked.
+    pub fn check(&self) -> Result<(DoseAmount, String), Error> {
+        let mut problems = Problems::new();
+        let actual = problems.quantity("actual", &self.actual, DoseAmount::new);
+        let lot = problems.optional_text("lot", &self.lot, 80);
+        problems.finish()?;
+        Ok((
+            actual.unwrap_or(DoseAmount::constant(0.0)),
+            lot.unwrap_or_default(),
+        ))
+    }
+}
+
+/// A pH reading.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct NewMashCheckBody {
+    /// `liquor`, `mash`, `first_runnings`, `last_runnings`, `kettle_full`, `end_of_boil`,
+    /// `end_of_fermentation` or `package`; the mash when not given.
+    pub stage: String,
+    /// Minutes since strike.
+    pub minute: Number,
+    /// As the meter showed it.
+    pub ph: Number,
+    /// Temperature of the sample in the meter's cup, °C.
+    pub sample_c: Number,
+    /// Which meter.
+    pub meter: String,
+    /// One standard deviation of the meter at its last calibration; 0.03 is assumed when
+    /// not given.
+    pub meter_sd: Number,
+    /// Whether the meter was checked in buffer after a surprising reading.
+    pub meter_checked: Flag,
+}
+
+/// Error of a calibrated meter, cooled sample. Source: assumed, as for
+/// `statistics::learning::CAREFUL_READING`.
+pub const METER_SD: f64 = 0.03;
+
+impl TryFrom<NewMashCheckBody> for NewMashCheck {
+    type Error = Error;
+
+    fn try_from(body: NewMashCheckBody) -> Result<Self, Error> {
+        let mut problems = Problems::new();
+        let stage = if body.stage.trim().is_empty() {
+            Some(Stage::Mash)
+        } else {
+            problems.choice("stage", &body.stage, Stage::from_key)
+        };
+        let minute = if stage == Some(Stage::Mash) || !body.minute.is_missing() {
+            problems.quantity("minute", &body.minute, |value| {
+                Minutes::new(value)
+                    .map_err(|_| "Enter the minutes since strike, 0 or more".to_owned())
+            })
+        } else {
+            Some(Minutes::constant(0.0))
+        };
+        let ph = problems.quantity("ph", &body.ph, |value| {
+            if (2.0..=10.0).contains(&value) {
+                Ok(Ph::clamped(value))
+            } else {
+                Err("A mash reads between pH 2 and 10. Read it again")
+            }
+        });
+        let sample = problems.quantity("sample_c", &body.sample_c, |value| {
+            if (0.0..=100.0).contains(&value) {
+                Ok(Celsius::clamped(value))
+            } else {
+                Err("Enter 0 to 100 °C")
+            }
+        });
+        let meter = problems.optional_text("meter", &body.meter, 80);
+        let meter_sd = problems.optional_quantity("meter_sd", &body.meter_sd, |value| {
+            if (0.001..=1.0).contains(&value) {
+                Ok(PhShift::clamped(value))
+            } else {
+                Err("Enter 0.001 to 1")
+            }
+        });
+        problems.finish()?;
+        match (stage, minute, ph, sample) {
+            (Some(stage), Some(minute), Some(ph), Some(sample)) => Ok(Self {
+                stage,
+                minute,
+                ph,
+                sample,
+                meter: meter.unwrap_or_default(),
+                meter_sd: meter_sd.unwrap_or(PhShift::constant(METER_SD)),
+                meter_checked: body.meter_checked.0,
+            }),
+            _ => Err(Error::field("", "Fill in every field.")),
+        }
+    }
+}
+
+/// How a batch is closed.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct ClosingBody {
+    /// The mash check that counts; the first good one when not given.
+    pub mash_check_id: String,
+    /// Whether it counts for learning; yes when not given.
+    pub counts: Option<Flag>,
+    /// What else should be known.
+    pub note: String,
+}
+
+impl TryFrom<ClosingBody> for Closing {
+    type Error = Error;
+
+    fn try_from(body: ClosingBody) -> Result<Self, Error> {
+        let mut problems = Problems::new();
+        let mash_check_id = if body.mash_check_id.is_empty() {
+            None
+        } else {
+            problems.choice("mash_check_id", &body.mash_check_id, |key| {
+                key.parse::<MashCheckId>().ok()
+            })
+        };
+        let note = problems.optional_text("note", &body.note, 2000);
+        problems.finish()?;
+        Ok(Self {
+            mash_check_id,
+            counts: body.counts.is_none_or(|counts| counts.0),
+            note,
+        })
+    }
+}
+
+/// Water, grist, volumes, shelf and spec; and a treatment to try, if you like.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct PreviewInputBody {
+    /// What to compute from.
+    #[serde(flatten)]
+    pub inputs: InputsBody,
+    /// Shares and doses to try.
+    pub treatment: Option<TreatmentBody>,
+}
