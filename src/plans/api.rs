@@ -7,8 +7,13 @@ use serde::{Deserialize, Serialize};
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
-use super::answers::{DoseBody, ListingBody, MashCheckBody, OutcomeBody, PlanBody, PreviewBody, ShownBody, WayBody};
-use super::asked::{ClosingBody, NewMashCheckBody, NewPlanBody, PreviewInputBody, ReasonBody, TreatmentBody, WeighedBody};
+use super::answers::{
+    DoseBody, ListingBody, MashCheckBody, OutcomeBody, PlanBody, PreviewBody, ShownBody, WayBody,
+};
+use super::asked::{
+    ClosingBody, NewMashCheckBody, NewPlanBody, PreviewInputBody, ReasonBody, TreatmentBody,
+    WeighedBody,
+};
 use super::bodies::InputsBody;
 use super::inputs::Inputs;
 use super::operations::{self, Treatment};

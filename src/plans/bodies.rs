@@ -591,9 +591,8 @@ impl MaltBody {
                 lactic,
             },
             ([a1, a2, a3], None) => {
-                let mut read = |number: &Number| {
-                    problems.quantity("coefficients", number, Ok::<_, String>)
-                };
+                let mut read =
+                    |number: &Number| problems.quantity("coefficients", number, Ok::<_, String>);
                 let coefficients = [read(a1)?, read(a2)?, read(a3)?];
                 let relative_sd = RelativeSd::clamped(own_buffering_sd);
                 match Taylor::new(ph, coefficients, relative_sd) {

@@ -82,7 +82,8 @@ pub fn router(app: App) -> Router {
         .merge(crate::plans::pages::routes())
         .merge(crate::sources::pages::routes())
         .merge(help::routes())
-        .fallback(problem::no_such_page)
+        .fallback(problem::no_such_page);
+    let pages = guarded(pages)
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))
         .layer(from_fn_with_state(app.clone(), problem::page_layer))
@@ -98,8 +99,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::sources::api::routes())
         .merge(crate::malts::api::routes())
         .split_for_parts();
-    let api = api
-        .fallback(problem::no_such_endpoint)
+    let api = guarded(api.fallback(problem::no_such_endpoint))
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .layer(from_fn_with_state(app.clone(), session::token_layer))
         .layer(from_fn(problem::api_layer));
@@ -109,9 +109,6 @@ pub fn router(app: App) -> Router {
         .merge(pages)
         .merge(api::reading_room(description))
         .merge(assets::routes())
-        .layer(CatchPanicLayer::custom(problem::panicked))
-        .layer(TimeoutLayer::with_status_code(StatusCode::SERVICE_UNAVAILABLE, Duration::from_secs(30)))
-        .layer(RequestBodyLimitLayer::new(BODY_LIMIT))
         .layer(CompressionLayer::new())
         .layer(SetResponseHeaderLayer::if_not_present(
             header::CONTENT_SECURITY_POLICY,
@@ -135,4 +132,16 @@ pub fn router(app: App) -> Router {
         .layer(PropagateRequestIdLayer::x_request_id())
         .layer(SetRequestIdLayer::x_request_id(MakeRequestUuid))
         .with_state(app)
+}
+
+/// What keeps one request from harming the others. It stands inside the layers that turn
+/// refusals into problem+json or a page, so that its answers are explained as well.
+fn guarded(router: Router<App>) -> Router<App> {
+    router
+        .layer(CatchPanicLayer::custom(problem::panicked))
+        .layer(TimeoutLayer::with_status_code(
+            StatusCode::SERVICE_UNAVAILABLE,
+            Duration::from_secs(30),
+        ))
+        .layer(RequestBodyLimitLayer::new(BODY_LIMIT))
 }

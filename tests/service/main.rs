@@ -12,6 +12,7 @@ mod desk;
 mod help;
 mod malts;
 mod people;
+mod plans;
 mod shelf;
 mod source_pages;
 mod sources;
