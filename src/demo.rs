@@ -25,8 +25,10 @@ use crate::malts;
 use crate::people::operations::{self as people, NewAccount};
 use crate::people::passwords::Passwords;
 use crate::people::{Member, Role};
+use crate::plans::closing::{self, Closing};
+use crate::plans::decisions;
 use crate::plans::mash_checks::{self, NewMashCheck};
-use crate::plans::operations::{self as plans, Closing, NewPlan};
+use crate::plans::operations::{self as plans, NewPlan};
 use crate::plans::{Plan, Stage, compute, weigh_out};
 use crate::shelf;
 use crate::sources::water_tests::operations as water_tests;
@@ -572,10 +574,10 @@ async fn fill_plans(
             Way::ClosestToPreferred,
         )
         .await?;
-        let plan = plans::approve(db, by, plan.id, None, None).await?;
+        let plan = decisions::approve(db, by, plan.id, None, None).await?;
         let plan = weighed(db, by, plan, usize::MAX).await?;
         read(db, by, &plan, -0.045 + chance.about(0.035)).await?;
-        plans::close(
+        closing::close(
             db,
             by,
             plan.id,
@@ -597,16 +599,16 @@ async fn fill_plans(
         way(1),
     )
     .await?;
-    plans::withdraw(db, by, given_up.id, None, "The cold store was full.".into()).await?;
+    decisions::withdraw(db, by, given_up.id, None, "The cold store was full.".into()).await?;
 
     let dosed = drafted(db, by, "26-125".into(), beers[4], today, way(0)).await?;
-    let dosed = plans::approve(db, by, dosed.id, None, None).await?;
+    let dosed = decisions::approve(db, by, dosed.id, None, None).await?;
     weighed(db, by, dosed, usize::MAX).await?;
 
     let begun = drafted(db, by, "26-126".into(), beers[0], today, way(0)).await?;
-    let begun = plans::approve(db, by, begun.id, None, None).await?;
-    let revised = plans::revise(db, by, begun.id).await?;
-    let revised = plans::approve(
+    let begun = decisions::approve(db, by, begun.id, None, None).await?;
+    let revised = decisions::revise(db, by, begun.id).await?;
+    let revised = decisions::approve(
         db,
         by,
         revised.id,
@@ -625,7 +627,7 @@ async fn fill_plans(
         way(1),
     )
     .await?;
-    plans::approve(db, by, ready.id, None, None).await?;
+    decisions::approve(db, by, ready.id, None, None).await?;
     drafted(
         db,
         by,

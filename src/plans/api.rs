@@ -18,7 +18,7 @@ use super::bodies::InputsBody;
 use super::inputs::Inputs;
 use super::operations::{self, Treatment};
 use super::store::Filter;
-use super::{State as PlanState, compute, mash_checks, weigh_out};
+use super::{State as PlanState, closing, compute, decisions, mash_checks, weigh_out};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{DoseId, MashCheckId, PlanId};
@@ -222,7 +222,7 @@ async fn approve(
     headers: HeaderMap,
     Json(body): Json<ReasonBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let plan = operations::approve(&db, &by, id, if_match(&headers)?, body.optional()?).await?;
+    let plan = decisions::approve(&db, &by, id, if_match(&headers)?, body.optional()?).await?;
     Ok((
         StatusCode::CREATED,
         tagged(plan.version, PlanBody::from(&plan)),
@@ -243,7 +243,7 @@ async fn take_back_approval(
     At(id): At<PlanId>,
     headers: HeaderMap,
 ) -> Result<impl IntoResponse, Error> {
-    let plan = operations::take_back_approval(&db, &by, id, if_match(&headers)?).await?;
+    let plan = decisions::take_back_approval(&db, &by, id, if_match(&headers)?).await?;
     Ok(tagged(plan.version, PlanBody::from(&plan)))
 }
 
@@ -265,7 +265,7 @@ async fn withdraw(
     Json(body): Json<ReasonBody>,
 ) -> Result<impl IntoResponse, Error> {
     by.may(Permission::DraftPlans)?;
-    let plan = operations::withdraw(&db, &by, id, if_match(&headers)?, body.needed()?).await?;
+    let plan = decisions::withdraw(&db, &by, id, if_match(&headers)?, body.needed()?).await?;
     Ok((
         StatusCode::CREATED,
         tagged(plan.version, PlanBody::from(&plan)),
@@ -285,7 +285,7 @@ async fn revise(
     by: Member,
     At(id): At<PlanId>,
 ) -> Result<impl IntoResponse, Error> {
-    let plan = operations::revise(&db, &by, id).await?;
+    let plan = decisions::revise(&db, &by, id).await?;
     let at = [(header::LOCATION, format!("/api/v1/plans/{}", plan.id))];
     Ok((
         StatusCode::CREATED,
@@ -312,7 +312,7 @@ async fn close(
     Json(body): Json<ClosingBody>,
 ) -> Result<impl IntoResponse, Error> {
     by.may(Permission::BrewBatches)?;
-    let plan = operations::close(&db, &by, id, if_match(&headers)?, body.try_into()?).await?;
+    let plan = closing::close(&db, &by, id, if_match(&headers)?, body.try_into()?).await?;
     Ok((
         StatusCode::CREATED,
         tagged(plan.version, PlanBody::from(&plan)),

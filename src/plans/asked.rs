@@ -8,8 +8,9 @@ use serde::{Deserialize, Serialize};
 
 use super::Stage;
 use super::bodies::InputsBody;
+use super::closing::Closing;
 use super::mash_checks::NewMashCheck;
-use super::operations::{Closing, NewPlan, SourceChoice, Treatment};
+use super::operations::{NewPlan, SourceChoice, Treatment};
 use crate::error::Error;
 use crate::id::{BeerId, MashCheckId};
 use crate::input::{Flag, Number, Problems};

@@ -6,7 +6,7 @@
 //! The brewer weighs out the [`Dose`]s, reads the mash ([`MashCheck`]) and closes the
 //! batch with an [`Outcome`]; closed batches teach the next prediction ([`learning`]).
 //!
-//! Read [`operations`] for the rules, [`inputs`] for what is frozen, [`compute`] for
+//! Read [`operations`] for the rules and the files it names, [`inputs`] for what is frozen, [`compute`] for
 //! how a treatment is worked out.
 
 use chemistry::material::Vessel;
@@ -20,7 +20,9 @@ pub mod api;
 pub mod asked;
 pub mod bodies;
 pub mod brew_day;
+pub mod closing;
 pub mod compute;
+pub mod decisions;
 pub mod gather;
 pub mod inputs;
 pub mod learning;

@@ -11,8 +11,10 @@ use chemistry::plan::{Outcome, Way};
 
 use super::asked::{ClosingBody, NewPlanBody, TreatmentBody};
 use super::bodies::InputsBody;
+use super::closing::{self, Closing};
+use super::decisions;
 use super::inputs::Inputs;
-use super::operations::{self, Closing, NewPlan, Treatment};
+use super::operations::{self, NewPlan, Treatment};
 use super::sheet::{self, DoseRow, Facts, Group, WayCard, consequences};
 use super::store::{Filter, Listing, Order};
 use super::{MashCheck, Plan, State as PlanState, mash_checks, words};
@@ -448,7 +450,7 @@ async fn show_page(
         .await;
     let units = page.settings.units;
     let zone = page.settings.time_zone.clone();
-    let lesson = operations::lesson(db, &framer.member, &plan).await?;
+    let lesson = closing::lesson(db, &framer.member, &plan).await?;
     let checks = mash_checks::list(db, &framer.member, id).await?;
     let history =
         record::operations::of_subject(db, &framer.member, "plan", &id.to_string(), 20).await?;
@@ -744,7 +746,7 @@ async fn approve(
         let mut problems = Problems::new();
         let reason = problems.optional_text("reason", typed.value("reason"), 500);
         problems.finish()?;
-        operations::approve(&db, &framer.member, id, version(&typed), reason).await
+        decisions::approve(&db, &framer.member, id, version(&typed), reason).await
     };
     let approved = approved.await;
     answer(&db, &framer, id, typed, approved, |plan| {
@@ -759,7 +761,7 @@ async fn take_back_approval(
     At(id): At<PlanId>,
     typed: Form,
 ) -> Result<Response, Error> {
-    let taken = operations::take_back_approval(&db, &framer.member, id, version(&typed)).await;
+    let taken = decisions::take_back_approval(&db, &framer.member, id, version(&typed)).await;
     answer(&db, &framer, id, typed, taken, |plan| {
         format!("/plans/{}?done=unapproved", plan.id)
     })
@@ -776,7 +778,7 @@ async fn withdraw(
         let mut problems = Problems::new();
         let reason = problems.text("withdrawal_reason", typed.value("withdrawal_reason"), 500);
         problems.finish()?;
-        operations::withdraw(
+        decisions::withdraw(
             &db,
             &framer.member,
             id,
@@ -798,7 +800,7 @@ async fn revise(
     At(id): At<PlanId>,
     typed: Form,
 ) -> Result<Response, Error> {
-    let revised = operations::revise(&db, &framer.member, id).await;
+    let revised = decisions::revise(&db, &framer.member, id).await;
     answer(&db, &framer, id, typed, revised, |plan| {
         format!("/plans/{}?done=revised", plan.id)
     })
@@ -876,7 +878,7 @@ async fn close(
     let closed = async {
         let mut body: ClosingBody = typed.body()?;
         body.counts.get_or_insert_default();
-        operations::close(
+        closing::close(
             &db,
             &framer.member,
             id,
