@@ -20,6 +20,7 @@ use crate::id::BeerId;
 use crate::input::Number;
 use crate::malts::{self, Malt};
 use crate::people::Permission;
+use crate::plans::{self, pages::ListRow};
 use crate::web::App;
 use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
@@ -178,6 +179,8 @@ struct ShowPage {
     mash_ph_window: String,
     spec: Vec<SpecLine>,
     limits: Vec<(&'static str, String)>,
+    may_draft: bool,
+    plans: Vec<ListRow>,
 }
 
 struct GristShown {
@@ -210,6 +213,8 @@ async fn show(State(db): State<Db>, framer: Framer, At(id): At<BeerId>) -> Resul
     let spec = &beer.spec;
     Ok(ShowPage {
         may_change: page.can(Permission::KeepBeers),
+        may_draft: page.can(Permission::DraftPlans) && beer.in_use,
+        plans: plans::pages::of_beer(&db, &framer.member, id).await?,
         batch: units.show(Measure::Batch, beer.volumes.batch_l.get()),
         mash: volume(beer.volumes.mash_l.get()),
         sparge: volume(beer.volumes.sparge_l.get()),

@@ -24,7 +24,7 @@ use crate::db::Db;
 use crate::error::Error;
 use crate::id::{BeerId, MashCheckId, PlanId};
 use crate::input::Problems;
-use crate::people::Permission;
+use crate::people::{Member, Permission};
 use crate::record;
 use crate::record::pages::Line;
 use crate::sources;
@@ -80,11 +80,16 @@ struct SortHead {
     direction: &'static str,
 }
 
-pub(super) struct ListRow {
-    pub(super) plan: Listing,
-    pub(super) predicted: String,
-    pub(super) measured: String,
-    pub(super) weighed: String,
+/// A plan as lists show it, in words.
+pub struct ListRow {
+    /// The plan.
+    pub plan: Listing,
+    /// The prediction of its approval.
+    pub predicted: String,
+    /// The reading that counts.
+    pub measured: String,
+    /// How many lines are in, of how many.
+    pub weighed: String,
 }
 
 impl From<Listing> for ListRow {
@@ -896,13 +901,14 @@ async fn close(
     }
 }
 
-/// The plans of one beer, for its page.
-pub async fn of_beer(db: &Db, framer: &Framer, beer: BeerId) -> Result<Vec<Listing>, Error> {
+/// The latest plans of one beer, for its page.
+pub async fn of_beer(db: &Db, by: &Member, beer: BeerId) -> Result<Vec<ListRow>, Error> {
     let filter = Filter {
         beer: Some(beer),
         ..Filter::default()
     };
-    operations::list(db, &framer.member, &filter, Order::Latest, 0, 10).await
+    let found = operations::list(db, by, &filter, Order::Latest, 0, 10).await?;
+    Ok(found.into_iter().map(Into::into).collect())
 }
 
 /// Where a check's page returns to.
