@@ -8,6 +8,8 @@
 )]
 
 mod beers;
+mod brew_day;
+mod brewhouse;
 mod desk;
 mod help;
 mod malts;

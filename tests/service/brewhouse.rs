@@ -1,0 +1,164 @@
+//! A small brewery to plan and brew in: one hard source, four materials, one malt, one
+//! beer.
+
+use serde_json::{Value, json};
+
+use crate::desk::{Answer, Desk, Program};
+
+/// A water whose ions balance: 96/20.039 + 11/12.1525 + 28/22.99 + 3.5/39.098 = 7.00 meq/L
+/// of cations, 215/50.043 + 62/48.028 + 38/35.45 + 22/62.004 = 7.01 of anions (by hand).
+pub fn hard_water() -> Value {
+    json!({
+        "sampled_on": "2026-11-02", "laboratory": "Fen Analytical",
+        "readings": [
+            {"analyte": "calcium", "value": "96", "unit": "mg_per_l"},
+            {"analyte": "magnesium", "value": "11", "unit": "mg_per_l"},
+            {"analyte": "sodium", "value": "28", "unit": "mg_per_l"},
+            {"analyte": "potassium", "value": "3.5", "unit": "mg_per_l"},
+            {"analyte": "alkalinity", "value": "215", "unit": "mg_per_l_as_caco3"},
+            {"analyte": "sulfate", "value": "62", "unit": "mg_per_l"},
+            {"analyte": "chloride", "value": "38", "unit": "mg_per_l"},
+            {"analyte": "nitrate", "value": "22", "unit": "mg_per_l"},
+            {"analyte": "ph", "value": "7.4", "unit": "ph"},
+        ],
+    })
+}
+
+/// A brewery with one hard source, three materials, one malt and one beer.
+pub struct Brewhouse {
+    pub desk: Desk,
+    pub manager: Program,
+    pub beer: String,
+    pub source: String,
+}
+
+pub fn made(answer: &Answer) -> String {
+    assert_eq!(answer.status, 201, "{:?}", answer.body);
+    answer.body["id"].as_str().unwrap().to_owned()
+}
+
+impl Brewhouse {
+    pub async fn build() -> Self {
+        Self::on(hard_water()).await
+    }
+
+    pub async fn on(water: Value) -> Self {
+        let desk = Desk::start().await;
+        let manager = desk.full_program("manager").await;
+        let source = json!({"name": "Town mains", "kind": "mains", "days_between_tests": 90, "price_per_m3": 2.4});
+        let source = made(&manager.post("/sources", &source).await);
+        made(
+            &manager
+                .post(&format!("/sources/{source}/water-tests"), &water)
+                .await,
+        );
+        for (name, substance, step, vessels) in [
+            (
+                "Gypsum",
+                "gypsum",
+                1,
+                json!({"liquor_tank": true, "mash": true}),
+            ),
+            (
+                "Calcium chloride",
+                "calcium_chloride_dihydrate",
+                1,
+                json!({"liquor_tank": true, "mash": true}),
+            ),
+            (
+                "Baking soda",
+                "sodium_bicarbonate",
+                1,
+                json!({"mash": true}),
+            ),
+            (
+                "Lactic acid",
+                "lactic_acid",
+                5,
+                json!({"mash": true, "sparge_liquor": true}),
+            ),
+        ] {
+            let material = json!({"name": name, "substance": substance, "scale_step_g_or_ml": step, "vessels": vessels, "in_use": true});
+            made(&manager.post("/materials", &material).await);
+        }
+        let malt = json!({"name": "Pale malt", "class": "pale_ale", "colour": 6, "colour_unit": "ebc", "in_use": true});
+        let malt = made(&manager.post("/malts", &malt).await);
+        let beer = json!({
+            "name": "Sluice Pale", "batch_l": 2000, "mash_l": 1200, "sparge_l": 1500, "in_use": true,
+            "grist": [{"malt_id": malt, "kilograms": 400}],
+            "spec": {
+                "calcium_mg_per_l": {"low": 60, "preferred": 100, "high": 180, "priority": "high"},
+                "sulfate_mg_per_l": {"low": 60, "high": 250},
+                "chloride_mg_per_l": {"low": 30, "high": 150},
+                "mash_ph": {"low": 5.3, "target": 5.4, "high": 5.5},
+                "sparge_alkalinity_mg_per_l_as_caco3": {"high": 80},
+                "highest_lactate_mg_per_l": 500,
+            },
+        });
+        let beer = made(&manager.post("/beers", &beer).await);
+        Self {
+            desk,
+            manager,
+            beer,
+            source,
+        }
+    }
+
+    pub fn order(&self, batch: &str) -> Value {
+        json!({"batch": batch, "beer_id": self.beer, "brewed_on": "2026-12-02", "way": "fewest_additions"})
+    }
+
+    pub async fn draft(&self, batch: &str) -> String {
+        made(&self.manager.post("/plans", &self.order(batch)).await)
+    }
+
+    pub async fn approved(&self, batch: &str) -> String {
+        let id = self.draft(batch).await;
+        let answer = self
+            .manager
+            .post(&format!("/plans/{id}/approval"), &json!({}))
+            .await;
+        assert_eq!(answer.status, 201, "{:?}", answer.body);
+        id
+    }
+
+    pub async fn dosed(&self, batch: &str) -> String {
+        let id = self.approved(batch).await;
+        for dose in self.doses(&id).await {
+            let path = format!("/plans/{id}/doses/{}", dose["id"].as_str().unwrap());
+            let answer = self
+                .manager
+                .put(&path, &json!({"actual": dose["planned"], "lot": "A1"}))
+                .await;
+            assert_eq!(answer.status, 200, "{:?}", answer.body);
+        }
+        id
+    }
+
+    pub async fn plan(&self, id: &str) -> Value {
+        let answer = self.manager.get(&format!("/plans/{id}")).await;
+        assert_eq!(answer.status, 200, "{:?}", answer.body);
+        answer.body
+    }
+
+    pub async fn doses(&self, id: &str) -> Vec<Value> {
+        self.manager
+            .get(&format!("/plans/{id}/doses"))
+            .await
+            .body
+            .as_array()
+            .unwrap()
+            .clone()
+    }
+
+    pub async fn read(&self, id: &str, ph: f64, minute: f64) -> Answer {
+        let body = json!({"ph": ph, "minute": minute, "sample_c": 20, "meter": "Bench"});
+        self.manager
+            .post(&format!("/plans/{id}/mash-checks"), &body)
+            .await
+    }
+}
+
+pub fn expected_ph(plan: &Value) -> f64 {
+    plan["does"]["mash_ph"]["ph"].as_f64().unwrap()
+}
