@@ -18,6 +18,7 @@ impl From<PlanError> for Error {
             PlanError::NoGrist => "grist",
             PlanError::UpsideDown(_) => "spec",
             PlanError::NotOnShelf(_) => "doses",
+            PlanError::TooManyAdditions(_) => "shelf",
             PlanError::Unsettled => "",
         };
         Self::field(field, error.to_string())

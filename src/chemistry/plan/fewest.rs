@@ -6,17 +6,22 @@
 //! additions than the best found. Only sets that satisfy every clause so far are
 //! solved.
 
+use crate::material::{Substance, Vessel};
+
 use super::PlanError;
 use super::model::{Allowed, Model};
 use super::order::{Chosen, Frozen, closest};
+use super::problem::MOST_ADDITIONS;
 use super::program::NoAnswer;
 
 /// An addition that would have to reach a million g or mL per litre to weaken a proof
 /// does not help.
 const NO_HELP: f64 = 1e-6;
 
-/// A set of additions, one bit each: no shelf has 128 places.
+/// A set of additions, one bit each; a problem with more than these is refused.
 type Set = u128;
+
+const _: () = assert!(MOST_ADDITIONS <= Set::BITS as usize);
 
 struct Search<'a> {
     model: &'a Model,
@@ -109,6 +114,7 @@ impl Search<'_> {
                     by: f64::from(taken.count_ones()),
                     distance: answer.value,
                     columns: answer.columns,
+                    places: self.places_of(taken),
                 };
                 if self.best.as_ref().is_none_or(|best| chosen.beats(best)) {
                     self.best = Some(chosen);
@@ -130,6 +136,17 @@ impl Search<'_> {
             }
             Err(NoAnswer::Unsettled) => Err(PlanError::Unsettled),
         }
+    }
+}
+
+impl Search<'_> {
+    fn places_of(&self, taken: Set) -> Vec<(Vessel, Substance)> {
+        let mut found: Vec<(Vessel, Substance)> = places(taken)
+            .map(|place| self.model.additions[place as usize])
+            .map(|addition| (addition.vessel, addition.substance))
+            .collect();
+        found.sort_unstable();
+        found
     }
 }
 

@@ -7,7 +7,7 @@
 
 use crate::ion::Ion;
 use crate::mash::Demand;
-use crate::material::{Contribution, Role, Vessel};
+use crate::material::{Contribution, Role, Substance, Vessel};
 use crate::quantity::{
     DoseAmount, Fraction, MG_CACO3_PER_MEQ, MassRatio, MgPerL, MgPerLAsCaCO3, Ph,
 };
@@ -43,6 +43,7 @@ pub(super) const HAIR: f64 = 1e-6;
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub(super) struct Addition {
     pub(super) material: usize,
+    pub(super) substance: Substance,
     pub(super) vessel: Vessel,
 }
 
@@ -332,7 +333,11 @@ impl<'a> Builder<'a> {
             }
             for vessel in Vessel::ALL {
                 if item.vessels.contains(&vessel) && (sparged || vessel != Vessel::SpargeLiquor) {
-                    additions.push(Addition { material, vessel });
+                    additions.push(Addition {
+                        material,
+                        substance: item.material.substance(),
+                        vessel,
+                    });
                 }
             }
         }

@@ -1,5 +1,8 @@
 //! The strict order: each step is solved with the earlier ones held at their optimum.
 
+use std::cmp::Ordering;
+
+use crate::material::{Substance, Vessel};
 use crate::quantity::{Meq, Score};
 
 use super::fewest;
@@ -193,6 +196,10 @@ pub(super) fn settled(ended: Result<Answer, NoAnswer>) -> Result<Answer, PlanErr
     ended.map_err(|_| PlanError::Unsettled)
 }
 
+/// Two choices that differ by less than this, relative, are equals: a little above the
+/// solver's noise.
+const EQUALS: f64 = 1e-8;
+
 /// The optimum in one way.
 pub(super) struct Chosen {
     pub(super) columns: Vec<f64>,
@@ -200,13 +207,25 @@ pub(super) struct Chosen {
     pub(super) by: f64,
     /// Distance to what is preferred.
     pub(super) distance: f64,
+    /// Where and what, where that had to be chosen from a list: between equals the earlier
+    /// vessel is taken, then the earlier substance, whatever the order of the shelf.
+    pub(super) places: Vec<(Vessel, Substance)>,
 }
 
 impl Chosen {
     /// Whether this one is to be taken rather than another.
     pub(super) fn beats(&self, other: &Self) -> bool {
-        let margin = HAIR * (1.0 + other.by.abs());
-        self.by < other.by - margin || self.by < other.by + margin && self.distance < other.distance
+        let order = |a: f64, b: f64| {
+            if (a - b).abs() <= EQUALS * (1.0 + b.abs()) {
+                Ordering::Equal
+            } else {
+                a.total_cmp(&b)
+            }
+        };
+        order(self.by, other.by)
+            .then(order(self.distance, other.distance))
+            .then(self.places.cmp(&other.places))
+            .is_lt()
     }
 
     pub(super) fn reached(&self, model: &Model, frozen: &Frozen) -> Reached {
@@ -279,6 +298,7 @@ fn in_way(
             distance: answer.value,
             columns: answer.columns,
             by,
+            places: Vec::new(),
         })),
         Err(NoAnswer::Infeasible { .. }) if linear.is_none() => Ok(None),
         Err(_) => Err(PlanError::Unsettled),

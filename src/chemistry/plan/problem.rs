@@ -207,12 +207,20 @@ pub enum PlanError {
     /// A dose of something that is not on the shelf.
     #[error("A dose names material {0}, which is not on the shelf of this plan.")]
     NotOnShelf(usize),
+    /// More materials and vessels than a plan can choose among.
+    #[error(
+        "A plan can choose among 128 additions, a material in one vessel each, and {0} are offered: leave out lots or vessels."
+    )]
+    TooManyAdditions(usize),
     /// The numbers are too far apart for the solver to settle.
     #[error(
         "No plan could be computed from these figures: look for an amount, a volume or a limit that is out of proportion."
     )]
     Unsettled,
 }
+
+/// As many as the search for the fewest additions has places for.
+pub(super) const MOST_ADDITIONS: usize = 128;
 
 impl Problem {
     /// Refuses what cannot be planned or evaluated.
@@ -233,6 +241,10 @@ impl Problem {
             if source.lowest.get() > source.highest.get() {
                 return Err(PlanError::LimitUpsideDown(Limit::LowestShare(index)));
             }
+        }
+        let additions = self.shelf.iter().map(|item| item.vessels.len()).sum();
+        if additions > MOST_ADDITIONS {
+            return Err(PlanError::TooManyAdditions(additions));
         }
         let upside_down = |low: Option<f64>, high: Option<f64>| matches!((low, high), (Some(low), Some(high)) if low > high);
         for (requirement, low, high) in self.spec.bounds() {

@@ -304,6 +304,10 @@ fn what_makes_no_sense_is_refused_with_a_reason() {
     problem.spec.ions[Ion::Calcium] = window(90.0, 50.0, Priority::Low);
     let upside_down = PlanError::UpsideDown(Requirement::Ion(Ion::Calcium));
     assert_eq!(solve(&problem, Way::Cheapest), Err(upside_down));
+    let mut problem = bare();
+    problem.shelf = vec![item(Substance::EpsomSalt, &Vessel::ALL); 33];
+    let too_many = PlanError::TooManyAdditions(132);
+    assert_eq!(solve(&problem, Way::FewestAdditions), Err(too_many));
     assert_eq!(
         evaluate(&bare(), &[Fraction::constant(0.9)], &[]),
         Err(PlanError::Shares)
