@@ -2,7 +2,7 @@
 //! interval, where the doubt comes from, amounts per vessel, the four ways.
 
 use chemistry::ion::Ion;
-use chemistry::material::Vessel;
+use chemistry::material::{SAFETY_DATA_SHEET, Vessel};
 use chemistry::plan::{Ending, Finding, Measure, Outcome, Requirement, Way, Window};
 use chemistry::put_right::Aim;
 use chemistry::quantity::{Fraction, MgPerL};
@@ -282,9 +282,7 @@ fn bar(
     };
     let standing = words::standing(finding.standing);
     let after_words = match sd.filter(|sd| *sd > 0.0) {
-        Some(sd) => {
-            format!("{} ± {unit}", figure(after)).replace('±', &format!("± {}", figure(sd)))
-        }
+        Some(sd) => format!("{} ± {} {unit}", figure(after), format::doubt(sd)),
         None => with_unit(after),
     };
     WindowBar {
@@ -706,17 +704,23 @@ pub(super) fn learned(
     Ok((!said.is_empty()).then_some(LearnedWords { words: said }))
 }
 
-/// What can hurt about the materials of a plan, each once.
+/// What can hurt about the materials of a plan: those with the same cautions together,
+/// without the line that all of them end with.
 pub(super) fn cautions(plan: &Plan) -> Vec<(String, Vec<&'static str>)> {
-    let mut told: Vec<(String, Vec<&'static str>)> = Vec::new();
+    let mut told: Vec<(Vec<&str>, Vec<&'static str>)> = Vec::new();
     for dose in &plan.doses {
         let Some(item) = plan.inputs.problem.shelf.get(dose.material) else {
             continue;
         };
-        let cautions = item.material.substance().cautions();
-        if !cautions.is_empty() && !told.iter().any(|(name, _)| *name == item.name) {
-            told.push((item.name.clone(), cautions));
+        let mut cautions = item.material.substance().cautions();
+        cautions.retain(|caution| *caution != SAFETY_DATA_SHEET);
+        match told.iter_mut().find(|(_, same)| *same == cautions) {
+            Some((names, _)) if names.contains(&item.name.as_str()) => {}
+            Some((names, _)) => names.push(&item.name),
+            None => told.push((vec![&item.name], cautions)),
         }
     }
-    told
+    told.into_iter()
+        .map(|(names, cautions)| (names.join(", "), cautions))
+        .collect()
 }

@@ -8,7 +8,9 @@ const NEVER_WITH_HYPOCHLORITE: &str =
     "Never let acid meet hypochlorite or a chlorinated cleaner: chlorine gas forms.";
 const NEVER_WITH_SULFITE: &str = "Never let acid meet sulfite: sulfur dioxide forms.";
 const FOOD_GRADE: &str = "Food grade only.";
-const SAFETY_DATA_SHEET: &str = "Follow the safety data sheet, local codes and licensed practice.";
+/// What every list of cautions ends with.
+pub const SAFETY_DATA_SHEET: &str =
+    "Follow the safety data sheet, local codes and licensed practice.";
 const LIME_BURNS: &str =
     "Lime burns eyes and skin and its dust hurts to breathe: goggles, gloves, apron, no draught.";
 const LIME_INTO_WATER: &str = "Stir lime into water, keep it away from acid.";

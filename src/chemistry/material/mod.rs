@@ -10,6 +10,7 @@ mod cautions;
 mod contribution;
 mod substance;
 
+pub use cautions::SAFETY_DATA_SHEET;
 pub use contribution::{Contribution, DoseUnit};
 pub(crate) use contribution::{PROTOLYTES, protons_kept};
 pub use substance::{Form, Role, Substance, Vessel};
