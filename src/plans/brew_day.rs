@@ -117,6 +117,7 @@ struct WeighOutPage {
     open: bool,
     may_brew: bool,
     actual_field: String,
+    lot_field: String,
 }
 
 fn line(plan: &Plan, dose: &Dose, units: Units, time_zone: &str) -> Line {
@@ -206,9 +207,17 @@ async fn weigh_out_page_of(
             .unwrap_or_default(),
         typed => typed.to_owned(),
     };
+    let lot = if typed.holds("lot") {
+        typed.value("lot").to_owned()
+    } else {
+        now.as_ref()
+            .map(|line| line.lot.clone())
+            .unwrap_or_default()
+    };
     Ok(WeighOutPage {
         may_brew: page.can(Permission::BrewBatches),
         actual_field: actual,
+        lot_field: lot,
         page,
         plan,
         typed,

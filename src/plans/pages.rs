@@ -409,11 +409,15 @@ fn local_fields(inputs: &Inputs, typed: &Form) -> Vec<(String, Measure)> {
 /// The treatment of a draft as its form begins: every material in every vessel it may go
 /// to, with the amount that is planned.
 fn treatment_form(plan: &Plan, units: Units) -> Form {
-    let mut typed = Form::empty().with("version", plan.version.to_string());
+    let mut typed = Form::empty()
+        .with("version", plan.version.to_string())
+        .with("batch", plan.batch.clone())
+        .with("brewed_on", plan.brewed_on.to_string());
     for (index, share) in plan.shares.iter().enumerate() {
         typed = typed.with(
             format!("shares_percent.{index}"),
-            format::decimals(share.get() * 100.0, 2),
+            // At most two decimals, none that say nothing.
+            ((share.get() * 10_000.0).round() / 100.0).to_string(),
         );
     }
     let mut index = 0;
@@ -460,11 +464,18 @@ async fn show_page(
     let history =
         record::operations::of_subject(db, &framer.member, "plan", &id.to_string(), 20).await?;
     let typed = match refused {
-        Some(typed) if typed.rows("doses") > 0 => typed,
+        Some(typed) if typed.rows("doses") > 0 => typed
+            .with("batch", plan.batch.clone())
+            .with("brewed_on", plan.brewed_on.to_string()),
         Some(typed) => {
-            let mut begun = treatment_form(&plan, units).with("reason", typed.value("reason"));
+            let mut begun = treatment_form(&plan, units);
+            for name in ["reason", "withdrawal_reason", "batch", "brewed_on"] {
+                if typed.holds(name) {
+                    begun = begun.with(name, typed.value(name));
+                }
+            }
             begun.problems.clone_from(&typed.problems);
-            begun.with("withdrawal_reason", typed.value("withdrawal_reason"))
+            begun
         }
         None => treatment_form(&plan, units),
     };

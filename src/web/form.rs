@@ -43,6 +43,11 @@ impl Form {
             .map_or("", |(_, value)| value.as_str())
     }
 
+    /// Whether a field was sent at all, even empty.
+    pub fn holds(&self, name: &str) -> bool {
+        self.fields.iter().any(|(field, _)| field == name)
+    }
+
     /// What was typed into a field of a row: `row("readings", 3, "value")`.
     pub fn row(&self, list: &str, index: &usize, name: &str) -> &str {
         self.value(&format!("{list}.{index}.{name}"))
