@@ -681,13 +681,19 @@ pub(super) fn learned(
                     "above"
                 }
             ));
-            let change = half(&without) - half(&with);
+            // Of the figures as they are printed, so that the sentence adds up.
+            let hundredths = |it: &Prediction| (half(it) * 100.0).round() / 100.0;
+            let change = hundredths(&without) - hundredths(&with);
+            let compared = if change.abs() < 0.005 {
+                "as wide".to_owned()
+            } else {
+                let which = if change < 0.0 { "wider" } else { "narrower" };
+                format!("{which} by {} pH", format::ph(change.abs()))
+            };
             said.push(format!(
-                "The 90 % interval is ± {} with what was learned and would be ± {} without: {} by {} pH, because readings stand in the place of what is assumed of the malts.",
+                "The 90 % interval is ± {} with what was learned and would be ± {} without: {compared}, because readings stand in the place of what is assumed of the malts.",
                 format::ph(half(&with)),
                 format::ph(half(&without)),
-                if change < 0.0 { "wider" } else { "narrower" },
-                format::ph(change.abs())
             ));
         }
     } else if lesson.outcomes > 0 {

@@ -9,37 +9,40 @@ use axum::routing::{get, post};
 use chemistry::material::Vessel;
 use chemistry::plan::{Outcome, Way};
 
-use super::asked::{ClosingBody, NewPlanBody, TreatmentBody};
-use super::bodies::InputsBody;
-use super::closing::{self, Closing};
-use super::decisions;
-use super::inputs::Inputs;
-use super::operations::{self, NewPlan, Treatment};
-use super::sheet::{self, DoseRow, Facts, Group, WayCard, consequences};
-use super::store::{Filter, Listing, Order};
-use super::{MashCheck, Plan, State as PlanState, mash_checks, words};
-use crate::beers;
 use crate::brewery::Units;
 use crate::db::Db;
 use crate::error::Error;
-use crate::id::{BeerId, MashCheckId, PlanId};
+use crate::id::{MashCheckId, PlanId};
 use crate::input::Problems;
-use crate::people::{Member, Permission};
+use crate::people::Permission;
+use crate::plans::asked::TreatmentBody;
+use crate::plans::bodies::InputsBody;
+use crate::plans::closing::lesson;
+use crate::plans::decisions;
+use crate::plans::inputs::Inputs;
+use crate::plans::operations::{self, Treatment};
+use crate::plans::sheet::{self, DoseRow, Facts, Group, WayCard, consequences};
+use crate::plans::{MashCheck, Plan, State as PlanState, mash_checks, words};
 use crate::record;
 use crate::record::pages::Line;
-use crate::sources;
 use crate::web::App;
 use crate::web::extract::At;
-use crate::web::form::{Choice, Form};
+use crate::web::form::Form;
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
 use crate::web::units::{Measure, shown_in, typed_in_si};
 
+mod closing;
+mod list;
+mod new;
+
+pub use list::{ListRow, of_beer};
+
 /// The pages.
 pub fn routes() -> Router<App> {
     Router::new()
-        .route("/plans", get(list))
-        .route("/plans/new", get(new).post(create))
+        .route("/plans", get(list::list))
+        .route("/plans/new", get(new::new).post(new::create))
         .route("/plans/{id}", get(show))
         .route("/plans/{id}/treatment", post(move_amounts))
         .route("/plans/{id}/consequences", post(show_consequences))
@@ -52,236 +55,11 @@ pub fn routes() -> Router<App> {
         .route("/plans/{id}/approval/taking-back", post(take_back_approval))
         .route("/plans/{id}/withdrawal", post(withdraw))
         .route("/plans/{id}/revisions", post(revise))
-        .route("/plans/{id}/closing", get(show_closing).post(close))
-        .merge(super::brew_day::routes())
-}
-
-/// Plans on one page of the list.
-const PAGE: i64 = 25;
-
-#[derive(Template, WebTemplate)]
-#[template(path = "plans/list.html")]
-struct ListPage {
-    page: Page,
-    rows: Vec<ListRow>,
-    asked: Form,
-    states: Vec<Choice>,
-    filtered: bool,
-    order: &'static str,
-    sorts: Vec<SortHead>,
-    earlier: Option<String>,
-    later: Option<String>,
-    words: String,
-}
-
-struct SortHead {
-    label: &'static str,
-    address: String,
-    direction: &'static str,
-}
-
-/// A plan as lists show it, in words.
-pub struct ListRow {
-    /// The plan.
-    pub plan: Listing,
-    /// The prediction of its approval.
-    pub predicted: String,
-    /// The reading that counts.
-    pub measured: String,
-    /// How many lines are in, of how many.
-    pub weighed: String,
-}
-
-impl From<Listing> for ListRow {
-    fn from(plan: Listing) -> Self {
-        Self {
-            predicted: plan.prediction.map_or_else(String::new, |it| {
-                format!(
-                    "{} ({} to {})",
-                    format::ph(it.ph.get()),
-                    format::ph(it.low.get()),
-                    format::ph(it.high.get())
-                )
-            }),
-            measured: plan
-                .outcome
-                .as_ref()
-                .and_then(|it| it.measured_ph)
-                .map_or_else(String::new, format::ph),
-            weighed: format!("{} of {}", plan.weighed, plan.doses),
-            plan,
-        }
-    }
-}
-
-async fn list(State(db): State<Db>, framer: Framer, asked: Form) -> Result<ListPage, Error> {
-    let filter = Filter {
-        state: PlanState::from_key(asked.value("state")),
-        beer: asked.value("beer_id").parse().ok(),
-        batch: Some(asked.value("batch").trim().to_owned()).filter(|batch| !batch.is_empty()),
-    };
-    let order = Order::ALL
-        .into_iter()
-        .find(|order| order.key() == asked.value("order"))
-        .unwrap_or_default();
-    let number = asked
-        .value("page")
-        .parse::<i64>()
-        .unwrap_or(1)
-        .clamp(1, 100_000);
-    let mut found = operations::list(
-        &db,
-        &framer.member,
-        &filter,
-        order,
-        (number - 1) * PAGE,
-        PAGE + 1,
-    )
-    .await?;
-    let more = found.len() > usize::try_from(PAGE).unwrap_or(usize::MAX);
-    found.truncate(usize::try_from(PAGE).unwrap_or(usize::MAX));
-    let address_of = |order: Order, number: i64| {
-        let query = |name: &str| crate::web::form::percent(asked.value(name));
-        format!(
-            "/plans?state={}&beer_id={}&batch={}&order={}&page={number}",
-            query("state"),
-            query("beer_id"),
-            query("batch"),
-            order.key()
+        .route(
+            "/plans/{id}/closing",
+            get(closing::show_closing).post(closing::close),
         )
-    };
-    let address = |number: i64| address_of(order, number);
-    let by_day = if order == Order::Latest {
-        Order::Earliest
-    } else {
-        Order::Latest
-    };
-    let sorts = [
-        ("Batch", Order::Batch),
-        ("Beer", Order::Beer),
-        ("Brewed", by_day),
-    ]
-    .map(|(label, other)| SortHead {
-        label,
-        address: address_of(other, 1),
-        direction: match (label, order) {
-            ("Batch", Order::Batch) | ("Beer", Order::Beer) | ("Brewed", Order::Earliest) => {
-                "ascending"
-            }
-            ("Brewed", Order::Latest) => "descending",
-            _ => "none",
-        },
-    })
-    .into();
-    let states = PlanState::ALL.map(|state| (state.key(), state.name()));
-    let states = std::iter::once(("", "Every state")).chain(states);
-    Ok(ListPage {
-        page: framer.page("Plans", "plans").await,
-        states: Choice::list(states, asked.value("state")),
-        filtered: filter.state.is_some() || filter.beer.is_some() || filter.batch.is_some(),
-        order: order.key(),
-        sorts,
-        earlier: (number > 1).then(|| address(number - 1)),
-        later: more.then(|| address(number + 1)),
-        words: format!("page {number}"),
-        rows: found.into_iter().map(Into::into).collect(),
-        asked,
-    })
-}
-
-#[derive(Template, WebTemplate)]
-#[template(path = "plans/new.html")]
-struct NewPage {
-    page: Page,
-    typed: Form,
-    beers: Vec<Choice>,
-    ways: Vec<Choice>,
-    sources: Vec<NewSource>,
-}
-
-struct NewSource {
-    id: String,
-    name: String,
-    detail: String,
-    usable: bool,
-}
-
-async fn new_page(db: &Db, framer: &Framer, typed: Form) -> Result<NewPage, Error> {
-    let page = framer.page("New plan", "plans").await;
-    let beers = beers::operations::list_in_use(db, &framer.member).await?;
-    let mut offered = Vec::new();
-    for source in sources::operations::list(db, &framer.member)
-        .await?
-        .into_iter()
-        .filter(|source| source.in_use)
-    {
-        let (detail, usable) =
-            match sources::operations::todays_water(db, &framer.member, source.id).await {
-                Ok(water) => (
-                    format!(
-                        "alkalinity {} mg/L as CaCO₃, last tested {}",
-                        format::figure(water.water.alkalinity_as_caco3().get()),
-                        water.latest
-                    ),
-                    true,
-                ),
-                Err(Error::Conflict(_)) => ("no water test yet".to_owned(), false),
-                Err(error) => return Err(error),
-            };
-        offered.push(NewSource {
-            id: source.id.to_string(),
-            name: source.name,
-            detail,
-            usable,
-        });
-    }
-    Ok(NewPage {
-        beers: Choice::list(
-            beers
-                .into_iter()
-                .map(|beer| (beer.id.to_string(), beer.name)),
-            typed.value("beer_id"),
-        ),
-        ways: Choice::list(
-            Way::ALL.map(|way| (way.key(), words::way(way))),
-            typed.value("way"),
-        ),
-        sources: offered,
-        page,
-        typed,
-    })
-}
-
-async fn new(State(db): State<Db>, framer: Framer, asked: Form) -> Result<NewPage, Error> {
-    framer.member.may(Permission::DraftPlans)?;
-    let zone = crate::brewery::operations::settings(&db).await?.time_zone;
-    let mut typed = Form::empty()
-        .with("beer_id", asked.value("beer_id"))
-        .with("brewed_on", format::today(&zone).to_string())
-        .with("way", Way::ClosestToPreferred.key());
-    for index in 0..40 {
-        typed = typed.with(format!("sources.{index}.used"), "yes");
-    }
-    new_page(&db, &framer, typed).await
-}
-
-async fn create(State(db): State<Db>, framer: Framer, typed: Form) -> Result<Response, Error> {
-    let drafted = async {
-        framer.member.may(Permission::DraftPlans)?;
-        let mut body: NewPlanBody = typed.body()?;
-        // An unticked box sends nothing.
-        for source in &mut body.sources {
-            source.used.get_or_insert_default();
-        }
-        operations::draft(&db, &framer.member, NewPlan::try_from(body)?).await
-    };
-    match drafted.await {
-        Ok(plan) => Ok(Redirect::to(&format!("/plans/{}", plan.id)).into_response()),
-        Err(error) => {
-            let (status, typed) = typed.refused(error)?;
-            Ok((status, new_page(&db, &framer, typed).await?).into_response())
-        }
-    }
+        .merge(crate::plans::brew_day::routes())
 }
 
 #[derive(Template, WebTemplate)]
@@ -359,7 +137,7 @@ fn check_row(check: MashCheck, time_zone: &str, units: Units) -> CheckRow {
     }
 }
 
-fn outcome_row(outcome: &super::Outcome) -> OutcomeRow {
+fn outcome_row(outcome: &crate::plans::Outcome) -> OutcomeRow {
     let predicted = format!(
         "{} ± {}",
         format::ph(outcome.predicted_ph),
@@ -459,7 +237,7 @@ async fn show_page(
         .await;
     let units = page.settings.units;
     let zone = page.settings.time_zone.clone();
-    let lesson = closing::lesson(db, &framer.member, &plan).await?;
+    let lesson = lesson(db, &framer.member, &plan).await?;
     let checks = mash_checks::list(db, &framer.member, id).await?;
     let history =
         record::operations::of_subject(db, &framer.member, "plan", &id.to_string(), 20).await?;
@@ -823,106 +601,7 @@ async fn revise(
     .await
 }
 
-#[derive(Template, WebTemplate)]
-#[template(path = "plans/closing.html")]
-struct ClosingPage {
-    page: Page,
-    plan: Plan,
-    typed: Form,
-    checks: Vec<Choice>,
-}
-
-async fn closing_page(
-    db: &Db,
-    framer: &Framer,
-    id: PlanId,
-    typed: Form,
-) -> Result<ClosingPage, Error> {
-    let plan = operations::find(db, &framer.member, id).await?;
-    let page = framer
-        .page(format!("Close {} {}", plan.batch, plan.beer_name), "plans")
-        .await;
-    let checks = mash_checks::list(db, &framer.member, id).await?;
-    let checks = checks
-        .iter()
-        .filter(|check| check.stage == super::Stage::Mash && check.withdrawn.is_none());
-    let checks = checks.map(|check| {
-        let words = format!(
-            "minute {}: {} ± {}",
-            format::decimals(check.minute.get(), 0),
-            format::ph(check.advised.reading_ph),
-            format::ph(check.advised.reading_sd)
-        );
-        (check.id.to_string(), words)
-    });
-    Ok(ClosingPage {
-        checks: Choice::list(checks, typed.value("mash_check_id")),
-        page,
-        plan,
-        typed,
-    })
-}
-
-async fn show_closing(
-    State(db): State<Db>,
-    framer: Framer,
-    At(id): At<PlanId>,
-) -> Result<ClosingPage, Error> {
-    let plan = operations::find(&db, &framer.member, id).await?;
-    let checks = mash_checks::list(&db, &framer.member, id).await?;
-    let good = checks.iter().find(|check| {
-        check.stage == super::Stage::Mash
-            && check.withdrawn.is_none()
-            && check.advised.advice != "read_again"
-    });
-    let typed = Form::empty()
-        .with("version", plan.version.to_string())
-        .with(
-            "mash_check_id",
-            good.map(|check| check.id.to_string()).unwrap_or_default(),
-        )
-        .with("counts", "yes");
-    closing_page(&db, &framer, id, typed).await
-}
-
-async fn close(
-    State(db): State<Db>,
-    framer: Framer,
-    At(id): At<PlanId>,
-    typed: Form,
-) -> Result<Response, Error> {
-    let closed = async {
-        let mut body: ClosingBody = typed.body()?;
-        body.counts.get_or_insert_default();
-        closing::close(
-            &db,
-            &framer.member,
-            id,
-            version(&typed),
-            Closing::try_from(body)?,
-        )
-        .await
-    };
-    match closed.await {
-        Ok(plan) => Ok(Redirect::to(&format!("/plans/{}?done=closed", plan.id)).into_response()),
-        Err(error) => {
-            let (status, typed) = typed.refused(error)?;
-            Ok((status, closing_page(&db, &framer, id, typed).await?).into_response())
-        }
-    }
-}
-
-/// The latest plans of one beer, for its page.
-pub async fn of_beer(db: &Db, by: &Member, beer: BeerId) -> Result<Vec<ListRow>, Error> {
-    let filter = Filter {
-        beer: Some(beer),
-        ..Filter::default()
-    };
-    let found = operations::list(db, by, &filter, Order::Latest, 0, 10).await?;
-    Ok(found.into_iter().map(Into::into).collect())
-}
-
 /// Where a check's page returns to.
-pub(super) fn check_address(plan: PlanId, check: MashCheckId) -> String {
+pub(in crate::plans) fn check_address(plan: PlanId, check: MashCheckId) -> String {
     format!("/plans/{plan}/mash-checks/{check}")
 }
