@@ -267,7 +267,17 @@ async fn weigh(
     };
     match weighed.await {
         Ok(plan) => {
-            Ok(Redirect::to(&format!("/plans/{}/weigh-out?done=dosed", plan.id)).into_response())
+            // After a first step the wait begins, and the page of the reading counts it.
+            let step_of = plan
+                .doses
+                .iter()
+                .find(|line| line.id == dose)
+                .and_then(|line| line.mash_check);
+            let to = step_of.map_or_else(
+                || format!("/plans/{}/weigh-out", plan.id),
+                |check| check_address(plan.id, check),
+            );
+            Ok(Redirect::to(&format!("{to}?done=dosed")).into_response())
         }
         Err(error) => {
             let (status, typed) = typed.refused(error)?;
