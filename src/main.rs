@@ -1,5 +1,7 @@
 //! The `leat` program: reads the settings, starts the server, ends it on a signal.
 
+use std::io::IsTerminal;
+
 use anyhow::Context;
 use clap::Parser;
 use leat::config::Config;
@@ -18,6 +20,7 @@ async fn main() -> anyhow::Result<()> {
     })?;
     let log = tracing_subscriber::fmt()
         .with_env_filter(filter)
+        .with_ansi(std::io::stderr().is_terminal())
         .with_writer(std::io::stderr);
     if config.log_json {
         log.json().init();
@@ -30,6 +33,11 @@ async fn main() -> anyhow::Result<()> {
             !file.exists(),
             "{} exists already; name a new file",
             file.display()
+        );
+        anyhow::ensure!(
+            config.database.exists(),
+            "There is no database {}; name it with --database (LEAT_DATABASE)",
+            config.database.display()
         );
         let db = Db::open(&config.database).await?;
         db.back_up(file).await?;

@@ -1,5 +1,7 @@
 //! A running server, and people and programs who use it.
 
+use std::path::PathBuf;
+
 use leat::config::Config;
 use leat::input::Problems;
 use leat::people::operations::{self, NewAccount};
@@ -17,6 +19,7 @@ pub const PASSWORD: &str = "open the sluice";
 pub struct Desk {
     pub app: App,
     pub address: String,
+    pub file: PathBuf,
     _folder: tempfile::TempDir,
 }
 
@@ -32,6 +35,7 @@ impl Desk {
         let desk = Self {
             app,
             address,
+            file,
             _folder: folder,
         };
         let manager = new_account("manager", "Mara Manager", "manager");

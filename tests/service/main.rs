@@ -15,6 +15,7 @@ mod help;
 mod malts;
 mod people;
 mod plans;
+mod program;
 mod shelf;
 mod source_pages;
 mod sources;

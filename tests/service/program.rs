@@ -1,0 +1,156 @@
+//! The program itself: its settings, its back-ups, and what is left when it is killed.
+
+use std::io::{BufRead, BufReader};
+use std::path::Path;
+use std::process::{Child, Command, Output, Stdio};
+
+use leat::db::Db;
+use leat::people::operations;
+use leat::people::passwords::Passwords;
+use reqwest::Client;
+
+use crate::desk::{Desk, PASSWORD};
+
+fn leat(file: &Path) -> Command {
+    let mut command = Command::new(env!("CARGO_BIN_EXE_leat"));
+    command.arg("--database").arg(file);
+    command
+}
+
+fn words(output: &Output) -> String {
+    String::from_utf8_lossy(&output.stderr).into_owned()
+}
+
+#[tokio::test]
+async fn a_back_up_taken_while_leat_answers_can_be_opened_in_its_place() {
+    let desk = Desk::start().await;
+    let manager = desk.browser("manager").await;
+    let copy = desk.file.with_file_name("copy.sqlite");
+    let output = leat(&desk.file).arg("--back-up").arg(&copy).output();
+    let output = output.unwrap();
+    assert!(output.status.success(), "{}", words(&output));
+
+    let db = Db::open(&copy).await.unwrap();
+    let passwords = Passwords::start().unwrap();
+    let (member, _) = operations::sign_in(&db, &passwords, "qa", PASSWORD)
+        .await
+        .unwrap();
+    assert_eq!(member.name, "Quin Assay");
+    assert_eq!(manager.open("/people").await.status, 200);
+}
+
+#[tokio::test]
+async fn a_back_up_of_nothing_or_over_something_is_refused() {
+    let desk = Desk::start().await;
+    let missing = desk.file.with_file_name("missing.sqlite");
+    let copy = desk.file.with_file_name("copy.sqlite");
+    let output = leat(&missing).arg("--back-up").arg(&copy).output().unwrap();
+    assert!(!output.status.success());
+    assert!(words(&output).contains("no database"), "{}", words(&output));
+    assert!(!missing.exists() && !copy.exists());
+
+    std::fs::write(&copy, "kept").unwrap();
+    let output = leat(&desk.file).arg("--back-up").arg(&copy).output();
+    let output = output.unwrap();
+    assert!(!output.status.success());
+    assert!(words(&output).contains("exists already"));
+    assert_eq!(std::fs::read_to_string(&copy).unwrap(), "kept");
+}
+
+#[test]
+fn a_wrong_setting_is_refused_with_its_name_and_an_example() {
+    let folder = tempfile::tempdir().unwrap();
+    let file = folder.path().join("leat.sqlite");
+    let output = leat(&file).args(["--log", "leat=chatty"]).output().unwrap();
+    assert!(!output.status.success());
+    assert!(words(&output).contains("LEAT_LOG"), "{}", words(&output));
+    assert!(words(&output).contains("leat=debug"), "{}", words(&output));
+    let output = leat(&file).env("LEAT_LISTEN", "everywhere").output();
+    let output = output.unwrap();
+    assert!(!output.status.success());
+    assert!(words(&output).contains("--listen"), "{}", words(&output));
+    assert!(!file.exists());
+}
+
+#[tokio::test]
+async fn what_was_answered_is_there_after_the_program_is_killed() {
+    let folder = tempfile::tempdir().unwrap();
+    let file = folder.path().join("leat.sqlite");
+    let mut running = Running::start(&file);
+    let first = running.line("first one at ");
+    let fields = [
+        ("login", "manager"),
+        ("name", "Mara Manager"),
+        ("password", PASSWORD),
+        ("token", first.split_once("token=").unwrap().1),
+    ];
+    let client = Client::builder().cookie_store(true).build().unwrap();
+    let address = running.address.clone();
+    let answer = client
+        .post(format!("{address}/first-account"))
+        .header("origin", &address)
+        .form(&fields)
+        .send()
+        .await
+        .unwrap();
+    assert!(
+        answer.status().is_success(),
+        "{}",
+        answer.text().await.unwrap()
+    );
+    running.process.kill().unwrap();
+    running.process.wait().unwrap();
+
+    let running = Running::start(&file);
+    let address = &running.address;
+    let answer = client
+        .post(format!("{address}/sign-in"))
+        .header("origin", address)
+        .form(&[("login", "manager"), ("password", PASSWORD)])
+        .send()
+        .await
+        .unwrap();
+    assert_eq!(answer.url().path(), "/");
+}
+
+/// The program as it runs; dropping it kills it.
+struct Running {
+    process: Child,
+    log: BufReader<std::process::ChildStderr>,
+    address: String,
+}
+
+impl Running {
+    fn start(file: &Path) -> Self {
+        let mut command = leat(file);
+        command.args(["--listen", "127.0.0.1:0"]);
+        let mut process = command.stderr(Stdio::piped()).spawn().unwrap();
+        let log = BufReader::new(process.stderr.take().unwrap());
+        let mut running = Self {
+            process,
+            log,
+            address: String::new(),
+        };
+        running.address = running.line("answers at ");
+        running
+    }
+
+    /// What follows these words in the log.
+    fn line(&mut self, words: &str) -> String {
+        let mut line = String::new();
+        while self.log.read_line(&mut line).unwrap() > 0 {
+            if let Some((_, rest)) = line.split_once(words) {
+                return rest.trim().to_owned();
+            }
+            line.clear();
+        }
+        panic!("the program ended before it said “{words}”");
+    }
+}
+
+impl Drop for Running {
+    fn drop(&mut self) {
+        let _ = self.process.kill();
+        let _ = self.process.wait();
+    }
+}
