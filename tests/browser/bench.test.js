@@ -1,0 +1,180 @@
+// The tablet by the mash tun: a tick is never lost and never doubled, a keyboard is enough, gloves hit the buttons.
+
+import assert from "node:assert/strict";
+import { after, before, test } from "node:test";
+import { openWindow, PASSWORD, signIn, startBrowser, startLeat } from "./leat.js";
+import { planIn } from "./pages.js";
+import { approvedPlan, tokenOf } from "./api.js";
+
+let leat, browser, token, manager;
+before(async () => {
+  leat = await startLeat({ demo: true });
+  browser = await startBrowser();
+  manager = await openWindow(browser, leat);
+  await signIn(manager.page, "manager");
+  token = await tokenOf(manager.page);
+});
+after(async () => {
+  await browser?.close();
+  await leat?.stop();
+});
+
+const button = (page) => page.getByRole("button", { name: /It is in the/ });
+const way = (page) => page.locator(".steps-words").innerText();
+/** What the plan’s own page says was weighed in, line by line. */
+async function weighedIn(page, plan) {
+  await page.goto(plan);
+  return page.locator("section", { hasText: "Weigh-out" }).locator("tbody tr").evaluateAll((rows) => rows.map((row) => row.cells[4].textContent.trim()));
+}
+
+for (const scripts of [true, false]) {
+  const how = scripts ? "with scripts" : "without scripts";
+
+  test(`a double click weighs one line in, once, ${how}`, async () => {
+    const plan = await approvedPlan(leat, token);
+    const window = await openWindow(browser, leat, { javaScriptEnabled: scripts });
+    const { page } = window;
+    await signIn(page, "brewer");
+    await page.goto(`${plan}/weigh-out`);
+    await button(page).dblclick();
+    await page.locator(".steps-words", { hasText: "Line 2" }).waitFor();
+    const weighed = await weighedIn(page, plan);
+    assert.notEqual(weighed[0], "");
+    assert.deepEqual(weighed.slice(1).filter(Boolean), [], "only the first line is in");
+    await window.close();
+  });
+
+  test(`going back shows where the weigh-out stands and doubles nothing, ${how}`, async () => {
+    const plan = await approvedPlan(leat, token);
+    const window = await openWindow(browser, leat, { javaScriptEnabled: scripts });
+    const { page } = window;
+    await signIn(page, "brewer");
+    await page.goto(`${plan}/weigh-out`);
+    await button(page).click();
+    await page.locator(".steps-words", { hasText: "Line 2" }).waitFor();
+    await page.goBack();
+    assert.match(await way(page), /Line 2/, "the line that is in is not offered again");
+    assert.equal((await weighedIn(page, plan)).filter(Boolean).length, 1);
+    await window.close();
+  });
+
+  test(`a second tablet that still shows a line weighed on the first changes nothing, ${how}`, async () => {
+    const plan = await approvedPlan(leat, token);
+    const window = await openWindow(browser, leat, { javaScriptEnabled: scripts });
+    const first = window.page;
+    await signIn(first, "brewer");
+    const second = await window.context.newPage();
+    await second.goto(`${plan}/weigh-out`);
+    await first.goto(`${plan}/weigh-out`);
+    await button(first).click();
+    await first.locator(".steps-words", { hasText: "Line 2" }).waitFor();
+    const [once] = await weighedIn(first, plan);
+    await second.getByLabel("What the scale showed").fill("999");
+    await button(second).click();
+    await second.locator(".problem-summary", { hasText: /in already|weighed/ }).waitFor();
+    const planned = await second.locator(".weigh-amount .value").innerText();
+    assert.equal(await second.getByLabel("What the scale showed").inputValue(), planned, "the next line begins with its own amount");
+    const weighed = await weighedIn(first, plan);
+    assert.equal(weighed[0], once);
+    assert.deepEqual(weighed.slice(1).filter(Boolean), [], "no other line took the amount");
+    await window.close();
+  });
+}
+
+test("a tick whose answer was lost on the way is in once when it is sent again", async () => {
+  const plan = await approvedPlan(leat, token);
+  const window = await openWindow(browser, leat);
+  const { page } = window;
+  await signIn(page, "brewer");
+  await page.goto(`${plan}/weigh-out`);
+  // The server hears the request; the brewer never sees its answer.
+  await page.route("**/doses/*", async (route) => {
+    await route.fetch({ maxRedirects: 0 });
+    await route.abort();
+  }, { times: 1 });
+  const lost = page.waitForEvent("framenavigated", (frame) => frame.url().startsWith("chrome-error:"));
+  await button(page).click({ noWaitAfter: true });
+  await lost;
+  await page.goto(`${plan}/weigh-out`);
+  assert.match(await way(page), /Line 2/, "the line is in although nobody saw it go");
+  const weighed = await weighedIn(page, plan);
+  assert.equal(weighed.filter(Boolean).length, 1);
+  window.complaints.length = 0; // Chromium’s own words about the lost answer.
+  await window.close();
+});
+
+test("a refused weight comes back as typed with a sentence beside it", async () => {
+  const plan = await approvedPlan(leat, token);
+  const window = await openWindow(browser, leat);
+  const { page } = window;
+  await signIn(page, "brewer");
+  await page.goto(`${plan}/weigh-out`);
+  await page.getByLabel("What the scale showed").fill("about a cup");
+  await page.getByLabel("Lot").fill("X-9");
+  await button(page).click();
+  await page.locator(".problem-summary").waitFor();
+  assert.equal(await page.getByLabel("What the scale showed").inputValue(), "about a cup");
+  assert.equal(await page.getByLabel("Lot").inputValue(), "X-9");
+  assert.match(await way(page), /Line 1/);
+  await window.close();
+});
+
+test("a keyboard alone signs in and weighs out", async () => {
+  const plan = await approvedPlan(leat, token);
+  const window = await openWindow(browser, leat);
+  const { page } = window;
+  const tabTo = async (selector) => {
+    for (let tabs = 0; tabs < 60; tabs += 1) {
+      await page.keyboard.press("Tab");
+      if (await page.evaluate((wanted) => document.activeElement?.matches(wanted), selector)) return;
+    }
+    assert.fail(`no Tab reaches ${selector}`);
+  };
+  await page.goto(`/sign-in?next=${encodeURIComponent(`${plan}/weigh-out`)}`);
+  await tabTo("#field-login");
+  await page.keyboard.type("brewer");
+  await tabTo("#field-password");
+  await page.keyboard.type(PASSWORD);
+  await page.keyboard.press("Enter");
+  await page.locator(".weigh").waitFor();
+  const lines = Number((await way(page)).match(/of (\d+)/)[1]);
+  for (let line = 1; line <= lines; line += 1) {
+    await page.locator(".steps-words", { hasText: `Line ${line} of` }).waitFor();
+    await tabTo("#field-actual");
+    const outline = await page.evaluate(() => getComputedStyle(document.activeElement).outlineStyle);
+    assert.equal(outline, "solid", "the focus can be seen");
+    await page.keyboard.press("Enter");
+  }
+  await page.getByText("Everything planned is in.").waitFor();
+  await window.close();
+});
+
+test("everything to touch on the tablet’s pages is 48 px or more", async () => {
+  const approved = await approvedPlan(leat, token);
+  const dosed = await planIn(manager.page, { state: "dosed" });
+  const closed = await planIn(manager.page, { state: "closed" });
+  await manager.page.goto(closed);
+  const check = await manager.page.locator(`main a[href^="${closed}/mash-checks/"]`).first().getAttribute("href");
+  const storageState = await manager.context.storageState();
+  for (const [width, height] of [[1280, 800], [800, 1280]]) {
+    const window = await openWindow(browser, leat, { storageState, viewport: { width, height } });
+    const { page } = window;
+    for (const address of ["/", `${approved}/weigh-out`, `${approved}/mash-checks/new`, `${dosed}/weigh-out`, `${dosed}/mash-checks/new`, check, `${dosed}/closing`]) {
+      await page.goto(address);
+      await page.evaluate(() => document.querySelectorAll("details").forEach((part) => { part.open = true; }));
+      const small = await page.evaluate(() => {
+        const found = [];
+        for (const thing of document.querySelectorAll("a, button, summary, input:not([type=hidden]), select, textarea")) {
+          if (thing.closest(".skip, .foot") || !thing.checkVisibility()) continue;
+          // A box to tick is touched by its label.
+          const touched = thing.matches("[type=checkbox], [type=radio]") ? thing.closest("label") ?? thing : thing;
+          const { width, height } = touched.getBoundingClientRect();
+          if (Math.min(width, height) < 47.9) found.push(`${thing.tagName} “${(thing.innerText || thing.name || "").trim()}” ${Math.round(width)} × ${Math.round(height)}`);
+        }
+        return found;
+      });
+      assert.deepEqual(small, [], `${address} at ${width} px`);
+    }
+    await window.close();
+  }
+});
