@@ -200,20 +200,19 @@ async fn weigh_out_page_of(
             next = Some(line);
         }
     }
-    let actual = match typed.value("actual") {
-        "" => now
-            .as_ref()
-            .map(|line| line.amount.clone())
-            .unwrap_or_default(),
-        typed => typed.to_owned(),
+    // What was typed belongs to the line it was typed for, never to the one after it.
+    let same = now
+        .as_ref()
+        .is_some_and(|line| line.id.to_string() == wanted);
+    let field = |name: &str, planned: fn(&Line) -> &String| {
+        if same && typed.holds(name) {
+            typed.value(name).to_owned()
+        } else {
+            now.as_ref().map(planned).cloned().unwrap_or_default()
+        }
     };
-    let lot = if typed.holds("lot") {
-        typed.value("lot").to_owned()
-    } else {
-        now.as_ref()
-            .map(|line| line.lot.clone())
-            .unwrap_or_default()
-    };
+    let actual = field("actual", |line| &line.amount);
+    let lot = field("lot", |line| &line.lot);
     Ok(WeighOutPage {
         may_brew: page.can(Permission::BrewBatches),
         actual_field: actual,
