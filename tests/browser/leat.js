@@ -8,7 +8,7 @@ import path from "node:path";
 import { chromium } from "playwright-core";
 
 const repository = path.resolve(import.meta.dirname, "../..");
-const program = path.join(process.env.CARGO_TARGET_DIR || path.join(repository, "target"), "debug", "leat");
+const program = process.env.LEAT_PROGRAM || path.join(process.env.CARGO_TARGET_DIR || path.join(repository, "target"), "debug", "leat");
 
 const FLAGS = [
   "--headless", "--no-sandbox", "--disable-gpu", "--disable-quic", "--no-first-run",
