@@ -218,7 +218,10 @@ struct EditPage {
 }
 
 async fn edit_page(framer: &Framer, malt: Option<&Malt>, typed: Form) -> EditPage {
-    let title = malt.map_or_else(|| "New malt".to_owned(), |malt| malt.name.clone());
+    let title = malt.map_or_else(
+        || "New malt".to_owned(),
+        |malt| format!("Change {}", malt.name),
+    );
     let coefficients = ["a1_meq_per_kg_ph", "a2_meq_per_kg_ph2", "a3_meq_per_kg_ph3"];
     EditPage {
         page: framer.page(title, "malts").await,

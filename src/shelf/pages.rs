@@ -376,7 +376,7 @@ async fn edit_page(
 ) -> EditPage {
     let title = material.map_or_else(
         || format!("New on the shelf: {}", substance.name()),
-        |material| material.name.clone(),
+        |material| format!("Change {}", material.name),
     );
     let page = framer.page(title, "shelf").await;
     let units = page.settings.units;
