@@ -27,6 +27,8 @@ mod order;
 mod problem;
 mod program;
 mod rounding;
+mod simplest;
+mod simplex;
 
 use std::fmt;
 
@@ -240,16 +242,49 @@ pub struct Reached {
 /// Shares and doses, and what they do.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Treatment {
-    /// Share of each source.
+    /// Share of each source: whole per cents, tenths of a per cent where those would
+    /// break what the strict order reached, or as exact as it takes.
     pub shares: Vec<Fraction>,
     /// Doses as they will be weighed, in steps of the scale.
     pub doses: Vec<Dose>,
-    /// Doses before rounding.
+    /// Doses for these shares before they are rounded to the scale.
     pub exact_doses: Vec<Dose>,
-    /// What the doses as weighed do.
+    /// What shares and doses as weighed do.
     pub outcome: Outcome,
-    /// What the steps of the strict order reached.
+    /// What the steps of the strict order reached before anything was made simple or
+    /// rounded.
     pub reached: Reached,
+    /// Where they reached it.
+    pub optimum: Optimum,
+}
+
+/// The treatment that is best to the last digit, before it is made simple.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Optimum {
+    /// Share of each source.
+    pub shares: Vec<Fraction>,
+    /// Doses, not rounded.
+    pub doses: Vec<Dose>,
+}
+
+impl Treatment {
+    /// Lines on the weigh-out: sources in use and doses.
+    #[must_use]
+    pub fn lines(&self) -> usize {
+        lines(&self.shares, self.doses.len())
+    }
+}
+
+impl Optimum {
+    /// Lines it would take, a share of less than a ten-thousandth not counted.
+    #[must_use]
+    pub fn lines(&self) -> usize {
+        lines(&self.shares, self.doses.len())
+    }
+}
+
+fn lines(shares: &[Fraction], doses: usize) -> usize {
+    shares.iter().filter(|share| share.get() > 1e-4).count() + doses
 }
 
 /// How the search for a plan ended.
@@ -319,12 +354,17 @@ fn one_way(
     way: Way,
 ) -> Result<Ending, PlanError> {
     let chosen = order::choose(model, frozen, way)?;
-    let shares = model.shares(&chosen.columns);
-    let doses = rounding::rounded(problem, model, &chosen.columns);
+    let columns = simplest::settled(problem, model, frozen, &chosen, way)?;
+    let shares = model.shares(&columns);
+    let doses = rounding::rounded(problem, model, &columns);
     let treatment = Treatment {
         outcome: evaluate(problem, &shares, &doses)?,
-        exact_doses: model.doses(&chosen.columns),
+        exact_doses: model.doses(&columns),
         reached: chosen.reached(model, frozen),
+        optimum: Optimum {
+            shares: model.shares(&chosen.columns),
+            doses: model.doses(&chosen.columns),
+        },
         shares,
         doses,
     };

@@ -61,9 +61,21 @@ pub(super) struct HardRow {
 pub(super) struct SoftRow {
     pub(super) requirement: Requirement,
     pub(super) priority: Priority,
+    pub(super) scale: f64,
     pub(super) low: Option<(Vec<f64>, f64)>,
     pub(super) high: Option<(Vec<f64>, f64)>,
     pub(super) preferred: Option<(Vec<f64>, f64)>,
+}
+
+impl SoftRow {
+    /// How far it is missed, relative to its scale.
+    pub(super) fn missed(&self, columns: &[f64]) -> f64 {
+        let side = |side: &Option<(Vec<f64>, f64)>, sign: f64| {
+            side.as_ref()
+                .map_or(0.0, |(row, bound)| sign * (bound - dot(row, columns)))
+        };
+        side(&self.low, 1.0).max(side(&self.high, -1.0)).max(0.0)
+    }
 }
 
 /// The state of a window in one step of the strict order.
@@ -89,8 +101,8 @@ pub(super) enum MashHold {
 pub(super) struct Model {
     pub(super) sources: usize,
     pub(super) additions: Vec<Addition>,
-    lower: Vec<f64>,
-    upper: Vec<f64>,
+    pub(super) lower: Vec<f64>,
+    pub(super) upper: Vec<f64>,
     pub(super) hard: Vec<HardRow>,
     pub(super) windows: Vec<SoftRow>,
     /// Acid asked for per litre of mash liquor, and what the grist asks by itself.
@@ -548,6 +560,7 @@ impl<'a> Builder<'a> {
             windows.push(SoftRow {
                 requirement: Requirement::SulfateToChloride,
                 priority: window.priority,
+                scale: RATIO_SCALE,
                 low: window.low.map(side),
                 high: window.high.map(side),
                 preferred: None,
@@ -584,6 +597,7 @@ fn plain<T: Copy>(
     SoftRow {
         requirement,
         priority: window.priority,
+        scale,
         low: side(low),
         high: side(high),
         preferred: side(preferred),

@@ -84,7 +84,7 @@ pub(super) fn settle(model: &Model) -> Result<Option<Frozen>, PlanError> {
             }
         }
         let mut program = model.program(frozen.mash(), &windows, &all);
-        frozen.add_sums(model, &windows, &mut program);
+        frozen.add_sums(model, &windows, 0.0, &mut program);
         let answer = settled(program.solve(&sum_of(model, &columns)))?;
         if answer.value > HAIR {
             frozen.missed[level] = answer.value;
@@ -121,6 +121,12 @@ impl Frozen {
 
     /// Everything held, with only some additions allowed.
     pub(super) fn program(&self, model: &Model, allowed: &Allowed) -> Program {
+        self.program_with(model, allowed, 0.0)
+    }
+
+    /// Everything held, but each window may be missed by `room` more, relative to its
+    /// scale, and a mash that misses its target by as many meq/L.
+    pub(super) fn program_with(&self, model: &Model, allowed: &Allowed, room: f64) -> Program {
         let windows: Vec<Hold> = model
             .windows
             .iter()
@@ -128,7 +134,7 @@ impl Frozen {
                 if self.missed[window.priority as usize] > 0.0 {
                     Hold::Counted
                 } else {
-                    Hold::AtMost(HAIR)
+                    Hold::AtMost(HAIR.max(room))
                 }
             })
             .collect();
@@ -138,8 +144,13 @@ impl Frozen {
             .zip(allowed)
             .map(|(a, b)| *a && *b)
             .collect();
-        let mut program = model.program(self.mash(), &windows, &both);
-        self.add_sums(model, &windows, &mut program);
+        let mash = if self.acid_missing == 0.0 {
+            self.mash()
+        } else {
+            MashHold::Held(self.acid_missing + room.copysign(self.acid_missing))
+        };
+        let mut program = model.program(mash, &windows, &both);
+        self.add_sums(model, &windows, room, &mut program);
         if self.discouraged > 0.0 {
             program.rows.push(at_most(
                 model,
@@ -150,8 +161,9 @@ impl Frozen {
         program
     }
 
-    /// For each priority that is missed, that it be missed no further.
-    fn add_sums(&self, model: &Model, windows: &[Hold], program: &mut Program) {
+    /// For each priority that is missed, that it be missed no further, but for `room` in
+    /// each window.
+    fn add_sums(&self, model: &Model, windows: &[Hold], room: f64, program: &mut Program) {
         for (level, priority) in Priority::ALL.into_iter().enumerate() {
             let columns = level_columns(model, priority);
             let counted = columns
@@ -159,9 +171,8 @@ impl Frozen {
                 .all(|column| windows[column - model.miss(0)] == Hold::Counted);
             if self.missed[level] > 0.0 && counted {
                 let objective = sum_of(model, &columns);
-                program
-                    .rows
-                    .push(at_most(model, objective.linear, held(self.missed[level])));
+                let most = held(self.missed[level]) + room * columns.len() as f64;
+                program.rows.push(at_most(model, objective.linear, most));
             }
         }
     }
@@ -182,7 +193,7 @@ pub(super) fn sum_of(model: &Model, columns: &[usize]) -> Objective {
     Objective::linear(linear)
 }
 
-fn at_most(model: &Model, mut coefficients: Vec<f64>, most: f64) -> Row {
+pub(super) fn at_most(model: &Model, mut coefficients: Vec<f64>, most: f64) -> Row {
     coefficients.resize(model.width(), 0.0);
     Row {
         coefficients,

@@ -148,22 +148,11 @@ fn badness(model: &Model, exact: &[f64], choices: &[Choice], columns: &[f64]) ->
         .sum();
     let mut missed = [0.0; 3];
     for window in &model.windows {
-        let miss = |columns: &[f64]| {
-            let below = window
-                .low
-                .as_ref()
-                .map_or(0.0, |(row, low)| low - dot(row, columns));
-            let above = window
-                .high
-                .as_ref()
-                .map_or(0.0, |(row, high)| dot(row, columns) - high);
-            below.max(above).max(0.0)
-        };
         let level = Priority::ALL
             .iter()
             .position(|priority| *priority == window.priority)
             .unwrap_or(0);
-        missed[level] += (miss(columns) - miss(exact) - WINDOW_GRAIN).max(0.0);
+        missed[level] += (window.missed(columns) - window.missed(exact) - WINDOW_GRAIN).max(0.0);
     }
     let off = (model.acid_missing(columns) - model.acid_missing(exact)).abs();
     let distance: f64 = choices
