@@ -9,7 +9,26 @@
 //! 2. the mash comes as near its target pH as it can;
 //! 3. windows are missed as little as possible, those of high priority first;
 //! 4. discouraged materials are used only as far as that takes them;
-//! 5. among what is left, the [`Way`] chooses.
+//! 5. among what is left, the [`Way`] chooses;
+//! 6. of the treatments that cannot be told from the one chosen, the simplest is taken.
+//!
+//! Every line on a weigh-out is a chance to slip, so the last step takes the fewest
+//! lines: a line is a material in one vessel, or a source in use. Steps 1 to 4 stay as
+//! held as they were; for step 5, "cannot be told" means (source: assumed, no finer than
+//! reports and scales tell):
+//!
+//! - closest to preferred: each figure with a preferred value within 1 mg/L or 2 %,
+//!   whichever is more, of where the optimum puts it;
+//! - fewest additions: no addition more, sources in use counting as lines too;
+//! - least blending water: at most 0.5 % of the liquor above the least, or up to the next
+//!   whole per cent;
+//! - cheapest: at most 1 % above the least cost.
+//!
+//! A window that cannot be met may trade as much with others of its priority. Of equally
+//! many lines those nearest to what is preferred are taken, then the smallest amounts.
+//! Then the shares are rounded to whole per cents, the doses solved again for them and
+//! rounded to the scale. Rounding shares may cost a window 0.05 % of its scale; where
+//! whole per cents would cost more, tenths are tried, then the exact shares stay.
 //!
 //! The ending is a value: [`Ending`]. Start with [`Problem`]; [`evaluate`] says what any
 //! shares and doses do, a solver's or a brewer's.
@@ -17,7 +36,7 @@
 //! Ions are counted in the whole liquor, calcium also in the mash. A dose in the liquor
 //! tank reaches mash and sparge liquor in proportion; what is dosed to the mash stays in
 //! the mash; the kettle counts in the whole liquor only. The steps of the solve are in
-//! `model`, `order`, `fewest`, `rounding` and `obstacles`.
+//! `model`, `order`, `fewest`, `simplest`, `rounding` and `obstacles`.
 
 mod fewest;
 mod forward;
@@ -48,7 +67,7 @@ use crate::quantity::{
 pub enum Way {
     /// Nearest to the preferred figures.
     ClosestToPreferred,
-    /// As few lines on the weigh-out as possible.
+    /// As few additions as possible, a material in one vessel each.
     FewestAdditions,
     /// As little blending water as possible.
     LeastBlendingWater,

@@ -23,6 +23,9 @@ use super::{PlanError, Way};
 /// laboratories, or two weighings and a water meter, differ by.
 const FIGURE_BAND: (f64, f64) = (1.0, 0.02);
 
+/// A window missed by less than this is met, relative to its scale: 0.1 mg/L in 100.
+const MISSED: f64 = 1e-3;
+
 /// Blending water above the least, as a share of the liquor. Source: assumed; no finer
 /// than a tank is filled.
 const BLENDING_BAND: f64 = 0.005;
@@ -31,7 +34,7 @@ const BLENDING_BAND: f64 = 0.005;
 const COST_BAND: f64 = 0.01;
 
 /// Sets of lines looked at in one search.
-const MOST_TRIALS: usize = 150;
+const MOST_TRIALS: usize = 300;
 
 /// A line that would have to grow a million times to weaken a proof does not help.
 const NO_HELP: f64 = 1e-6;
@@ -66,8 +69,8 @@ impl Bands {
         };
         let misses = (0..model.windows.len())
             .map(|index| match model.windows[index].missed(&chosen.columns) {
-                missed if missed > 1e-5 => missed + band(index),
-                _ => 10.0 * HAIR,
+                missed if missed > MISSED => missed + band(index),
+                missed => missed + 10.0 * HAIR,
             })
             .collect();
         let mut rows = Vec::new();

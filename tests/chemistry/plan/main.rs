@@ -7,3 +7,4 @@ mod forward;
 mod optima;
 mod problems;
 mod properties;
+mod simple;
