@@ -36,16 +36,19 @@
 //! Ions are counted in the whole liquor, calcium also in the mash. A dose in the liquor
 //! tank reaches mash and sparge liquor in proportion; what is dosed to the mash stays in
 //! the mash; the kettle counts in the whole liquor only. The steps of the solve are in
-//! `model`, `order`, `fewest`, `simplest`, `rounding` and `obstacles`.
+//! `model`, `order`, `fewest`, `simplest`, `lines`, `shares`, `rounding` and
+//! `obstacles`.
 
 mod fewest;
 mod forward;
+mod lines;
 mod model;
 mod obstacles;
 mod order;
 mod problem;
 mod program;
 mod rounding;
+mod shares;
 mod simplest;
 mod simplex;
 

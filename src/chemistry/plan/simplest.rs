@@ -1,21 +1,21 @@
 //! The last step of the strict order: of treatments that cannot be told from the best
 //! one, the one with the fewest lines.
 //!
-//! A line is a material in one vessel or a source in use. Sets of lines are searched as
-//! in `fewest`: what does not suffice comes with a proof that names lines of which one
-//! more is needed. Here a set is only looked at by the simplex, and after
-//! [`MOST_TRIALS`] of them the best found so far is taken: it never has more lines than
-//! the optimum it started from.
+//! A line is a material in one vessel or a source in use. `lines` searches for them; after
+//! [`MOST_TRIALS`] sets the best found so far is taken, which never has more lines than
+//! the optimum it started from. `shares` then rounds.
 
 use std::cmp::Ordering;
 
 use crate::material::{Role, Vessel};
 
+use super::lines::{MOST_TRIALS, Search, Set, places};
 use super::model::{Allowed, HAIR, Model, TRACE};
 use super::order::{Chosen, Frozen, at_most};
 use super::problem::Problem;
 use super::program::{Answer, NoAnswer, Objective, Program, Row, dot};
-use super::simplex::{Found, Simplex};
+use super::shares::LEAST_SHARE;
+use super::simplex::Simplex;
 use super::{PlanError, Way};
 
 /// A figure that has a preferred value stays this near to where the best treatment puts
@@ -33,22 +33,13 @@ const BLENDING_BAND: f64 = 0.005;
 /// Cost above the least, relative. Source: assumed; less than prices are known to.
 const COST_BAND: f64 = 0.01;
 
-/// Sets of lines looked at in one search.
-const MOST_TRIALS: usize = 300;
-
-/// A line that would have to grow a million times to weaken a proof does not help.
-const NO_HELP: f64 = 1e-6;
-
 /// Weight of a gram or a millilitre per litre beside relative distances from what is
 /// preferred. Source: assumed; it decides between what is equally near.
 const AMOUNT: f64 = 1e-3;
 
-/// A set of lines, one bit each.
-type Set = u128;
-
 /// What a simple treatment must still keep beside the frozen steps.
 pub(super) struct Bands {
-    rows: Vec<Row>,
+    pub(super) rows: Vec<Row>,
     /// How far each window may be missed.
     misses: Vec<f64>,
     /// Additions at most.
@@ -112,7 +103,7 @@ impl Bands {
     }
 
     /// Everything held and the bands, with `room` more to miss windows in.
-    fn program(&self, model: &Model, frozen: &Frozen, room: f64) -> Program {
+    pub(super) fn program(&self, model: &Model, frozen: &Frozen, room: f64) -> Program {
         let all: Allowed = vec![true; model.additions.len()];
         let mut program = frozen.program_with(model, &all, room);
         program.rows.extend(self.rows.iter().cloned());
@@ -156,7 +147,7 @@ fn canonical(problem: &Problem, model: &Model) -> Vec<usize> {
     sources
 }
 
-fn compare(a: &[f64], b: &[f64]) -> Ordering {
+pub(super) fn compare(a: &[f64], b: &[f64]) -> Ordering {
     let unequal = a
         .iter()
         .zip(b)
@@ -167,11 +158,11 @@ fn compare(a: &[f64], b: &[f64]) -> Ordering {
 
 /// The best treatment made as simple as it can be.
 pub(super) struct Simplest<'a> {
-    model: &'a Model,
-    frozen: &'a Frozen,
+    pub(super) model: &'a Model,
+    pub(super) frozen: &'a Frozen,
     pub(super) bands: Bands,
     /// The column of each line.
-    lines: Vec<usize>,
+    pub(super) lines: Vec<usize>,
 }
 
 impl<'a> Simplest<'a> {
@@ -216,8 +207,13 @@ impl<'a> Simplest<'a> {
     /// The simplest set. Where it would bring acid and base together, one of them is left
     /// out if the bands can do without it.
     fn undisputed(&self, chosen: &[f64]) -> Option<Set> {
+        let as_used = self.used(chosen).into_iter().filter(|used| *used).count();
+        let search = |barred: Set| {
+            self.search(chosen, barred)
+                .filter(|(set, _)| set.count_ones() as usize <= as_used)
+        };
         let mut barred: Set = 0;
-        let mut best = self.search(chosen, barred)?;
+        let mut best = search(barred)?;
         for vessels in [
             &[Vessel::LiquorTank, Vessel::Mash][..],
             &[Vessel::SpargeLiquor],
@@ -227,10 +223,8 @@ impl<'a> Simplest<'a> {
             if best.0 & acids == 0 || best.0 & bases == 0 {
                 continue;
             }
-            let without = [acids, bases].map(|opposed| {
-                self.search(chosen, barred | opposed)
-                    .map(|found| (opposed, found))
-            });
+            let without = [acids, bases]
+                .map(|opposed| search(barred | opposed).map(|found| (opposed, found)));
             let simpler = without.into_iter().flatten().min_by(|(_, a), (_, b)| {
                 (a.0.count_ones().cmp(&b.0.count_ones())).then(a.1.total_cmp(&b.1))
             });
@@ -261,7 +255,7 @@ impl<'a> Simplest<'a> {
     /// The lines first, in their order, then what else there is, and the rows in an order
     /// of their own; two more columns for each preferred figure, how far it is above and
     /// below.
-    fn simplex(&self, program: &Program) -> (Simplex, Vec<f64>) {
+    pub(super) fn simplex(&self, program: &Program) -> (Simplex, Vec<f64>) {
         let model = self.model;
         let order: Vec<usize> = self
             .lines
@@ -382,208 +376,6 @@ impl<'a> Simplest<'a> {
     }
 }
 
-struct Search {
-    simplex: Simplex,
-    objective: Vec<f64>,
-    /// At least one of each is needed.
-    clauses: Vec<Set>,
-    usable: Set,
-    /// Sources that have a lowest share.
-    forced: Set,
-    additions: Set,
-    /// Additions at most.
-    most: u32,
-    bounds: Vec<(f64, f64)>,
-    /// Sets that may still be looked at.
-    left: usize,
-    best: Option<(Set, f64)>,
-    hopeless: bool,
-}
-
-impl Search {
-    fn look(&mut self, set: Set) -> Option<f64> {
-        self.left = self.left.saturating_sub(1);
-        for (place, &(lower, upper)) in self.bounds.iter().enumerate() {
-            if set >> place & 1 == 1 {
-                self.simplex.bound(place, lower, upper);
-            } else {
-                self.simplex.bound(place, 0.0, 0.0);
-            }
-        }
-        match self.simplex.least(&self.objective) {
-            Found::Least(value) => {
-                self.keep(set, value);
-                Some(value)
-            }
-            Found::Nothing(helpers) => {
-                let clause = (0..self.bounds.len())
-                    .filter(|place| helpers[*place] < -NO_HELP)
-                    .fold(0, |clause: Set, place| clause | 1 << place)
-                    & self.usable
-                    & !set;
-                self.hopeless |= clause == 0;
-                self.clauses.push(clause);
-                None
-            }
-            Found::Lost => {
-                self.left = 0;
-                None
-            }
-        }
-    }
-
-    fn keep(&mut self, set: Set, value: f64) {
-        if (set & self.additions).count_ones() > self.most {
-            return;
-        }
-        let better = self.best.is_none_or(|(best, least)| {
-            let equal = (value - least).abs() <= 1e-6 * (1.0 + least.abs());
-            set.count_ones()
-                .cmp(&best.count_ones())
-                .then(if equal {
-                    set.cmp(&best)
-                } else {
-                    value.total_cmp(&least)
-                })
-                .is_lt()
-        });
-        if better {
-            self.best = Some((set, value));
-        }
-    }
-
-    /// Leaves out one line after the other, the smallest first, as long as the rest
-    /// suffices.
-    fn pare(&mut self, start: Set, amounts: &[f64]) {
-        let mut set = start;
-        if self.look(set).is_none() {
-            // The optimum itself, by a hair: there is nothing to pare.
-            self.clauses.clear();
-            self.hopeless = false;
-            return;
-        }
-        let grains = |place: usize| (amounts[place] * 1e5).round() as i64;
-        let mut order: Vec<usize> = places(start & !self.forced).collect();
-        order.sort_by_key(|place| grains(*place));
-        for place in order {
-            let without = set & !(1 << place);
-            if self.look(without).is_some() {
-                set = without;
-            }
-        }
-    }
-
-    fn deepen(&mut self) {
-        let least = self.forced.count_ones();
-        for count in least..=self.usable.count_ones() {
-            if self.best.is_some_and(|(best, _)| best.count_ones() < count) {
-                return;
-            }
-            self.branch(self.forced, 0, count - least);
-            if self.left == 0 || self.hopeless {
-                return;
-            }
-        }
-    }
-
-    /// Everything with `taken`, without `barred`, and with at most `more`.
-    fn branch(&mut self, taken: Set, barred: Set, more: u32) {
-        if self.hopeless || self.left == 0 || (taken & self.additions).count_ones() > self.most {
-            return;
-        }
-        let open = self
-            .clauses
-            .iter()
-            .filter(|clause| *clause & taken == 0)
-            .map(|clause| clause & !barred)
-            .min_by_key(|clause| (clause.count_ones(), *clause));
-        let Some(clause) = open else {
-            if self.look(taken).is_none() {
-                self.branch(taken, barred, more);
-            }
-            return;
-        };
-        if more == 0 || self.needs_more_than(more, taken, barred) {
-            return;
-        }
-        let mut barred = barred;
-        for place in places(clause) {
-            self.branch(taken | 1 << place, barred, more - 1);
-            // The branches after this one do without it, so no set is met twice.
-            barred |= 1 << place;
-        }
-    }
-
-    /// Clauses without a common line need one each.
-    fn needs_more_than(&self, more: u32, taken: Set, barred: Set) -> bool {
-        let (mut seen, mut needed) = (0, 0);
-        for clause in &self.clauses {
-            let clause = clause & !barred;
-            if clause & taken == 0 && clause & seen == 0 {
-                seen |= clause;
-                needed += 1;
-            }
-        }
-        needed > more
-    }
-}
-
-fn places(set: Set) -> impl Iterator<Item = usize> {
-    (0..Set::BITS as usize).filter(move |place| set >> place & 1 == 1)
-}
-
-/// Shares in whole parts of a hundred or a thousand near `exact`, the nearest first.
-pub(super) fn near(
-    exact: &[f64],
-    allowed: &[bool],
-    bounds: impl Fn(usize) -> (f64, f64),
-    parts: i64,
-) -> Vec<Vec<f64>> {
-    let used: Vec<usize> = (0..exact.len()).filter(|source| allowed[*source]).collect();
-    let Some((&last, others)) = used.split_last() else {
-        return Vec::new();
-    };
-    let reach = if used.len() <= 4 { -1..=2 } else { 0..=1 };
-    let mut found = vec![vec![0; exact.len()]];
-    for &source in others {
-        let floor = (exact[source] * parts as f64 + 1e-6).floor() as i64;
-        found = found
-            .into_iter()
-            .flat_map(|counts| {
-                reach.clone().map(move |step| {
-                    let mut counts = counts.clone();
-                    counts[source] = floor + step;
-                    counts
-                })
-            })
-            .take(1 << 12)
-            .collect();
-    }
-    let mut near: Vec<(i64, Vec<f64>)> = found
-        .into_iter()
-        .filter_map(|mut counts| {
-            counts[last] = parts - counts.iter().sum::<i64>();
-            let shares: Vec<f64> = counts.iter().map(|c| *c as f64 / parts as f64).collect();
-            let fits = used.iter().all(|&source| {
-                let (low, high) = bounds(source);
-                let share = shares[source];
-                share >= low - 1e-12
-                    && share <= high + 1e-12
-                    && (counts[source] == 0 || share >= LEAST_SHARE)
-            });
-            let far: f64 = shares.iter().zip(exact).map(|(a, b)| (a - b).powi(2)).sum();
-            // Equally far within the solver's accuracy is equally far.
-            fits.then_some(((far * 1e9).round() as i64, shares))
-        })
-        .collect();
-    near.sort_by(|(a, one), (b, other)| a.cmp(b).then_with(|| compare(one, other)));
-    near.into_iter().map(|(_, shares)| shares).collect()
-}
-
-/// A share below this is none, wherever the plan can do without it. Source: assumed; no
-/// water meter in a brewery tells less.
-pub(super) const LEAST_SHARE: f64 = 0.01;
-
 /// What the plan is settled on: columns, and shares that are whole per cents, tenths of
 /// them where whole ones would break what the steps before have reached, or as exact as
 /// they come where tenths would too.
@@ -609,59 +401,4 @@ pub(super) fn settled(
     Ok(simplest
         .with_round_shares(&allowed, &exact)
         .unwrap_or(exact))
-}
-
-/// Room for rounded shares, relative to the scale of a window: 0.05 mg/L in 100, and as
-/// many meq/L where the mash misses its target. Half of what rounding doses may take.
-const ROUND_ROOM: f64 = 5e-4;
-
-/// So many roundings are looked at on each grid.
-const MOST_ROUNDINGS: usize = 24;
-
-impl Bands {
-    /// A blending share may be rounded up to the next per cent.
-    fn whole_blending(&mut self, least: f64) {
-        let whole = (least * 100.0 - 1e-4).ceil() / 100.0;
-        if let Some(row) = self.rows.last_mut() {
-            row.high = row.high.max(whole);
-        }
-    }
-}
-
-impl Simplest<'_> {
-    fn with_round_shares(&self, allowed: &[bool], exact: &[f64]) -> Option<Vec<f64>> {
-        let sources = self.model.sources;
-        let bounds = |source: usize| (self.model.lower[source], self.model.upper[source].min(1.0));
-        let mut looks: Vec<(f64, Simplex, Vec<f64>)> = [0.0, ROUND_ROOM]
-            .into_iter()
-            .map(|room| {
-                let program = self.bands.program(self.model, self.frozen, room);
-                let (mut simplex, objective) = self.simplex(&program);
-                for (place, &column) in self.lines.iter().enumerate() {
-                    if column >= sources && !allowed[column] {
-                        simplex.bound(place, 0.0, 0.0);
-                    }
-                }
-                (room, simplex, objective)
-            })
-            .collect();
-        for parts in [100, 1000] {
-            let candidates = near(&exact[..sources], allowed, bounds, parts);
-            for (room, simplex, objective) in &mut looks {
-                for shares in candidates.iter().take(MOST_ROUNDINGS) {
-                    for (place, &column) in self.lines.iter().enumerate() {
-                        if column < sources {
-                            simplex.bound(place, shares[column], shares[column]);
-                        }
-                    }
-                    if matches!(simplex.least(objective), Found::Least(_))
-                        && let Ok(answer) = self.nearest(allowed, Some(shares), 0.0, *room)
-                    {
-                        return Some(answer.columns);
-                    }
-                }
-            }
-        }
-        None
-    }
 }

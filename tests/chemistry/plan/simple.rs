@@ -3,7 +3,7 @@
 use chemistry::ion::Ion;
 use chemistry::material::{Role, Substance, Vessel};
 use chemistry::plan::{
-    Dose, Outcome, Priority, Problem, Requirement, Treatment, Way, Window, evaluate, solve,
+    Dose, Ending, Outcome, Priority, Problem, Requirement, Treatment, Way, Window, evaluate, solve,
     solve_all,
 };
 use chemistry::quantity::{Fraction, MeqPerL, MgPerL, MgPerLAsCaCO3, MmolPerL};
@@ -468,4 +468,59 @@ fn a_brewery_with_three_sources_weighs_each_salt_once_and_one_acid() {
             assert!(treatment.optimum.lines() >= 11);
         }
     }
+}
+
+/// Hard water, permeate and acid, with a window for sulfate that only the hard water
+/// brings: 60 mg/L of it.
+fn sulfate_between(low: f64, high: f64) -> Vec<f64> {
+    let mut problem = bare();
+    problem.sources.push(source(hard_water(), false, 0.002));
+    problem.shelf = vec![item(Substance::LacticAcid, &[Mash])];
+    problem.spec.ions[Ion::Sulfate] = window(low, high, Priority::High);
+    let ending = solve(&problem, Way::ClosestToPreferred).expect("a plan");
+    let treatment = ending.treatment().expect("a treatment");
+    let ph = treatment.outcome.mash.as_ref().expect("a mash").ph.value;
+    assert!((ph.get() - 5.4).abs() < 0.005, "{ph}");
+    assert!(matches!(ending, Ending::Met(_)), "{ending:?}");
+    treatment.shares.iter().map(|share| share.get()).collect()
+}
+
+#[test]
+fn a_window_between_whole_per_cents_takes_tenths() {
+    // 58 % of 60 mg/L is 34.8, 59 % is 35.4, 58.4 % is 35.04.
+    assert_eq!(sulfate_between(34.7, 35.3), [0.42, 0.58]);
+    assert_eq!(sulfate_between(35.0, 35.07), [0.416, 0.584]);
+}
+
+#[test]
+fn a_limit_that_no_grid_keeps_leaves_the_shares_exact() {
+    let mut problem = bare();
+    problem.sources.push(source(hard_water(), false, 0.002));
+    problem.sources[1].lowest = Fraction::constant(0.58371);
+    problem.sources[1].highest = Fraction::constant(0.58379);
+    problem.shelf = vec![item(Substance::LacticAcid, &[Mash])];
+    for (way, ending) in solve_all(&problem).expect("plans") {
+        let treatment = ending.treatment().expect("a treatment");
+        assert!(treatment.outcome.broken.is_empty(), "{way:?}");
+        let share = treatment.shares[1].get();
+        assert!(share > 0.583709 && share < 0.583791, "{way:?}: {share}");
+        assert!((share + treatment.shares[0].get() - 1.0).abs() < 1e-12);
+    }
+}
+
+#[test]
+fn a_share_of_less_than_a_per_cent_is_none_unless_it_is_asked_for() {
+    // The cheapest takes all the hard water that 0.2 mg/L of nitrate allow: 0.33 % of it.
+    let mut problem = bare();
+    problem.sources.push(source(hard_water(), false, 0.002));
+    problem.shelf = vec![item(Substance::LacticAcid, &[Mash])];
+    problem.limits.ions[Ion::Nitrate] = Some(MgPerL::constant(0.2));
+    let shares = |problem: &Problem| -> Vec<f64> {
+        let ending = solve(problem, Way::Cheapest).expect("a plan");
+        let treatment = ending.treatment().expect("a treatment");
+        treatment.shares.iter().map(|share| share.get()).collect()
+    };
+    assert_eq!(shares(&problem), [1.0, 0.0]);
+    problem.sources[1].lowest = Fraction::constant(0.002);
+    assert!(shares(&problem)[1] >= 0.002);
 }
