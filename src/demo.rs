@@ -453,6 +453,11 @@ const CHOCOLATE: usize = 6;
 const ROAST_BARLEY: usize = 7;
 const FLAKED: usize = 8;
 
+/// A pH as somebody would type it.
+fn to_hundredths(ph: f64) -> f64 {
+    (ph * 100.0).round() / 100.0
+}
+
 async fn fill_beers(db: &Db, by: &Member, malts: &[MaltId]) -> Result<Vec<BeerId>, Error> {
     let mut made = Vec::new();
     let window = |low: f64, preferred: f64, high: f64, priority: &str| json!({"low": low, "preferred": preferred, "high": high, "priority": priority});
@@ -542,7 +547,7 @@ async fn fill_beers(db: &Db, by: &Member, malts: &[MaltId]) -> Result<Vec<BeerId
                 "nitrate_mg_per_l": {"high": 40.0, "priority": "low"},
                 "mash_calcium_mg_per_l": {"low": 40.0, "high": 200.0, "priority": "middle"},
                 "sparge_alkalinity_mg_per_l_as_caco3": {"high": 60.0, "priority": "low"},
-                "mash_ph": {"low": target - 0.1, "target": target, "high": target + 0.1},
+                "mash_ph": {"low": to_hundredths(target - 0.1), "target": target, "high": to_hundredths(target + 0.1)},
                 "highest_lactate_mg_per_l": 400.0, "highest_sodium_mg_per_l": 120.0,
             },
         }))?)?;
