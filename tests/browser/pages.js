@@ -35,3 +35,11 @@ export async function mainPages(page) {
     "settings": "/settings", "help": "/help", "help-api": "/help/api",
   }).map(([name, address]) => ({ name, address }));
 }
+
+/** The field for lactic acid in the mash of a draft; unfolded where the plan has none yet. */
+export async function mashAcid(page) {
+  const group = page.locator("fieldset", { hasText: "Into the mash" });
+  const field = group.getByLabel("Lactic acid");
+  if (!(await field.isVisible())) await group.locator("summary").click();
+  return field;
+}

@@ -4,7 +4,7 @@ import assert from "node:assert/strict";
 import { after, before, test } from "node:test";
 import { openWindow, signIn, startBrowser, startLeat } from "./leat.js";
 import { approvedPlan, ask, draftedPlan, tokenOf } from "./api.js";
-import { planIn } from "./pages.js";
+import { mashAcid, planIn } from "./pages.js";
 
 let leat, browser, token, desk;
 before(async () => {
@@ -19,8 +19,6 @@ after(async () => {
   await leat?.stop();
 });
 
-const acid = (page) => page.locator("fieldset", { hasText: "Into the mash" }).getByLabel("Lactic acid");
-
 for (const scripts of [true, false]) {
   test(`the second of two people who change one plan is told and keeps what was typed, ${scripts ? "with" : "without"} scripts`, async () => {
     const plan = await draftedPlan(leat, token);
@@ -29,14 +27,14 @@ for (const scripts of [true, false]) {
     await signIn(other.page, "brewer");
     await one.page.goto(plan);
     await other.page.goto(plan);
-    await acid(one.page).fill("111");
+    await (await mashAcid(one.page)).fill("111");
     await one.page.getByRole("button", { name: "Save these amounts" }).click();
     await one.page.locator(".flash").waitFor();
-    await acid(other.page).fill("222,5");
+    await (await mashAcid(other.page)).fill("222,5");
     await other.page.getByRole("button", { name: "Save these amounts" }).click();
     const told = await other.page.locator(".problem-summary").innerText();
     assert.match(told, /changed|meanwhile|since/i);
-    assert.equal(await acid(other.page).inputValue(), "222,5", "what was typed stays to be read");
+    assert.equal(await (await mashAcid(other.page)).inputValue(), "222,5", "what was typed stays to be read");
     const kept = await ask(leat, token, "GET", plan);
     assert.deepEqual(kept.doses.filter(({ name, vessel }) => vessel === "mash" && name.startsWith("Lactic")).map(({ planned }) => planned), [111]);
     await one.close();
@@ -47,11 +45,11 @@ for (const scripts of [true, false]) {
 test("an amount that makes no sense is told beside what is saved, and the answer comes back with the next one", async () => {
   const plan = await draftedPlan(leat, token);
   await desk.page.goto(plan);
-  await acid(desk.page).fill("a splash");
+  await (await mashAcid(desk.page)).fill("a splash");
   await desk.page.locator("#consequences .notice.danger").waitFor();
-  await acid(desk.page).fill("150");
+  await (await mashAcid(desk.page)).fill("150");
   await desk.page.locator("#consequences .notice.danger").waitFor({ state: "detached" });
-  assert.ok(await acid(desk.page).evaluate((field) => field === document.activeElement), "the field keeps its focus");
+  assert.ok(await (await mashAcid(desk.page)).evaluate((field) => field === document.activeElement), "the field keeps its focus");
 });
 
 test("a server that does not answer is said at once and forgotten when it does", async () => {
@@ -60,9 +58,9 @@ test("a server that does not answer is said at once and forgotten when it does",
   const { page } = window;
   await page.goto(plan);
   await page.route("**/consequences", (route) => route.abort(), { times: 1 });
-  await acid(page).fill("140");
+  await (await mashAcid(page)).fill("140");
   await page.locator("#consequences[data-stale]").waitFor();
-  await acid(page).fill("141");
+  await (await mashAcid(page)).fill("141");
   await page.locator("#consequences:not([data-stale])").waitFor();
   window.complaints.length = 0; // Chromium’s own words about the lost answer.
   await window.close();

@@ -4,6 +4,7 @@
 import assert from "node:assert/strict";
 import { after, before, describe, test } from "node:test";
 import { makeFirstAccount, openWindow, startBrowser, startLeat } from "./leat.js";
+import { mashAcid } from "./pages.js";
 
 const daysAgo = (days) => new Date(Date.now() - days * 86_400_000).toISOString().slice(0, 10);
 
@@ -143,13 +144,12 @@ for (const scripts of [true, false]) {
     });
 
     const mashPh = async () => Number(await page.locator("#consequences .figure-large .value").innerText());
-    const acid = () => page.locator("fieldset", { hasText: "Into the mash" }).getByLabel("Lactic acid");
 
     step("an amount is moved and everything else answers", async () => {
       const was = await mashPh();
-      if (!(await acid().isVisible())) await page.locator("fieldset", { hasText: "Into the mash" }).locator("summary").click();
-      const planned = Number((await acid().inputValue()) || "0");
-      await acid().fill(String(planned + 300));
+      const acid = await mashAcid(page);
+      const planned = Number((await acid.inputValue()) || "0");
+      await acid.fill(String(planned + 300));
       if (!scripts) {
         await press("See what they do");
         await page.getByText("They are not saved yet").waitFor();
@@ -158,7 +158,7 @@ for (const scripts of [true, false]) {
       }
       const moved = await mashPh();
       assert.ok(moved < was - 0.03, `300 mL of acid took the mash from ${was} to ${moved}`);
-      assert.equal(await acid().inputValue(), String(planned + 300), "what was typed stays");
+      assert.equal(await acid.inputValue(), String(planned + 300), "what was typed stays");
       // Nothing is saved until somebody says so.
       await page.reload();
     });
