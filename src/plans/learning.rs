@@ -80,9 +80,10 @@ pub fn taught(prediction: &MashPrediction, inputs: &Inputs) -> (Vec<Taught>, PhS
                 return None;
             };
             let malt_sd = ph_sd(item.malt.behaviour);
-            let moved = prediction.influences.iter().find(|influence| {
-                influence.kind == InfluenceKind::MaltPh && influence.name.contains(&item.malt.name)
-            })?;
+            let moved = prediction
+                .influences
+                .iter()
+                .find(|influence| influence.is_ph_of(&item.malt.name))?;
             let size = if malt_sd > 0.0 {
                 moved.effect.get() / malt_sd
             } else {
@@ -172,4 +173,89 @@ fn outcome(outcome: &Outcome) -> Option<learning::Outcome<Of>> {
         residual: Value::clamped(measured - outcome.untrained_ph),
         sd: Sd::clamped(measured_sd.hypot(outcome.other_sd)),
     })
+}
+
+#[cfg(test)]
+mod tests {
+    use chemistry::mash::{GristItem, Malt, MaltClass};
+    use chemistry::plan::{Limits, Problem, Spec, Volumes};
+    use chemistry::put_right::Aim;
+    use chemistry::quantity::{Kilograms, Litres, MgPerLAsCaCO3, Ph};
+    use chemistry::water::Water;
+
+    use super::*;
+
+    fn two_malts(first: &str, second: &str) -> Inputs {
+        let item = |name: &str, class: MaltClass, kilograms| GristItem {
+            malt: Malt {
+                name: name.into(),
+                behaviour: class.behaviour(None),
+            },
+            mass: Kilograms::constant(kilograms),
+        };
+        let label = || MaltLabel {
+            id: Some(MaltId::new()),
+            ..MaltLabel::default()
+        };
+        let litres = Litres::constant(1000.0);
+        Inputs {
+            problem: Problem {
+                sources: Vec::new(),
+                shelf: Vec::new(),
+                volumes: Volumes {
+                    liquor: litres,
+                    mash: Estimate::new(litres, 0.0),
+                    sparge: Litres::constant(0.0),
+                },
+                grist: vec![
+                    item(first, MaltClass::PaleAle, 300.0),
+                    item(second, MaltClass::Crystal, 30.0),
+                ],
+                settings: chemistry::mash::Settings::default(),
+                offset: Estimate::new(PhShift::constant(0.0), 0.0),
+                spec: Spec {
+                    ions: chemistry::ion::IonMap::from_fn(|_| None),
+                    mash_calcium: None,
+                    sulfate_to_chloride: None,
+                    sparge_alkalinity: None,
+                    mash_ph: Aim {
+                        target: Ph::constant(5.4),
+                        low: Ph::constant(5.3),
+                        high: Ph::constant(5.5),
+                    },
+                },
+                limits: Limits {
+                    ions: chemistry::ion::IonMap::from_fn(|_| None),
+                    lowest_alkalinity: MgPerLAsCaCO3::constant(0.0),
+                },
+            },
+            sources: Vec::new(),
+            malts: vec![label(), label()],
+            shelf: Vec::new(),
+            batch: litres,
+            learned: Learned::default(),
+        }
+    }
+
+    #[test]
+    fn a_malt_whose_name_holds_anothers_is_not_taken_for_it() {
+        let sizes = |inputs: &Inputs| {
+            let mash = MashInputs {
+                grist: inputs.problem.grist.clone(),
+                liquor: Water::pure(),
+                liquor_doubt: chemistry::mash::LiquorDoubt::NONE,
+                volume: inputs.problem.volumes.mash,
+                additions: Vec::new(),
+                settings: inputs.problem.settings,
+                offset: inputs.problem.offset,
+            };
+            let (malts, _) = taught(&mash.predict().unwrap(), inputs);
+            malts.iter().map(|malt| malt.size).collect::<Vec<_>>()
+        };
+        let apart = sizes(&two_malts("Base", "Dark"));
+        let alike = sizes(&two_malts("Malt", "Malt, dark"));
+        assert_eq!(apart, alike);
+        // Nine tenths of the grist move the mash more than one tenth.
+        assert!(apart[0] > 5.0 * apart[1], "{apart:?}");
+    }
 }

@@ -28,6 +28,18 @@ pub struct Influence {
     pub share: Fraction,
 }
 
+impl Influence {
+    /// Whether this is the distilled-water pH of a malt of this name.
+    #[must_use]
+    pub fn is_ph_of(&self, malt: &str) -> bool {
+        self.kind == InfluenceKind::MaltPh && self.name == about_malt("pH", malt)
+    }
+}
+
+fn about_malt(what: &str, malt: &str) -> String {
+    format!("{what} of {malt}")
+}
+
 /// What an influence is, for grouping.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
 pub enum InfluenceKind {
@@ -71,7 +83,7 @@ pub(super) fn influences(inputs: &MashInputs, balanced: f64, slope: f64) -> Vec<
                 Doubt::LacticAcid => (InfluenceKind::MaltAcid, "acid content"),
             };
             let change = item.mass.get() * (upper.demand(balanced) - lower.demand(balanced)) / 2.0;
-            moves.push((kind, format!("{what} of {}", item.malt.name), change));
+            moves.push((kind, about_malt(what, &item.malt.name), change));
         }
     }
 
