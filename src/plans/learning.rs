@@ -255,7 +255,8 @@ mod tests {
         let apart = sizes(&two_malts("Base", "Dark"));
         let alike = sizes(&two_malts("Malt", "Malt, dark"));
         assert_eq!(apart, alike);
-        // Nine tenths of the grist move the mash more than one tenth.
-        assert!(apart[0] > 5.0 * apart[1], "{apart:?}");
+        // Nine tenths of the grist move the mash more than one tenth; crystal malt buffers
+        // up to about twice as much as pale malt.
+        assert!(apart[0] > 3.0 * apart[1], "{apart:?}");
     }
 }
