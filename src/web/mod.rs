@@ -73,7 +73,6 @@ impl FromRef<App> for Db {
 /// Everything Leat answers.
 pub fn router(app: App) -> Router {
     let pages = Router::new()
-        .merge(crate::people::pages::routes())
         .merge(crate::record::pages::routes())
         .merge(crate::brewery::pages::routes())
         .merge(crate::shelf::pages::routes())
@@ -83,8 +82,10 @@ pub fn router(app: App) -> Router {
         .merge(crate::sources::pages::routes())
         .merge(help::routes())
         .fallback(problem::no_such_page);
+    // Passwords, cookies and new tokens pass outside the layer that keeps answers.
     let pages = guarded(pages)
         .layer(from_fn_with_state(app.clone(), repeat::layer))
+        .merge(guarded(crate::people::pages::routes()))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))
         .layer(from_fn_with_state(app.clone(), problem::page_layer))
         .layer(CsrfLayer::new());

@@ -32,12 +32,7 @@ struct Key {
 }
 
 /// Headers worth replaying.
-const REPLAYED: [HeaderName; 4] = [
-    header::LOCATION,
-    header::CONTENT_TYPE,
-    header::ETAG,
-    header::SET_COOKIE,
-];
+const REPLAYED: [HeaderName; 3] = [header::LOCATION, header::CONTENT_TYPE, header::ETAG];
 
 /// Claims the request's key, if it has one, in this transaction.
 pub async fn claim(tx: &mut SqliteConnection) -> Result<(), Error> {
