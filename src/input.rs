@@ -151,6 +151,25 @@ impl<'de> Deserialize<'de> for Flag {
     }
 }
 
+/// Why something is done, where a reason must be given.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct ReasonBody {
+    /// The reason, as the record book keeps it.
+    #[schema(required = true, min_length = 1, max_length = 500)]
+    pub reason: String,
+}
+
+impl ReasonBody {
+    /// The reason.
+    pub fn given(&self) -> Result<String, Error> {
+        let mut problems = Problems::new();
+        let reason = problems.text("reason", &self.reason, 500);
+        problems.finish()?;
+        Ok(reason.unwrap_or_default())
+    }
+}
+
 /// What is wrong with a body, collected field by field.
 #[derive(Debug, Default)]
 pub struct Problems {

@@ -1,6 +1,6 @@
 //! `/api/v1/beers`.
 
-use axum::extract::{Query, State};
+use axum::extract::State;
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::ion::Ion;
@@ -18,7 +18,7 @@ use crate::id::BeerId;
 use crate::input::{Flag, Number};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
 use crate::web::problem::Problem;
 
 /// A beer: grist, volumes and spec.

@@ -1,11 +1,11 @@
 //! `/api/v1/malts`, the lots under each and their titrations.
 
-use axum::extract::{Query, State};
+use axum::extract::State;
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::mash::Behaviour;
 use chemistry::quantity::{Estimate, MeqPerKg};
-use serde::{Deserialize, Serialize};
+use serde::Serialize;
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
@@ -14,10 +14,10 @@ use super::{Malt, MaltLot, QUOTED_PH, Titration, acid_demand, operations};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MaltId, MaltLotId, MaltTitrationId, UtcTime};
-use crate::input::percent;
+use crate::input::{ReasonBody, percent};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
 use crate::web::problem::Problem;
 
 /// What is known of a malt's acidity, as calculations take it.
@@ -190,14 +190,6 @@ impl From<&Titration> for TitrationBody {
             }),
         }
     }
-}
-
-/// Why something is withdrawn.
-#[derive(Debug, Default, Deserialize, utoipa::ToSchema)]
-#[serde(default)]
-pub struct WithdrawalBody {
-    /// Why, for the record book.
-    pub reason: String,
 }
 
 /// The endpoints.
@@ -407,7 +399,7 @@ async fn titrate(
 }
 
 /// Withdraw a bench titration. Its jars stay to be read.
-#[utoipa::path(post, path = "/malts/{id}/lots/{lot_id}/titrations/{titration_id}/withdrawal", tag = "malts", params(("id" = MaltId, Path), ("lot_id" = MaltLotId, Path), ("titration_id" = MaltTitrationId, Path)), request_body = WithdrawalBody, responses(
+#[utoipa::path(post, path = "/malts/{id}/lots/{lot_id}/titrations/{titration_id}/withdrawal", tag = "malts", params(("id" = MaltId, Path), ("lot_id" = MaltLotId, Path), ("titration_id" = MaltTitrationId, Path)), request_body = ReasonBody, responses(
     (status = 200, description = "Withdrawn: the lot as it is taken from now on", body = MaltLotBody),
     (status = 401, description = "No valid token", body = Problem),
     (status = 403, description = "Only a QA person's or manager's token with the scope plans may", body = Problem),
@@ -419,7 +411,7 @@ async fn withdraw(
     State(db): State<Db>,
     by: Member,
     At((id, lot_id, titration_id)): At<(MaltId, MaltLotId, MaltTitrationId)>,
-    Json(body): Json<WithdrawalBody>,
+    Json(body): Json<ReasonBody>,
 ) -> Result<impl IntoResponse, Error> {
     let lot =
         operations::withdraw_titration(&db, &by, id, lot_id, titration_id, &body.reason).await?;

@@ -63,7 +63,7 @@ impl From<Prediction> for PredictionBody {
 
 /// One window and where the figure lies.
 #[derive(Clone, Debug, Serialize, utoipa::ToSchema)]
-pub struct FindingBody {
+pub struct StandingBody {
     /// Whose window.
     requirement: String,
     /// The figure: mg/L, mg/L as CaCO₃, a ratio or a pH, as the requirement has it.
@@ -96,7 +96,7 @@ pub struct OutcomeBody {
     /// Sulfate to chloride in the whole liquor, mass by mass.
     sulfate_to_chloride: Option<f64>,
     /// Each window of the spec, the mash pH first.
-    findings: Vec<FindingBody>,
+    findings: Vec<StandingBody>,
     /// Limits that are passed, in words.
     broken_limits: Vec<String>,
     /// Water and materials, in the brewery's currency.
@@ -140,7 +140,7 @@ impl OutcomeBody {
             findings: outcome
                 .findings
                 .iter()
-                .map(|finding| FindingBody {
+                .map(|finding| StandingBody {
                     requirement: finding.requirement.to_string(),
                     value: finding.value.get(),
                     standing: words::standing_kind(finding.standing),

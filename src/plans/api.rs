@@ -1,6 +1,6 @@
 //! `/api/v1/plans` and `/api/v1/plan-previews`.
 
-use axum::extract::{Query, State};
+use axum::extract::State;
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use serde::{Deserialize, Serialize};
@@ -11,7 +11,7 @@ use super::answers::{
     DoseBody, ListingBody, MashCheckBody, OutcomeBody, PlanBody, PreviewBody, ShownBody, WayBody,
 };
 use super::asked::{
-    ClosingBody, NewMashCheckBody, NewPlanBody, PreviewInputBody, ReasonBody, TreatmentBody,
+    ApprovalBody, ClosingBody, NewMashCheckBody, NewPlanBody, PreviewInputBody, TreatmentBody,
     WeighedBody,
 };
 use super::bodies::InputsBody;
@@ -22,10 +22,10 @@ use super::{State as PlanState, closing, compute, decisions, mash_checks, weigh_
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{DoseId, MashCheckId, PlanId};
-use crate::input::Problems;
+use crate::input::{Problems, ReasonBody};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
 use crate::web::problem::Problem;
 
 /// Which plans to list.
@@ -207,7 +207,7 @@ async fn move_amounts(
 
 /// Approve a draft: its inputs freeze.
 #[utoipa::path(post, path = "/plans/{id}/approval", tag = "plans", params(("id" = PlanId, Path)),
-    request_body = ReasonBody, responses(
+    request_body = ApprovalBody, responses(
     (status = 201, description = "Approved", body = PlanBody),
     (status = 401, description = "No valid token", body = Problem),
     (status = 403, description = "Not allowed", body = Problem),
@@ -220,9 +220,9 @@ async fn approve(
     by: Member,
     At(id): At<PlanId>,
     headers: HeaderMap,
-    Json(body): Json<ReasonBody>,
+    Json(body): Json<ApprovalBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let plan = decisions::approve(&db, &by, id, if_match(&headers)?, body.optional()?).await?;
+    let plan = decisions::approve(&db, &by, id, if_match(&headers)?, body.reason()?).await?;
     Ok((
         StatusCode::CREATED,
         tagged(plan.version, PlanBody::from(&plan)),
@@ -265,7 +265,7 @@ async fn withdraw(
     Json(body): Json<ReasonBody>,
 ) -> Result<impl IntoResponse, Error> {
     by.may(Permission::DraftPlans)?;
-    let plan = decisions::withdraw(&db, &by, id, if_match(&headers)?, body.needed()?).await?;
+    let plan = decisions::withdraw(&db, &by, id, if_match(&headers)?, body.given()?).await?;
     Ok((
         StatusCode::CREATED,
         tagged(plan.version, PlanBody::from(&plan)),
@@ -378,7 +378,7 @@ async fn take_back_weighing(
     Json(body): Json<ReasonBody>,
 ) -> Result<impl IntoResponse, Error> {
     by.may(Permission::BrewBatches)?;
-    let plan = weigh_out::take_back(&db, &by, id, dose, body.needed()?).await?;
+    let plan = weigh_out::take_back(&db, &by, id, dose, body.given()?).await?;
     Ok(tagged(plan.version, PlanBody::from(&plan)))
 }
 
@@ -386,13 +386,15 @@ async fn take_back_weighing(
 #[utoipa::path(get, path = "/plans/{id}/mash-checks", tag = "plans", params(("id" = PlanId, Path)), responses(
     (status = 200, description = "Readings", body = Vec<MashCheckBody>),
     (status = 401, description = "No valid token", body = Problem),
+    (status = 404, description = "There is no such plan", body = Problem),
 ))]
 async fn checks(
     State(db): State<Db>,
     by: Member,
     At(id): At<PlanId>,
 ) -> Result<axum::Json<Vec<MashCheckBody>>, Error> {
-    let checks = mash_checks::list(&db, &by, id).await?;
+    let plan = operations::find(&db, &by, id).await?;
+    let checks = mash_checks::list(&db, &by, plan.id).await?;
     Ok(axum::Json(checks.iter().map(Into::into).collect()))
 }
 
@@ -434,7 +436,7 @@ async fn withdraw_check(
     Json(body): Json<ReasonBody>,
 ) -> Result<StatusCode, Error> {
     by.may(Permission::BrewBatches)?;
-    mash_checks::withdraw(&db, &by, id, check, body.needed()?).await?;
+    mash_checks::withdraw(&db, &by, id, check, body.given()?).await?;
     Ok(StatusCode::NO_CONTENT)
 }
 

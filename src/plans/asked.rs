@@ -208,25 +208,18 @@ impl TryFrom<TreatmentBody> for Treatment {
     }
 }
 
-/// Why something is done.
+/// An approval.
 #[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
 #[serde(default)]
-pub struct ReasonBody {
-    /// The reason, in words.
+pub struct ApprovalBody {
+    /// Why, in words. Water outside the limits for drinking water needs a reason.
+    #[schema(max_length = 500)]
     pub reason: String,
 }
 
-impl ReasonBody {
-    /// The reason, which must be there.
-    pub fn needed(&self) -> Result<String, Error> {
-        let mut problems = Problems::new();
-        let reason = problems.text("reason", &self.reason, 500);
-        problems.finish()?;
-        Ok(reason.unwrap_or_default())
-    }
-
+impl ApprovalBody {
     /// The reason, if one was given.
-    pub fn optional(&self) -> Result<Option<String>, Error> {
+    pub fn reason(&self) -> Result<Option<String>, Error> {
         let mut problems = Problems::new();
         let reason = problems.optional_text("reason", &self.reason, 500);
         problems.finish()?;

@@ -120,6 +120,12 @@ struct WeighOutPage {
     lot_field: String,
 }
 
+impl Line {
+    fn is(&self, id: &str) -> bool {
+        self.id.to_string() == id
+    }
+}
+
 fn line(plan: &Plan, dose: &Dose, units: Units, time_zone: &str) -> Line {
     let inputs = &plan.inputs;
     let item = inputs.problem.shelf.get(dose.material);
@@ -175,7 +181,7 @@ async fn weigh_out_page_of(
     let wanted = typed.value("dose");
     let at = lines
         .iter()
-        .position(|line| line.state == "next" && line.id.to_string() == wanted)
+        .position(|line| line.state == "next" && line.is(wanted))
         .or_else(|| lines.iter().position(|line| line.state == "next"));
     let steps: Vec<StepMark> = lines
         .iter()
@@ -201,9 +207,7 @@ async fn weigh_out_page_of(
         }
     }
     // What was typed belongs to the line it was typed for, never to the one after it.
-    let same = now
-        .as_ref()
-        .is_some_and(|line| line.id.to_string() == wanted);
+    let same = now.as_ref().is_some_and(|line| line.is(wanted));
     let field = |name: &str, planned: fn(&Line) -> &String| {
         if same && typed.holds(name) {
             typed.value(name).to_owned()
@@ -304,6 +308,7 @@ async fn take_back(
         ),
         Err(error) => {
             let (status, typed) = typed.refused(error)?;
+            let typed = typed.with("slip", dose.to_string());
             Ok((status, weigh_out_page_of(&db, &framer, id, typed).await?).into_response())
         }
     }

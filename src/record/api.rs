@@ -1,6 +1,6 @@
 //! `/api/v1/record`.
 
-use axum::extract::{Query, State};
+use axum::extract::State;
 use serde::Serialize;
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
@@ -11,7 +11,7 @@ use crate::error::Error;
 use crate::id::{MemberId, UtcTime};
 use crate::people::Member;
 use crate::web::App;
-use crate::web::extract::{ListQuery, Listed};
+use crate::web::extract::{ListQuery, Listed, Query};
 use crate::web::problem::Problem;
 
 /// One line of the record book.

@@ -1,6 +1,6 @@
 //! `/api/v1/materials` and the lots under each.
 
-use axum::extract::{Query, State};
+use axum::extract::State;
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::quantity::DoseAmount;
@@ -16,7 +16,7 @@ use crate::id::{MaterialId, MaterialLotId};
 use crate::input::percent;
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
 use crate::web::problem::Problem;
 
 /// A material on the shelf.

@@ -1,6 +1,6 @@
 //! `/api/v1/sources`.
 
-use axum::extract::{Query, State};
+use axum::extract::State;
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use serde::{Deserialize, Serialize};
@@ -15,7 +15,7 @@ use crate::id::{SourceId, WaterTestId};
 use crate::input::{Flag, Number};
 use crate::people::Member;
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
 use crate::web::problem::Problem;
 
 /// A source as it is sent.

@@ -7,7 +7,10 @@ use axum::routing::get;
 use utoipa::openapi::path::Operation;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::openapi::server::ServerBuilder;
-use utoipa::openapi::{ComponentsBuilder, InfoBuilder, OpenApi, OpenApiBuilder, RefOr};
+use utoipa::openapi::{
+    ComponentsBuilder, ContentBuilder, InfoBuilder, OpenApi, OpenApiBuilder, Ref, RefOr,
+    ResponseBuilder,
+};
 
 use super::App;
 
@@ -36,8 +39,8 @@ pub fn description() -> OpenApi {
         .build()
 }
 
-/// The description with what holds for every operation: a name that is its own, and
-/// the media type of refusals.
+/// The description with what holds for every operation: a name that is its own, the
+/// refusals that any of them may give, and the media type of refusals.
 fn completed(mut description: OpenApi) -> OpenApi {
     for (path, item) in &mut description.paths.paths {
         let place: Vec<&str> = path
@@ -45,14 +48,16 @@ fn completed(mut description: OpenApi) -> OpenApi {
             .filter(|part| !part.is_empty() && !part.starts_with('{'))
             .collect();
         let methods = [
-            &mut item.get,
-            &mut item.put,
-            &mut item.post,
-            &mut item.delete,
-            &mut item.patch,
+            (&mut item.get, false),
+            (&mut item.put, true),
+            (&mut item.post, true),
+            (&mut item.delete, true),
+            (&mut item.patch, true),
         ];
-        for operation in methods.into_iter().flatten() {
+        for (operation, writes) in methods {
+            let Some(operation) = operation else { continue };
             name(operation, &place);
+            refuse(operation, writes, path == "/me");
             for (status, response) in &mut operation.responses.responses {
                 if let RefOr::T(response) = response
                     && matches!(status.as_bytes().first(), Some(b'4' | b'5'))
@@ -66,6 +71,35 @@ fn completed(mut description: OpenApi) -> OpenApi {
         }
     }
     description
+}
+
+/// The refusals that stand before every operation, where it does not tell them itself.
+fn refuse(operation: &mut Operation, writes: bool, open_to_any_token: bool) {
+    let sent = operation.request_body.is_some();
+    let refusals = [
+        (!open_to_any_token, "403", "The token may not do this"),
+        (
+            writes,
+            "409",
+            "The Idempotency-Key was sent before with another request",
+        ),
+        (sent, "413", "The body is larger than 1 MB"),
+        (writes, "422", "A header cannot be read"),
+        (true, "500", "Something failed here; nothing was saved"),
+        (true, "503", "The server is busy; nothing was saved"),
+    ];
+    for (_, status, description) in refusals.into_iter().filter(|(given, ..)| *given) {
+        let problem = Ref::from_schema_name("Problem");
+        let response = ResponseBuilder::new()
+            .description(description)
+            .content(
+                "application/json",
+                ContentBuilder::new().schema(Some(problem)).build(),
+            )
+            .build();
+        let told = &mut operation.responses.responses;
+        told.entry(status.into()).or_insert(RefOr::T(response));
+    }
 }
 
 /// `revise` under `/beers/{id}` becomes `revise_beers`; what the verb says already is

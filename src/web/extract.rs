@@ -66,6 +66,27 @@ impl<T: DeserializeOwned + Send, S: Send + Sync> FromRequestParts<S> for At<T> {
     }
 }
 
+/// What a query asks for. Every value is text; one that is sent twice is no answer.
+#[derive(Debug)]
+pub struct Query<T>(pub T);
+
+impl<T: DeserializeOwned, S: Send + Sync> FromRequestParts<S> for Query<T> {
+    type Rejection = Error;
+
+    async fn from_request_parts(parts: &mut Parts, _: &S) -> Result<Self, Error> {
+        let mut asked = serde_json::Map::new();
+        let query = parts.uri.query().unwrap_or_default();
+        for (name, value) in form_urlencoded::parse(query.as_bytes()).into_owned() {
+            if asked.insert(name.clone(), value.into()).is_some() {
+                return Err(Error::field(name, "Send this once."));
+            }
+        }
+        serde_json::from_value(asked.into())
+            .map(Self)
+            .map_err(|_| Error::field("", "The query cannot be read. Check the address."))
+    }
+}
+
 /// Which part of a long list is wanted.
 #[derive(Clone, Debug, Default, Deserialize, utoipa::IntoParams)]
 #[into_params(parameter_in = Query)]

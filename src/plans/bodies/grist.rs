@@ -12,7 +12,7 @@ use crate::plans::inputs::MaltLabel;
 /// A malt with its mass and its acid-base behaviour.
 #[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
 #[serde(default)]
-pub struct MaltBody {
+pub struct PlanMaltBody {
     /// What the brewery calls it, with the lot. Malts of one name err together.
     pub name: String,
     /// An identifier of `/malts`, if it is one of them.
@@ -43,7 +43,7 @@ pub struct MaltBody {
     pub known_by: String,
 }
 
-impl MaltBody {
+impl PlanMaltBody {
     pub(super) fn check(&self, problems: &mut Problems) -> Option<(GristItem, MaltLabel)> {
         let name = problems.text("name", &self.name, 120);
         let mass = problems.quantity("kilograms", &self.kilograms, Kilograms::new);

@@ -12,9 +12,9 @@ mod grist;
 mod shelf;
 mod sources;
 
-pub use grist::MaltBody;
+pub use grist::PlanMaltBody;
 pub use shelf::ShelfItemBody;
-pub use sources::SourceBody;
+pub use sources::PlanSourceBody;
 
 use super::inputs::{Inputs, Learned};
 use crate::beers;
@@ -28,9 +28,9 @@ use crate::input::{Flag, Number, Problems};
 #[serde(default)]
 pub struct InputsBody {
     /// The waters that can be blended: at least one.
-    pub sources: Vec<SourceBody>,
+    pub sources: Vec<PlanSourceBody>,
     /// The malts of the batch: at least one with a mass.
-    pub grist: Vec<MaltBody>,
+    pub grist: Vec<PlanMaltBody>,
     /// How much water goes where.
     pub volumes: VolumesBody,
     /// What can be added.
@@ -222,13 +222,13 @@ impl From<&Inputs> for InputsBody {
                 .sources
                 .iter()
                 .zip(&inputs.sources)
-                .map(|(source, label)| SourceBody::of(source, label))
+                .map(|(source, label)| PlanSourceBody::of(source, label))
                 .collect(),
             grist: problem
                 .grist
                 .iter()
                 .zip(&inputs.malts)
-                .map(|(item, label)| MaltBody::of(item, label))
+                .map(|(item, label)| PlanMaltBody::of(item, label))
                 .collect(),
             volumes: VolumesBody {
                 batch_l: inputs.batch.get().into(),

@@ -19,7 +19,7 @@ use crate::plans::inputs::SourceLabel;
 /// A water.
 #[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
 #[serde(default)]
-pub struct SourceBody {
+pub struct PlanSourceBody {
     /// What the brewery calls it.
     pub name: String,
     /// An identifier of `/sources`, if it is one of them.
@@ -59,7 +59,7 @@ pub struct SourceBody {
     pub outside_potable: Vec<String>,
 }
 
-impl SourceBody {
+impl PlanSourceBody {
     pub(super) fn check(&self, problems: &mut Problems) -> Option<(Source, SourceLabel)> {
         let name = problems.text("name", &self.name, 80);
         let amounts = ions(problems, "ions_mg_per_l", &self.ions_mg_per_l);

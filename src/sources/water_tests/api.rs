@@ -3,7 +3,7 @@
 
 use std::collections::BTreeMap;
 
-use axum::extract::{Query, State};
+use axum::extract::State;
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::quantity::Celsius;
@@ -19,10 +19,10 @@ use super::{Line, Trust, WaterTest};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{SourceId, UtcTime, WaterTestId};
-use crate::input::{Flag, Number};
+use crate::input::{Flag, Number, ReasonBody};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
 use crate::web::problem::Problem;
 
 /// One line of a report, as it was printed.
@@ -371,14 +371,6 @@ impl From<&Check> for AssessmentBody {
             potable: check.potable.iter().map(PotableBody::from).collect(),
         }
     }
-}
-
-/// Why something is done.
-#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
-#[serde(default)]
-pub struct ReasonBody {
-    /// The reason, as the record book keeps it.
-    pub reason: String,
 }
 
 /// The endpoints.
