@@ -5,6 +5,7 @@ use askama_web::WebTemplate;
 use axum::Router;
 use axum::extract::State;
 use axum::routing::get;
+use chemistry::report::ReportingUnit;
 use serde_json::Value;
 
 use super::{Entry, operations};
@@ -127,10 +128,16 @@ fn compare(
 fn leaf(value: Option<&Value>) -> String {
     match value {
         None | Some(Value::Null) => String::new(),
-        Some(Value::String(text)) => text.clone(),
+        Some(Value::String(text)) => in_words(text),
         Some(Value::Bool(yes)) => if *yes { "yes" } else { "no" }.into(),
+        Some(Value::Object(_) | Value::Array(_)) => String::new(),
         Some(other) => other.to_string(),
     }
+}
+
+/// Keys of units and bases as reports print them; everything else as it stands.
+fn in_words(text: &str) -> String {
+    ReportingUnit::from_key(text).map_or_else(|| text.to_owned(), |unit| unit.label().to_owned())
 }
 
 async fn show(State(db): State<Db>, framer: Framer, asked: Form) -> Result<BookPage, Error> {

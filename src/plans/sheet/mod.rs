@@ -1,51 +1,52 @@
 //! What the page of a plan shows, worked out: windows as bars, the mash pH with its
 //! interval, where the doubt comes from, amounts per vessel, the four ways.
 
-use chemistry::ion::Ion;
 use chemistry::material::{SAFETY_DATA_SHEET, Vessel};
-use chemistry::plan::{Ending, Finding, Measure, Outcome, Requirement, Way, Window};
-use chemistry::put_right::Aim;
-use chemistry::quantity::{Fraction, MgPerL};
-use chemistry::water::Water;
+use chemistry::plan::{Ending, Outcome, Way};
 
-use super::inputs::{Inputs, Learned, SHOWN_IONS};
-use super::learning::Lesson;
-use super::{Plan, Prediction, compute, words};
 use crate::brewery::{Settings, Units};
 use crate::error::Error;
-use crate::web::chart::{DoubtShare, IntervalBar, Scale, WindowBar};
+use crate::plans::inputs::{Inputs, Learned};
+use crate::plans::learning::Lesson;
+use crate::plans::{Plan, Prediction, compute, words};
+use crate::web::chart::{DoubtShare, IntervalBar, WindowBar};
 use crate::web::form::Form;
 use crate::web::format;
 use crate::web::units::Measure as Shown;
 
+mod figures;
+
+pub(in crate::plans) use figures::interval;
+use figures::{doubts, waters, windows};
+
 /// Everything a treatment does, ready to show.
-pub(super) struct Facts {
+pub(in crate::plans) struct Facts {
     /// The mash pH: expected, low, high.
-    pub(super) mash: Option<(String, String, String)>,
+    pub(in crate::plans) mash: Option<(String, String, String)>,
     /// Why there is none.
-    pub(super) no_mash: String,
+    pub(in crate::plans) no_mash: String,
     /// The same drawn.
-    pub(super) interval: Option<IntervalBar>,
+    pub(in crate::plans) interval: Option<IntervalBar>,
     /// Kind and words of its badge.
-    pub(super) mash_badge: (&'static str, String),
+    pub(in crate::plans) mash_badge: (&'static str, String),
     /// Where its doubt comes from.
-    pub(super) doubts: Vec<DoubtShare>,
+    pub(in crate::plans) doubts: Vec<DoubtShare>,
     /// Buffering of the mash.
-    pub(super) buffering: String,
+    pub(in crate::plans) buffering: String,
     /// Each window.
-    pub(super) windows: Vec<WindowBar>,
+    pub(in crate::plans) windows: Vec<WindowBar>,
     /// Limits that are passed.
-    pub(super) broken: Vec<String>,
+    pub(in crate::plans) broken: Vec<String>,
     /// Water by vessel: label, before, tank, mash, sparge, whole.
-    pub(super) waters: Vec<[String; 6]>,
+    pub(in crate::plans) waters: Vec<[String; 6]>,
     /// What it costs.
-    pub(super) cost: String,
+    pub(in crate::plans) cost: String,
     /// How many windows are met, of how many.
-    pub(super) met: (usize, usize),
+    pub(in crate::plans) met: (usize, usize),
 }
 
 /// What a plan's treatment does.
-pub(super) fn consequences(plan: &Plan, outcome: &Outcome, settings: &Settings) -> Facts {
+pub(in crate::plans) fn consequences(plan: &Plan, outcome: &Outcome, settings: &Settings) -> Facts {
     let inputs = &plan.inputs;
     let prediction = compute::prediction(outcome);
     let mash_badge =
@@ -97,283 +98,40 @@ pub(super) fn consequences(plan: &Plan, outcome: &Outcome, settings: &Settings) 
     }
 }
 
-/// The mash pH as a bar: window, target, interval, and a reading where there is one.
-pub(super) fn interval(
-    prediction: Prediction,
-    aim: Aim,
-    reading: Option<(f64, f64)>,
-) -> IntervalBar {
-    let (low, high, ph) = (
-        prediction.low.get(),
-        prediction.high.get(),
-        prediction.ph.get(),
-    );
-    let read = reading
-        .iter()
-        .flat_map(|(ph, sd)| [ph - 1.645 * sd, ph + 1.645 * sd]);
-    let values = [low, high, aim.low.get(), aim.high.get()]
-        .into_iter()
-        .chain(read);
-    let scale = Scale::around(values, 0.4);
-    let step = if high - low > 1.0 { 0.5 } else { 0.1 };
-    let text = format!(
-        "Mash pH expected {}, nine times in ten between {} and {}. Window {} to {}, target {}.",
-        format::ph(ph),
-        format::ph(low),
-        format::ph(high),
-        format::ph(aim.low.get()),
-        format::ph(aim.high.get()),
-        format::ph(aim.target.get())
-    );
-    IntervalBar {
-        ticks: scale.ticks(step, 1),
-        window: Some(scale.span(
-            Some(aim.low.get()),
-            Some(aim.high.get()),
-            format!(
-                "{} to {}",
-                format::ph(aim.low.get()),
-                format::ph(aim.high.get())
-            ),
-        )),
-        target: Some(scale.mark(aim.target.get(), format::ph(aim.target.get()))),
-        interval: Some(scale.span(
-            Some(low),
-            Some(high),
-            format!("{} and {}", format::ph(low), format::ph(high)),
-        )),
-        expected: Some(scale.mark(ph, format::ph(ph))),
-        reading: reading
-            .map(|(ph, sd)| scale.mark(ph, format!("{} ± {}", format::ph(ph), format::ph(sd)))),
-        reading_doubt: reading.map(|(ph, sd)| {
-            scale.span(Some(ph - 1.645 * sd), Some(ph + 1.645 * sd), String::new())
-        }),
-        text,
-    }
-}
-
-fn doubts(outcome: &Outcome) -> Vec<DoubtShare> {
-    let Ok(mash) = &outcome.mash else {
-        return Vec::new();
-    };
-    // Less than a hundredth of the variance is nothing to look at.
-    let told: Vec<_> = mash
-        .influences
-        .iter()
-        .filter(|it| it.share.get() >= 0.01)
-        .collect();
-    told.iter()
-        .map(|influence| DoubtShare {
-            label: influence.name.clone(),
-            width: (influence.share.get() * 1000.0).round() / 10.0,
-            text: format!(
-                "{}, ± {} pH",
-                format::percent(influence.share.get()),
-                format::decimals(influence.effect.get().abs(), 3)
-            ),
-        })
-        .collect()
-}
-
-fn windows(plan: &Plan, outcome: &Outcome) -> Vec<WindowBar> {
-    let inputs = &plan.inputs;
-    let spec = &inputs.problem.spec;
-    let ions = SHOWN_IONS.iter().filter_map(|ion| {
-        let window = spec.ions[*ion]?;
-        let finding = outcome.finding(Requirement::Ion(*ion))?;
-        let doubt = blended_sd(inputs, &plan.shares, *ion);
-        Some(bar(
-            finding,
-            in_numbers(window, MgPerL::get),
-            Some(outcome.blend.ions[*ion].get()),
-            Some(doubt),
-            "mg/L",
-        ))
-    });
-    let calcium = spec.mash_calcium.and_then(|window| {
-        let finding = outcome.finding(Requirement::MashCalcium)?;
-        let before = outcome.blend.ions[Ion::Calcium].get();
-        Some(bar(
-            finding,
-            in_numbers(window, MgPerL::get),
-            Some(before),
-            None,
-            "mg/L",
-        ))
-    });
-    let ratio = spec.sulfate_to_chloride.and_then(|window| {
-        let finding = outcome.finding(Requirement::SulfateToChloride)?;
-        let before = outcome.sulfate_to_chloride_before.map(|ratio| ratio.get());
-        Some(bar(
-            finding,
-            in_numbers(window, |ratio| ratio.get()),
-            before,
-            None,
-            "",
-        ))
-    });
-    let sparge = spec.sparge_alkalinity.and_then(|window| {
-        let finding = outcome.finding(Requirement::SpargeAlkalinity)?;
-        let before = outcome.blend.alkalinity_as_caco3().get();
-        Some(bar(
-            finding,
-            in_numbers(window, |alkalinity| alkalinity.get()),
-            Some(before),
-            None,
-            "mg/L as CaCO₃",
-        ))
-    });
-    ions.chain(calcium).chain(ratio).chain(sparge).collect()
-}
-
-fn in_numbers<T: Copy>(window: Window<T>, get: impl Fn(T) -> f64) -> Window<f64> {
-    Window {
-        low: window.low.map(&get),
-        high: window.high.map(&get),
-        preferred: window.preferred.map(&get),
-        priority: window.priority,
-    }
-}
-
-/// Sources are tested independently, so their errors add by squares.
-fn blended_sd(inputs: &Inputs, shares: &[Fraction], ion: Ion) -> f64 {
-    let sum: f64 = inputs
-        .sources
-        .iter()
-        .zip(shares)
-        .map(|(source, share)| (share.get() * source.ion_sd[ion].get()).powi(2))
-        .sum();
-    sum.sqrt()
-}
-
-fn bar(
-    finding: &Finding,
-    window: Window<f64>,
-    before: Option<f64>,
-    sd: Option<f64>,
-    unit: &str,
-) -> WindowBar {
-    let ratio = matches!(finding.value, Measure::Ratio(_));
-    let figure = |value: f64| {
-        if ratio {
-            format::decimals(value, 2)
-        } else {
-            format::figure(value)
-        }
-    };
-    let with_unit = |value: f64| format!("{} {unit}", figure(value)).trim_end().to_owned();
-    let after = finding.value.get();
-    let values = [
-        Some(0.0),
-        Some(after),
-        before,
-        window.low,
-        window.high,
-        window.preferred,
-    ];
-    let scale =
-        Scale::around(values.into_iter().flatten(), if ratio { 1.0 } else { 20.0 }).from_zero();
-    let label = words::requirement(finding.requirement);
-    let window_words = match (window.low, window.high) {
-        (Some(low), Some(high)) => format!("{} to {}", figure(low), with_unit(high)),
-        (Some(low), None) => format!("from {}", with_unit(low)),
-        (None, Some(high)) => format!("up to {}", with_unit(high)),
-        (None, None) => "open".into(),
-    };
-    let standing = words::standing(finding.standing);
-    let after_words = match sd.filter(|sd| *sd > 0.0) {
-        Some(sd) => format!("{} ± {} {unit}", figure(after), format::doubt(sd)),
-        None => with_unit(after),
-    };
-    WindowBar {
-        text: format!(
-            "{label}: {}{after_words}, window {window_words}, {standing}.",
-            before
-                .map(|before| format!("{} before, then ", with_unit(before)))
-                .unwrap_or_default()
-        ),
-        label,
-        state: words::standing_kind(finding.standing),
-        state_words: standing,
-        low: window.low.map(|low| scale.place(low)),
-        high: window.high.map(|high| scale.place(high)),
-        window: scale.span(window.low, window.high, window_words),
-        preferred: window
-            .preferred
-            .map(|preferred| scale.mark(preferred, with_unit(preferred))),
-        before: before.map(|before| scale.mark(before, figure(before))),
-        after: Some(scale.mark(after, after_words)),
-        after_doubt: sd
-            .filter(|sd| *sd > 0.0)
-            .map(|sd| scale.span(Some(after - 1.645 * sd), Some(after + 1.645 * sd), "")),
-    }
-}
-
-fn waters(outcome: &Outcome) -> Vec<[String; 6]> {
-    let five = |figure: &dyn Fn(&Water) -> f64| {
-        [
-            &outcome.blend,
-            &outcome.tank,
-            &outcome.mash_liquor,
-            &outcome.sparge_liquor,
-            &outcome.whole,
-        ]
-        .map(|water| format::figure(figure(water)))
-    };
-    let row = |label: String, [blend, tank, mash, sparge, whole]: [String; 5]| {
-        [label, blend, tank, mash, sparge, whole]
-    };
-    let added = |ion: Ion| outcome.whole.ions[ion].get() > 0.05;
-    let ions = SHOWN_IONS.into_iter().chain(
-        [Ion::Lactate, Ion::Citrate, Ion::Phosphate]
-            .into_iter()
-            .filter(|ion| added(*ion)),
-    );
-    ions.map(|ion| {
-        let label = format!("{} {}, mg/L", words::capital(ion.name()), ion.symbol());
-        row(label, five(&|water: &Water| water.ions[ion].get()))
-    })
-    .chain([row(
-        "Alkalinity, mg/L as CaCO₃".into(),
-        five(&|water: &Water| water.alkalinity_as_caco3().get()),
-    )])
-    .collect()
-}
-
 /// The amounts of a draft that may go into one vessel.
-pub(super) struct Group {
+pub(in crate::plans) struct Group {
     /// The vessel.
-    pub(super) vessel: &'static str,
+    pub(in crate::plans) vessel: &'static str,
     /// Amounts that are planned.
-    pub(super) planned: Vec<AmountRow>,
+    pub(in crate::plans) planned: Vec<AmountRow>,
     /// The others.
-    pub(super) others: Vec<AmountRow>,
+    pub(in crate::plans) others: Vec<AmountRow>,
 }
 
 /// One amount of a draft.
-pub(super) struct AmountRow {
+pub(in crate::plans) struct AmountRow {
     /// Name of the amount's field.
-    pub(super) field: String,
+    pub(in crate::plans) field: String,
     /// The row's prefix, for its hidden fields.
-    pub(super) prefix: String,
+    pub(in crate::plans) prefix: String,
     /// Place on the shelf.
-    pub(super) material: String,
+    pub(in crate::plans) material: String,
     /// The vessel's key.
-    pub(super) vessel: String,
+    pub(in crate::plans) vessel: String,
     /// What it is called.
-    pub(super) name: String,
+    pub(in crate::plans) name: String,
     /// Form and strength.
-    pub(super) detail: String,
+    pub(in crate::plans) detail: String,
     /// As typed.
-    pub(super) amount: String,
+    pub(in crate::plans) amount: String,
     /// Its unit.
-    pub(super) unit: &'static str,
+    pub(in crate::plans) unit: &'static str,
     /// What is wrong with it.
-    pub(super) problem: Option<String>,
+    pub(in crate::plans) problem: Option<String>,
 }
 
 /// The rows of a treatment form, vessel by vessel.
-pub(super) fn groups(inputs: &Inputs, typed: &Form, units: Units) -> Vec<Group> {
+pub(in crate::plans) fn groups(inputs: &Inputs, typed: &Form, units: Units) -> Vec<Group> {
     let rows: Vec<AmountRow> = (0..typed.rows("doses"))
         .map(|index| {
             let material = typed.row("doses", &index, "material").to_owned();
@@ -426,27 +184,27 @@ pub(super) fn groups(inputs: &Inputs, typed: &Form, units: Units) -> Vec<Group> 
 }
 
 /// One line of the weigh-out at the desk.
-pub(super) struct DoseRow {
+pub(in crate::plans) struct DoseRow {
     /// The vessel.
-    pub(super) vessel: &'static str,
+    pub(in crate::plans) vessel: &'static str,
     /// The material.
-    pub(super) name: String,
+    pub(in crate::plans) name: String,
     /// Form and strength.
-    pub(super) detail: String,
+    pub(in crate::plans) detail: String,
     /// The lot as planned.
-    pub(super) lot: String,
+    pub(in crate::plans) lot: String,
     /// Planned, with its unit.
-    pub(super) planned: String,
+    pub(in crate::plans) planned: String,
     /// What went in, with its unit.
-    pub(super) actual: String,
+    pub(in crate::plans) actual: String,
     /// Who and when.
-    pub(super) weighed: String,
+    pub(in crate::plans) weighed: String,
     /// Whether it is a first step.
-    pub(super) step: bool,
+    pub(in crate::plans) step: bool,
 }
 
 /// Every line of the weigh-out.
-pub(super) fn dose_rows(plan: &Plan, units: Units, time_zone: &str) -> Vec<DoseRow> {
+pub(in crate::plans) fn dose_rows(plan: &Plan, units: Units, time_zone: &str) -> Vec<DoseRow> {
     let inputs = &plan.inputs;
     plan.doses
         .iter()
@@ -483,33 +241,37 @@ pub(super) fn dose_rows(plan: &Plan, units: Units, time_zone: &str) -> Vec<DoseR
 }
 
 /// One way to treat the batch.
-pub(super) struct WayCard {
+pub(in crate::plans) struct WayCard {
     /// Its key.
-    pub(super) key: &'static str,
+    pub(in crate::plans) key: &'static str,
     /// Its name.
-    pub(super) name: &'static str,
+    pub(in crate::plans) name: &'static str,
     /// Whether the draft is treated so.
-    pub(super) chosen: bool,
+    pub(in crate::plans) chosen: bool,
     /// How it ends, in one line.
-    pub(super) ending: String,
+    pub(in crate::plans) ending: String,
     /// Whether everything is met.
-    pub(super) met: bool,
+    pub(in crate::plans) met: bool,
     /// What is missed and what stands in the way.
-    pub(super) shortfalls: Vec<String>,
+    pub(in crate::plans) shortfalls: Vec<String>,
     /// Shares of the sources, in words.
-    pub(super) shares: String,
+    pub(in crate::plans) shares: String,
     /// Additions, in words.
-    pub(super) doses: Vec<String>,
+    pub(in crate::plans) doses: Vec<String>,
     /// The mash pH.
-    pub(super) mash: String,
+    pub(in crate::plans) mash: String,
     /// What it costs.
-    pub(super) cost: String,
+    pub(in crate::plans) cost: String,
     /// Whether there is anything to take.
-    pub(super) possible: bool,
+    pub(in crate::plans) possible: bool,
 }
 
 /// The four ways, side by side.
-pub(super) fn way_cards(plan: &Plan, ways: &[(Way, Ending)], settings: &Settings) -> Vec<WayCard> {
+pub(in crate::plans) fn way_cards(
+    plan: &Plan,
+    ways: &[(Way, Ending)],
+    settings: &Settings,
+) -> Vec<WayCard> {
     let inputs = &plan.inputs;
     ways.iter()
         .map(|(way, ending)| {
@@ -576,7 +338,7 @@ pub(super) fn way_cards(plan: &Plan, ways: &[(Way, Ending)], settings: &Settings
 }
 
 /// Everything the plan takes for granted, in words.
-pub(super) fn assumed(inputs: &Inputs) -> Vec<String> {
+pub(in crate::plans) fn assumed(inputs: &Inputs) -> Vec<String> {
     let sources = inputs.sources.iter().flat_map(|source| {
         source
             .assumed
@@ -607,7 +369,7 @@ pub(super) fn assumed(inputs: &Inputs) -> Vec<String> {
 }
 
 /// The grist: name, mass, how its acidity is known.
-pub(super) fn grist(inputs: &Inputs, units: Units) -> Vec<(String, String, String)> {
+pub(in crate::plans) fn grist(inputs: &Inputs, units: Units) -> Vec<(String, String, String)> {
     inputs
         .problem
         .grist
@@ -624,7 +386,7 @@ pub(super) fn grist(inputs: &Inputs, units: Units) -> Vec<(String, String, Strin
 }
 
 /// The volumes, with their units.
-pub(super) fn volumes(inputs: &Inputs, units: Units) -> Vec<(&'static str, String)> {
+pub(in crate::plans) fn volumes(inputs: &Inputs, units: Units) -> Vec<(&'static str, String)> {
     let volumes = &inputs.problem.volumes;
     vec![
         (
@@ -644,13 +406,13 @@ pub(super) fn volumes(inputs: &Inputs, units: Units) -> Vec<(&'static str, Strin
 }
 
 /// What was learned and what it changes.
-pub(super) struct LearnedWords {
+pub(in crate::plans) struct LearnedWords {
     /// In sentences.
-    pub(super) words: Vec<String>,
+    pub(in crate::plans) words: Vec<String>,
 }
 
 /// What learning does to this plan's prediction. `None` where no batch was closed yet.
-pub(super) fn learned(
+pub(in crate::plans) fn learned(
     plan: &Plan,
     outcome: &Outcome,
     lesson: &Lesson,
@@ -712,7 +474,7 @@ pub(super) fn learned(
 
 /// What can hurt about the materials of a plan: those with the same cautions together,
 /// without the line that all of them end with.
-pub(super) fn cautions(plan: &Plan) -> Vec<(String, Vec<&'static str>)> {
+pub(in crate::plans) fn cautions(plan: &Plan) -> Vec<(String, Vec<&'static str>)> {
     let mut told: Vec<(Vec<&str>, Vec<&'static str>)> = Vec::new();
     for dose in &plan.doses {
         let Some(item) = plan.inputs.problem.shelf.get(dose.material) else {

@@ -1,0 +1,172 @@
+//! The plans of the invented brewery, one in every state and a dozen closed.
+
+use chemistry::plan::Way;
+use chemistry::quantity::{Celsius, DoseAmount, Minutes, Ph, PhShift};
+use jiff::ToSpan;
+use jiff::civil::Date;
+
+use super::{Chance, days_before};
+use crate::db::Db;
+use crate::error::Error;
+use crate::id::{BeerId, PlanId};
+use crate::people::Member;
+use crate::plans::closing::{self, Closing};
+use crate::plans::decisions;
+use crate::plans::mash_checks::{self, NewMashCheck};
+use crate::plans::operations::{self as plans, NewPlan};
+use crate::plans::{Plan, Stage, compute, weigh_out};
+
+pub(super) async fn fill_plans(
+    db: &Db,
+    by: &Member,
+    today: Date,
+    beers: &[BeerId],
+    chance: &mut Chance,
+) -> Result<(), Error> {
+    let way = |number: usize| Way::ALL[number % Way::ALL.len()];
+    for number in 0..14_usize {
+        let days = i64::try_from(14 - number).unwrap_or(0) * 7 + 4;
+        let beer = beers[number % beers.len()];
+        let batch = format!("26-{:03}", 110 + number);
+        let plan = drafted(
+            db,
+            by,
+            batch,
+            beer,
+            days_before(today, days),
+            Way::ClosestToPreferred,
+        )
+        .await?;
+        let plan = decisions::approve(db, by, plan.id, None, None).await?;
+        let plan = weighed(db, by, plan, usize::MAX).await?;
+        read(db, by, &plan, -0.045 + chance.about(0.035)).await?;
+        closing::close(
+            db,
+            by,
+            plan.id,
+            None,
+            Closing {
+                mash_check_id: None,
+                counts: true,
+                note: None,
+            },
+        )
+        .await?;
+    }
+    let given_up = drafted(
+        db,
+        by,
+        "26-124".into(),
+        beers[2],
+        days_before(today, 3),
+        way(1),
+    )
+    .await?;
+    decisions::withdraw(db, by, given_up.id, None, "The cold store was full.".into()).await?;
+
+    let dosed = drafted(db, by, "26-125".into(), beers[4], today, way(0)).await?;
+    let dosed = decisions::approve(db, by, dosed.id, None, None).await?;
+    weighed(db, by, dosed, usize::MAX).await?;
+
+    let begun = drafted(db, by, "26-126".into(), beers[0], today, way(0)).await?;
+    let begun = decisions::approve(db, by, begun.id, None, None).await?;
+    let revised = decisions::revise(db, by, begun.id).await?;
+    let revised = decisions::approve(
+        db,
+        by,
+        revised.id,
+        None,
+        Some("Moved to the afternoon.".into()),
+    )
+    .await?;
+    weighed(db, by, revised, 1).await?;
+
+    let ready = drafted(
+        db,
+        by,
+        "26-127".into(),
+        beers[1],
+        today.checked_add(1.days()).unwrap_or(today),
+        way(1),
+    )
+    .await?;
+    decisions::approve(db, by, ready.id, None, None).await?;
+    drafted(
+        db,
+        by,
+        "26-128".into(),
+        beers[3],
+        today.checked_add(2.days()).unwrap_or(today),
+        way(2),
+    )
+    .await?;
+    drafted(
+        db,
+        by,
+        "26-129".into(),
+        beers[5],
+        today.checked_add(3.days()).unwrap_or(today),
+        way(3),
+    )
+    .await?;
+    Ok(())
+}
+
+async fn drafted(
+    db: &Db,
+    by: &Member,
+    batch: String,
+    beer_id: BeerId,
+    brewed_on: Date,
+    way: Way,
+) -> Result<Plan, Error> {
+    plans::draft(
+        db,
+        by,
+        NewPlan {
+            batch,
+            beer_id,
+            brewed_on,
+            way,
+            sources: Vec::new(),
+        },
+    )
+    .await
+}
+
+/// Weighs the first lines in, as planned.
+async fn weighed(db: &Db, by: &Member, plan: Plan, lines: usize) -> Result<Plan, Error> {
+    let mut after = plan.clone();
+    for dose in plan.doses.iter().take(lines) {
+        let lot = plan
+            .inputs
+            .shelf
+            .get(dose.material)
+            .map(|label| label.lot.clone())
+            .unwrap_or_default();
+        let amount = DoseAmount::clamped(dose.planned.get());
+        after = weigh_out::weigh(db, by, plan.id, dose.id, amount, lot).await?;
+    }
+    Ok(after)
+}
+
+/// Reads the mash this far from what the balance expects of it.
+async fn read(db: &Db, by: &Member, plan: &Plan, off: f64) -> Result<PlanId, Error> {
+    let mut untrained = compute::mash_as_weighed(plan);
+    untrained.offset.value = PhShift::constant(0.0);
+    let expected = untrained
+        .predict()
+        .map_err(|error| Error::internal("A demo mash has no pH", error))?;
+    let shown = ((expected.ph.value.get() + off) * 100.0).round() / 100.0;
+    let new = NewMashCheck {
+        stage: Stage::Mash,
+        minute: Minutes::constant(14.0),
+        ph: Ph::clamped(shown),
+        sample: Celsius::constant(20.0),
+        meter: "Bench meter".into(),
+        meter_sd: PhShift::constant(0.03),
+        meter_checked: true,
+    };
+    mash_checks::read(db, by, plan.id, new).await?;
+    Ok(plan.id)
+}
