@@ -326,8 +326,8 @@ async fn create_lot(
     At(id): At<MaltId>,
     Json(body): Json<NewMaltLotBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let lot = operations::create_lot(&db, &by, id, body).await?;
     let malt = operations::find(&db, &by, id).await?;
+    let lot = operations::create_lot(&db, &by, id, body).await?;
     Ok(made(&malt, &lot))
 }
 
@@ -373,8 +373,8 @@ async fn revise_lot(
     headers: HeaderMap,
     Json(body): Json<NewMaltLotBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let lot = operations::revise_lot(&db, &by, id, lot_id, body, if_match(&headers)?).await?;
     let malt = operations::find(&db, &by, id).await?;
+    let lot = operations::revise_lot(&db, &by, id, lot_id, body, if_match(&headers)?).await?;
     Ok((etag(lot.version), axum::Json(MaltLotBody::of(&malt, &lot))))
 }
 
@@ -393,8 +393,8 @@ async fn titrate(
     At((id, lot_id)): At<(MaltId, MaltLotId)>,
     Json(body): Json<NewTitrationBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let lot = operations::titrate(&db, &by, id, lot_id, body).await?;
     let malt = operations::find(&db, &by, id).await?;
+    let lot = operations::titrate(&db, &by, id, lot_id, body).await?;
     Ok(made(&malt, &lot))
 }
 
@@ -413,8 +413,8 @@ async fn withdraw(
     At((id, lot_id, titration_id)): At<(MaltId, MaltLotId, MaltTitrationId)>,
     Json(body): Json<ReasonBody>,
 ) -> Result<impl IntoResponse, Error> {
+    let malt = operations::find(&db, &by, id).await?;
     let lot =
         operations::withdraw_titration(&db, &by, id, lot_id, titration_id, &body.reason).await?;
-    let malt = operations::find(&db, &by, id).await?;
     Ok((etag(lot.version), axum::Json(MaltLotBody::of(&malt, &lot))))
 }

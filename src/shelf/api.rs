@@ -270,8 +270,8 @@ async fn create_lot(
     At(id): At<MaterialId>,
     Json(body): Json<NewMaterialLotBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let lot = operations::create_lot(&db, &by, id, body).await?;
     let material = operations::find(&db, &by, id).await?;
+    let lot = operations::create_lot(&db, &by, id, body).await?;
     let location = format!("/api/v1/materials/{id}/lots/{}", lot.id);
     Ok((
         StatusCode::CREATED,

@@ -425,7 +425,7 @@ pub async fn withdraw(
     id: WaterTestId,
     reason: &str,
 ) -> Result<WaterTest, Error> {
-    let reason = given_reason(reason)?;
+    let reason = permitted_reason(by, reason)?;
     change(db, by, id, "withdrawn", |before| {
         if before.withdrawn.is_some() {
             return Err(Error::Conflict("This test is withdrawn already".into()));
@@ -464,7 +464,7 @@ pub async fn exclude(
     id: WaterTestId,
     reason: &str,
 ) -> Result<WaterTest, Error> {
-    let reason = given_reason(reason)?;
+    let reason = permitted_reason(by, reason)?;
     change(db, by, id, "excluded", |before| {
         let after = WaterTest {
             trust: Trust::Excluded(reason.clone()),
@@ -482,7 +482,7 @@ pub async fn trust(
     id: WaterTestId,
     reason: &str,
 ) -> Result<WaterTest, Error> {
-    let reason = given_reason(reason)?;
+    let reason = permitted_reason(by, reason)?;
     change(db, by, id, "trusted", |before| {
         let trust = match before.assess()?.verdict {
             Verdict::DoesNotAddUp => Trust::TrustedDespite(reason.clone()),
@@ -497,7 +497,9 @@ pub async fn trust(
     .await
 }
 
-fn given_reason(text: &str) -> Result<String, Error> {
+/// Whoever may not change a test is told so before anything else.
+fn permitted_reason(by: &Member, text: &str) -> Result<String, Error> {
+    by.may(Permission::EnterWaterTests)?;
     let mut problems = Problems::new();
     let reason = problems.text("reason", text, 500);
     problems.finish()?;
