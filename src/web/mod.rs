@@ -87,8 +87,9 @@ pub fn router(app: App) -> Router {
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .merge(guarded(crate::people::pages::routes()))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))
+        .layer(CsrfLayer::new())
         .layer(from_fn_with_state(app.clone(), problem::page_layer))
-        .layer(CsrfLayer::new());
+        .layer(never_kept());
 
     let (api, description) = OpenApiRouter::with_openapi(api::description())
         .merge(crate::people::api::routes())
@@ -103,7 +104,8 @@ pub fn router(app: App) -> Router {
     let api = guarded(api.fallback(problem::no_such_endpoint))
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .layer(from_fn_with_state(app.clone(), session::token_layer))
-        .layer(from_fn(problem::api_layer));
+        .layer(from_fn(problem::api_layer))
+        .layer(never_kept());
 
     Router::new()
         .nest("/api/v1", api)
@@ -133,6 +135,14 @@ pub fn router(app: App) -> Router {
         .layer(PropagateRequestIdLayer::x_request_id())
         .layer(SetRequestIdLayer::x_request_id(MakeRequestUuid))
         .with_state(app)
+}
+
+/// What one person is shown is kept by no browser and no proxy for the next.
+fn never_kept() -> SetResponseHeaderLayer<HeaderValue> {
+    SetResponseHeaderLayer::if_not_present(
+        header::CACHE_CONTROL,
+        HeaderValue::from_static("no-store"),
+    )
 }
 
 /// What keeps one request from harming the others. It stands inside the layers that turn

@@ -42,10 +42,6 @@ pub async fn cookie_layer(State(app): State<App>, mut request: Request, next: Ne
         response.extensions_mut().insert(member);
     }
     response
-        .headers_mut()
-        .entry(header::CACHE_CONTROL)
-        .or_insert(header::HeaderValue::from_static("no-store"));
-    response
 }
 
 /// Finds out who holds the bearer token. A cookie is never accepted here.
