@@ -68,6 +68,21 @@ impl Error {
         }])
     }
 
+    /// The same problems of a part of a body, told from the whole: `under` maps the name
+    /// of each field.
+    #[must_use]
+    pub fn renamed(self, under: impl Fn(&str) -> String) -> Self {
+        match self {
+            Self::Invalid(mut problems) => {
+                for problem in &mut problems {
+                    problem.field = under(&problem.field);
+                }
+                Self::Invalid(problems)
+            }
+            other => other,
+        }
+    }
+
     /// An unexpected failure while doing `context`.
     pub fn internal(
         context: &'static str,

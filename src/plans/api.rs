@@ -455,8 +455,9 @@ async fn preview(
     let does = match body.treatment {
         None => None,
         Some(treatment) => {
-            let treatment = Treatment::try_from(treatment)?;
-            let outcome = compute::evaluate(&inputs, &treatment.shares, &treatment.doses)?;
+            let outcome = Treatment::try_from(treatment)
+                .and_then(|it| compute::evaluate(&inputs, &it.shares, &it.doses))
+                .map_err(|error| error.renamed(|field| format!("treatment.{field}")))?;
             Some(OutcomeBody::of(&inputs, &outcome))
         }
     };

@@ -118,7 +118,7 @@ pub struct TreatmentBody {
     /// Share of each source, per cent, in the order of the inputs. They must add up to
     /// 100.
     pub shares_percent: Vec<Number>,
-    /// What goes where. Amounts of nothing are left out.
+    /// What goes where. An amount of nothing, or none, is left out.
     pub doses: Vec<DoseInputBody>,
 }
 
@@ -171,12 +171,7 @@ impl TryFrom<TreatmentBody> for Treatment {
             );
         }
         let mut doses = Vec::new();
-        for (index, dose) in body
-            .doses
-            .iter()
-            .enumerate()
-            .filter(|(_, dose)| !dose.amount.is_missing())
-        {
+        for (index, dose) in body.doses.iter().enumerate() {
             problems.within(format!("doses.{index}"), |problems| {
                 let whole = |value: f64| {
                     if (0.0..1000.0).contains(&value) && value.fract() == 0.0 {
@@ -187,7 +182,11 @@ impl TryFrom<TreatmentBody> for Treatment {
                 };
                 let material = problems.quantity("material", &dose.material, whole);
                 let vessel = problems.choice("vessel", &dose.vessel, Vessel::from_key);
-                let amount = problems.quantity("amount", &dose.amount, DoseAmount::new);
+                let amount = if dose.amount.is_missing() {
+                    Some(DoseAmount::constant(0.0))
+                } else {
+                    problems.quantity("amount", &dose.amount, DoseAmount::new)
+                };
                 if let (Some(material), Some(vessel), Some(amount)) = (material, vessel, amount) {
                     doses.push(plan::Dose {
                         material,

@@ -36,6 +36,10 @@ impl<T: DeserializeOwned, S: Send + Sync> FromRequest<S> for Json<T> {
                     "The body is too large or was cut off. Send at most 1 MB.",
                 )
             })?;
+        // A list would else be read as the fields of the body in their order.
+        if bytes.trim_ascii_start().first() != Some(&b'{') {
+            return Err(Error::field("", "Send the body as a JSON object, {…}."));
+        }
         let reader = &mut serde_json::Deserializer::from_slice(&bytes);
         let body = serde_path_to_error::deserialize(reader).map_err(|error| {
             let path = error.path().to_string().replace('[', ".").replace(']', "");

@@ -97,7 +97,7 @@ async fn apply(db: &Db, request: Request, next: Next) -> Result<Response, Error>
     digest.update(parts.uri.path());
     digest.update(&body);
     let key = Key {
-        actor: member.id.to_string(),
+        actor: actor(&member),
         key,
         fingerprint: Base64UrlUnpadded::encode_string(&digest.finalize()),
     };
@@ -121,6 +121,20 @@ async fn apply(db: &Db, request: Request, next: Next) -> Result<Response, Error>
         return Ok(response);
     }
     store(db, &key, response).await
+}
+
+/// Whose key it is: somebody with these very rights. A token is never answered what only
+/// a wider one was told.
+fn actor(member: &Member) -> String {
+    let rights = match &member.scopes {
+        None => "session".to_owned(),
+        Some(scopes) => scopes
+            .iter()
+            .map(|it| it.key())
+            .collect::<Vec<_>>()
+            .join(" "),
+    };
+    format!("{} {} {rights}", member.id, member.role.key())
 }
 
 fn form_key(content_type: Option<&HeaderValue>, body: &Bytes) -> Option<String> {
