@@ -142,7 +142,8 @@ pub struct Seen {
 }
 
 impl Seen {
-    async fn of(response: Response) -> Self {
+    /// What a response brought.
+    pub async fn of(response: Response) -> Self {
         let status = response.status();
         let path = response.url().path().to_owned();
         Self {
@@ -239,6 +240,12 @@ impl Browser {
         self.post(action, &fields).await
     }
 
+    /// A request of this browser, yet to be sent.
+    pub fn request(&self, method: &str, path: &str) -> reqwest::RequestBuilder {
+        self.client
+            .request(method.parse().unwrap(), format!("{}{path}", self.address))
+    }
+
     /// Posts fields as a form would.
     pub async fn post(&self, path: &str, fields: &[(String, String)]) -> Seen {
         let request = self
@@ -317,10 +324,38 @@ pub struct Answer {
     pub status: u16,
     pub etag: Option<String>,
     pub location: Option<String>,
+    pub kind: Option<String>,
     pub body: Value,
 }
 
 impl Answer {
+    /// What a response brought.
+    pub async fn of(response: Response) -> Self {
+        let header = |name: &str| {
+            response
+                .headers()
+                .get(name)
+                .and_then(|v| v.to_str().ok())
+                .map(str::to_owned)
+        };
+        let (etag, location) = (header("etag"), header("location"));
+        let kind = header("content-type");
+        let status = response.status().as_u16();
+        let text = response.text().await.unwrap();
+        let body = if text.is_empty() {
+            Value::Null
+        } else {
+            serde_json::from_str(&text).unwrap_or(Value::String(text))
+        };
+        Self {
+            status,
+            etag,
+            location,
+            kind,
+            body,
+        }
+    }
+
     /// The pointers of a problem.
     pub fn pointers(&self) -> Vec<&str> {
         self.body["errors"]
@@ -354,38 +389,21 @@ impl Program {
         body: Option<&Value>,
         headers: &[(&str, &str)],
     ) -> Answer {
-        let url = format!("{}/api/v1{path}", self.address);
-        let mut request = self
-            .client
-            .request(method.parse().unwrap(), url)
-            .bearer_auth(&self.token);
+        let mut request = self.request(method, path);
         for (name, value) in headers {
             request = request.header(*name, *value);
         }
         if let Some(body) = body {
             request = request.json(body);
         }
-        let response = request.send().await.unwrap();
-        let header = |name: &str| {
-            response
-                .headers()
-                .get(name)
-                .and_then(|v| v.to_str().ok())
-                .map(str::to_owned)
-        };
-        let (etag, location) = (header("etag"), header("location"));
-        let status = response.status().as_u16();
-        let text = response.text().await.unwrap();
-        let body = if text.is_empty() {
-            Value::Null
-        } else {
-            serde_json::from_str(&text).unwrap_or(Value::String(text))
-        };
-        Answer {
-            status,
-            etag,
-            location,
-            body,
-        }
+        Answer::of(request.send().await.unwrap()).await
+    }
+
+    /// A request with the token, yet to be sent.
+    pub fn request(&self, method: &str, path: &str) -> reqwest::RequestBuilder {
+        let url = format!("{}/api/v1{path}", self.address);
+        self.client
+            .request(method.parse().unwrap(), url)
+            .bearer_auth(&self.token)
     }
 }

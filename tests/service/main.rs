@@ -12,6 +12,7 @@ mod brew_day;
 mod brewhouse;
 mod desk;
 mod help;
+mod hostile;
 mod malts;
 mod people;
 mod plans;
