@@ -2,7 +2,7 @@
 //!
 //! [`forms`] types poison into every form that pages offer, [`bodies`] sends it to every
 //! endpoint of the description, [`rights`] asks as everybody for everything, [`door`]
-//! tries the locks.
+//! tries the locks, [`races`] lets many write at once.
 
 use serde_json::{Value, json};
 
@@ -12,6 +12,7 @@ mod bodies;
 mod description;
 mod door;
 mod forms;
+mod races;
 mod rights;
 
 /// A brewery with a plan in every state and something of everything.

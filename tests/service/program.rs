@@ -1,13 +1,19 @@
 //! The program itself: its settings, its back-ups, and what is left when it is killed.
 
+use std::collections::BTreeSet;
 use std::io::{BufRead, BufReader};
 use std::path::Path;
 use std::process::{Child, Command, Output, Stdio};
+use std::sync::{Arc, Mutex};
+use std::time::Duration;
 
 use leat::db::Db;
-use leat::people::operations;
+use leat::input::Problems;
+use leat::people::operations::{self, NewAccount};
 use leat::people::passwords::Passwords;
+use leat::people::{Member, Role, Scope};
 use reqwest::Client;
+use serde_json::json;
 
 use crate::desk::{Desk, PASSWORD};
 
@@ -111,6 +117,108 @@ async fn what_was_answered_is_there_after_the_program_is_killed() {
         .await
         .unwrap();
     assert_eq!(answer.url().path(), "/");
+}
+
+#[tokio::test(flavor = "multi_thread", worker_threads = 2)]
+async fn killed_again_and_again_while_it_writes_it_loses_nothing_it_answered() {
+    let folder = tempfile::tempdir().unwrap();
+    let file = folder.path().join("leat.sqlite");
+    let token = {
+        let db = Db::open(&file).await.unwrap();
+        let passwords = Passwords::start().unwrap();
+        let mut problems = Problems::new();
+        let account = NewAccount::check("manager", "Mara", "manager", PASSWORD, &mut problems);
+        let account = operations::create_first(&db, &passwords, account.unwrap()).await;
+        let by = Member {
+            id: account.unwrap().id,
+            name: "Mara".into(),
+            role: Role::Manager,
+            scopes: None,
+        };
+        let scopes = Scope::ALL.to_vec();
+        let made = operations::create_token(&db, &by, "probe".into(), scopes, 1).await;
+        db.close().await;
+        made.unwrap().1.0
+    };
+    let answered = Arc::new(Mutex::new(BTreeSet::new()));
+    for round in 0..10 {
+        let mut running = Running::start(&file);
+        let writers: Vec<_> = (0..3)
+            .map(|writer| {
+                let (address, token) = (running.address.clone(), token.clone());
+                let answered = answered.clone();
+                tokio::spawn(async move {
+                    let client = Client::new();
+                    for number in 0.. {
+                        let name = format!("Well {round} {writer} {number}");
+                        let sent = enter(&client, &address, &token, &name).await;
+                        // The program was killed: whether this one is there is not known.
+                        let Ok(answer) = sent else { return name };
+                        assert_eq!(answer.status(), 201);
+                        answered.lock().unwrap().insert(name);
+                    }
+                    unreachable!("it writes until it is killed")
+                })
+            })
+            .collect();
+        tokio::time::sleep(Duration::from_millis(60 + 37 * round)).await;
+        running.process.kill().unwrap();
+        running.process.wait().unwrap();
+        let mut open = Vec::new();
+        for writer in writers {
+            open.push(writer.await.unwrap());
+        }
+
+        let running = Running::start(&file);
+        let client = Client::new();
+        // Sent again with its key, the one in doubt is there, once.
+        let again = open.iter().map(|name| {
+            let (client, address) = (client.clone(), running.address.clone());
+            let (token, name) = (token.clone(), name.clone());
+            tokio::spawn(async move { enter(&client, &address, &token, &name).await })
+        });
+        for answer in again.collect::<Vec<_>>() {
+            let status = answer.await.unwrap().unwrap().status().as_u16();
+            assert!([201, 409].contains(&status), "{status}");
+        }
+        answered.lock().unwrap().extend(open);
+    }
+    let db = Db::open(&file).await.unwrap();
+    let mut reader = db.reader().await.unwrap();
+    let sound: (String,) = sqlx::query_as("PRAGMA integrity_check")
+        .fetch_one(&mut *reader)
+        .await
+        .unwrap();
+    assert_eq!(sound.0, "ok");
+    let sources: Vec<(String,)> = sqlx::query_as("SELECT name FROM sources ORDER BY name")
+        .fetch_all(&mut *reader)
+        .await
+        .unwrap();
+    let sources: Vec<String> = sources.into_iter().map(|(name,)| name).collect();
+    let expected: Vec<String> = answered.lock().unwrap().iter().cloned().collect();
+    assert!(expected.len() > 40, "only {} were written", expected.len());
+    assert_eq!(sources, expected);
+    let told: (i64,) =
+        sqlx::query_as("SELECT count(*) FROM record_entries WHERE subject_kind = 'source'")
+            .fetch_one(&mut *reader)
+            .await
+            .unwrap();
+    assert_eq!(told.0, i64::try_from(expected.len()).unwrap());
+}
+
+async fn enter(
+    client: &Client,
+    address: &str,
+    token: &str,
+    name: &str,
+) -> Result<reqwest::Response, reqwest::Error> {
+    client
+        .post(format!("{address}/api/v1/sources"))
+        .bearer_auth(token)
+        .header("idempotency-key", name)
+        .json(&json!({"name": name, "kind": "borehole", "days_between_tests": 30}))
+        .send()
+        .await
 }
 
 /// The program as it runs; dropping it kills it.
