@@ -10,80 +10,10 @@ use crate::input::Problems;
 use crate::people::{Member, Permission};
 use crate::record;
 
-/// What a list of beers is sorted by.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
-pub enum Sort {
-    /// The name.
-    #[default]
-    Name,
-    /// The size of a batch.
-    Batch,
-    /// The mass of the grist.
-    Grist,
-    /// Mash liquor per mass of grist.
-    Thickness,
-    /// The mash pH aimed at.
-    MashPh,
-}
-
-impl Sort {
-    /// Every order.
-    pub const ALL: [Self; 5] = [
-        Self::Name,
-        Self::Batch,
-        Self::Grist,
-        Self::Thickness,
-        Self::MashPh,
-    ];
-
-    /// As an address carries it.
-    pub const fn key(self) -> &'static str {
-        match self {
-            Self::Name => "name",
-            Self::Batch => "batch",
-            Self::Grist => "grist",
-            Self::Thickness => "thickness",
-            Self::MashPh => "mash_ph",
-        }
-    }
-
-    /// The order with this key.
-    pub fn from_key(key: &str) -> Option<Self> {
-        Self::ALL.into_iter().find(|sort| sort.key() == key)
-    }
-}
-
-/// Which part of the list of beers a page shows, and how.
-#[derive(Clone, Copy, Debug)]
-pub struct ListAs {
-    /// Those in use, or the retired ones.
-    pub in_use: bool,
-    /// Sorted by this.
-    pub sort: Sort,
-    /// Largest, or last of the alphabet, first.
-    pub descending: bool,
-    /// How many at most.
-    pub limit: i64,
-    /// After how many.
-    pub offset: i64,
-}
-
-/// One page of beers, and how many there are in all.
-pub async fn page(db: &Db, by: &Member, list: &ListAs) -> Result<(Vec<Beer>, i64), Error> {
+/// The beers in use, or the retired ones, by name.
+pub async fn list(db: &Db, by: &Member, in_use: bool) -> Result<Vec<Beer>, Error> {
     by.may(Permission::Read)?;
-    store::page(&mut *db.snapshot().await?, list).await
-}
-
-/// Every beer in use, by name.
-pub async fn list_in_use(db: &Db, by: &Member) -> Result<Vec<Beer>, Error> {
-    let all = ListAs {
-        in_use: true,
-        sort: Sort::Name,
-        descending: false,
-        limit: -1,
-        offset: 0,
-    };
-    Ok(page(db, by, &all).await?.0)
+    store::list(&mut *db.snapshot().await?, in_use).await
 }
 
 /// Up to `limit` beers made after this one, retired ones too, in the order they were

@@ -9,7 +9,7 @@ use axum::response::{IntoResponse, Redirect, Response};
 use axum::routing::{get, post};
 
 use super::api::{NewBeerBody, SpecBody};
-use super::operations::{self, ListAs, Sort};
+use super::operations;
 use super::spec::{IONS, Priority, USUAL_PRIORITY};
 use super::words::{SpecLine, priority_words, spec_lines, thickness};
 use super::{Beer, NewBeer, Spec};
@@ -26,10 +26,11 @@ use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
+use crate::web::list::{Column, Pager, Sorted};
 use crate::web::units::{Measure, shown_in, typed_in_si};
 
 /// Beers on one page of the list.
-const PAGE: i64 = 50;
+const PAGE: usize = 50;
 /// Empty lines the grist of a new beer begins with.
 const FIRST_LINES: usize = 4;
 
@@ -64,88 +65,47 @@ struct BeerRow {
     mash_ph: String,
 }
 
-/// A column head that sorts.
-struct Column {
-    label: &'static str,
-    address: String,
-    direction: &'static str,
-    kind: &'static str,
-}
+const COLUMNS: [(&str, &str, &str); 5] = [
+    ("name", "Beer", ""),
+    ("batch", "Batch", "number"),
+    ("grist", "Grist", "number"),
+    ("thickness", "Mash thickness", "number"),
+    ("mash_ph", "Mash pH", "number"),
+];
 
-struct Pager {
-    earlier: Option<String>,
-    later: Option<String>,
-    words: String,
-}
-
-fn columns(shown: &ListAs) -> Vec<Column> {
-    let of = if shown.in_use { "" } else { "&retired=yes" };
-    [
-        (Sort::Name, "Beer", ""),
-        (Sort::Batch, "Batch", "number"),
-        (Sort::Grist, "Grist", "number"),
-        (Sort::Thickness, "Mash thickness", "number"),
-        (Sort::MashPh, "Mash pH", "number"),
-    ]
-    .map(|(sort, label, kind)| {
-        let sorted = shown.sort == sort;
-        let turn = if sorted && !shown.descending {
-            "&order=descending"
-        } else {
-            ""
-        };
-        Column {
-            label,
-            address: format!("/beers?sort={}{turn}{of}", sort.key()),
-            direction: match (sorted, shown.descending) {
-                (false, _) => "none",
-                (true, false) => "ascending",
-                (true, true) => "descending",
-            },
-            kind,
-        }
-    })
-    .into()
-}
-
-fn pager(shown: &ListAs, on_page: usize, total: i64) -> Option<Pager> {
-    let on_page = i64::try_from(on_page).unwrap_or(0);
-    let (first, last) = (shown.offset + 1, shown.offset + on_page);
-    if total <= PAGE {
-        return None;
-    }
-    let address = |offset: i64| {
-        let order = if shown.descending {
-            "&order=descending"
-        } else {
-            ""
-        };
-        let of = if shown.in_use { "" } else { "&retired=yes" };
-        format!("/beers?sort={}{order}{of}&after={offset}", shown.sort.key())
+/// Sorts what comes by name.
+fn sort(beers: &mut [Beer], by: &Sorted) {
+    let figure = |beer: &Beer| match by.key {
+        "batch" => beer.volumes.batch_l.get(),
+        "grist" => beer.grist_mass().get(),
+        "thickness" => beer.litres_per_kilogram(),
+        "mash_ph" => beer.spec.mash_ph.target.get(),
+        _ => 0.0,
     };
-    Some(Pager {
-        earlier: (shown.offset > 0).then(|| address((shown.offset - PAGE).max(0))),
-        later: (last < total).then(|| address(last)),
-        words: format!("{first} to {last} of {total}"),
-    })
+    beers.sort_by(|a, b| figure(a).total_cmp(&figure(b)));
+    if by.descending {
+        beers.reverse();
+    }
 }
 
 async fn list(State(db): State<Db>, framer: Framer, asked: Form) -> Result<ListPage, Error> {
-    let shown = ListAs {
-        in_use: !asked.ticked("retired"),
-        sort: Sort::from_key(asked.value("sort")).unwrap_or_default(),
-        descending: asked.value("order") == "descending",
-        limit: PAGE,
-        offset: asked.value("after").parse::<i64>().unwrap_or(0).max(0),
+    let retired = asked.ticked("retired");
+    let mut beers = operations::list(&db, &framer.member, !retired).await?;
+    let sorted = Sorted::asked(&asked, &COLUMNS);
+    sort(&mut beers, &sorted);
+    let address = if retired {
+        "/beers?retired=yes"
+    } else {
+        "/beers"
     };
-    let (beers, total) = operations::page(&db, &framer.member, &shown).await?;
+    let (beers, pager) = Pager::cut(beers, PAGE, &asked, &sorted.address(address));
     let page = framer.page("Beers", "beers").await;
     let units = page.settings.units;
     Ok(ListPage {
-        columns: columns(&shown),
-        retired: !shown.in_use,
+        columns: sorted.columns(address, &COLUMNS),
+        retired,
         may_change: page.can(Permission::KeepBeers),
-        pager: pager(&shown, beers.len(), total),
+        pager,
         beers: beers
             .into_iter()
             .map(|beer| BeerRow {

@@ -8,7 +8,6 @@ use chemistry::quantity::{Kilograms, Litres, MassRatio, MgPerL, MgPerLAsCaCO3, P
 use sqlx::sqlite::SqliteRow;
 use sqlx::{Row, SqliteConnection};
 
-use super::operations::{ListAs, Sort};
 use super::spec::{IONS, Priority, Spec, USUAL_PRIORITY, Window};
 use super::{Beer, GristLine, Volumes};
 use crate::error::Error;
@@ -190,40 +189,18 @@ pub(super) async fn list_after(
     complete(db, beers).await
 }
 
-/// One page of the beers in use or of the retired ones, and how many there are.
-pub(super) async fn page(
-    db: &mut SqliteConnection,
-    list: &ListAs,
-) -> Result<(Vec<Beer>, i64), Error> {
-    let total = sqlx::query_scalar("SELECT count(*) FROM beers WHERE in_use = ?")
-        .bind(list.in_use)
-        .fetch_one(&mut *db)
-        .await?;
-    let order = match list.sort {
-        Sort::Name => "name",
-        Sort::Batch => "batch_l",
-        Sort::Grist => "grist_kilograms",
-        Sort::Thickness => "mash_l / grist_kilograms",
-        Sort::MashPh => "mash_ph_target",
-    };
-    let direction = if list.descending { "DESC" } else { "ASC" };
-    // Order and direction are texts from above, never what somebody typed.
-    let query = format!(
+/// The beers in use, or the retired ones, by name.
+pub(super) async fn list(db: &mut SqliteConnection, in_use: bool) -> Result<Vec<Beer>, Error> {
+    let rows = sqlx::query(
         "SELECT id, name, batch_l, mash_l, sparge_l, mash_ph_target, mash_ph_low, mash_ph_high,
                 highest_lactate_mg_per_l, highest_sodium_mg_per_l, notes, in_use, version
-         FROM beers
-         JOIN (SELECT beer_id, sum(kilograms) AS grist_kilograms FROM beer_grist GROUP BY beer_id)
-             ON beer_id = id
-         WHERE in_use = ? ORDER BY {order} {direction}, name LIMIT ? OFFSET ?"
-    );
-    let rows = sqlx::query(sqlx::AssertSqlSafe(query))
-        .bind(list.in_use)
-        .bind(list.limit)
-        .bind(list.offset)
-        .fetch_all(&mut *db)
-        .await?;
+         FROM beers WHERE in_use = ? ORDER BY name",
+    )
+    .bind(in_use)
+    .fetch_all(&mut *db)
+    .await?;
     let beers = rows.iter().map(beer).collect::<Result<_, _>>()?;
-    Ok((complete(db, beers).await?, total))
+    complete(db, beers).await
 }
 
 pub(super) async fn insert(db: &mut SqliteConnection, beer: &Beer) -> Result<(), sqlx::Error> {

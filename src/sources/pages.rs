@@ -29,6 +29,7 @@ use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
+use crate::web::list::Pager;
 use crate::web::units::{Measure, shown_in, typed_in_si};
 
 /// Tests on one page of a source's list.
@@ -218,12 +219,6 @@ impl TodaysView {
             verdict: badge(todays.verdict),
         }
     }
-}
-
-struct Pager {
-    earlier: Option<String>,
-    later: Option<String>,
-    words: String,
 }
 
 fn pager(id: SourceId, figure: &str, skip: i64, shown: usize, total: i64) -> Option<Pager> {

@@ -37,7 +37,7 @@ struct NewSource {
 
 async fn new_page(db: &Db, framer: &Framer, typed: Form) -> Result<NewPage, Error> {
     let page = framer.page("New plan", "plans").await;
-    let beers = beers::operations::list_in_use(db, &framer.member).await?;
+    let beers = beers::operations::list(db, &framer.member, true).await?;
     let mut offered = Vec::new();
     for source in sources::operations::list(db, &framer.member)
         .await?
