@@ -478,8 +478,7 @@ async fn revise(
     }
     let saved = async {
         let new = typed_beer(&db, &typed).await?;
-        let version = typed.value("version").parse().ok();
-        operations::revise(&db, &framer.member, id, new, version).await
+        operations::revise(&db, &framer.member, id, new, typed.version()).await
     };
     match saved.await {
         Ok(_) => Ok(Redirect::to(&format!("/beers/{id}?done=saved")).into_response()),
@@ -496,8 +495,7 @@ async fn retire(
     At(id): At<BeerId>,
     typed: Form,
 ) -> Result<Redirect, Error> {
-    let version = typed.value("version").parse().ok();
-    operations::set_in_use(&db, &framer.member, id, false, version).await?;
+    operations::set_in_use(&db, &framer.member, id, false, typed.version()).await?;
     Ok(Redirect::to(&format!("/beers/{id}?done=retired")))
 }
 
@@ -507,7 +505,6 @@ async fn take_back(
     At(id): At<BeerId>,
     typed: Form,
 ) -> Result<Redirect, Error> {
-    let version = typed.value("version").parse().ok();
-    operations::set_in_use(&db, &framer.member, id, true, version).await?;
+    operations::set_in_use(&db, &framer.member, id, true, typed.version()).await?;
     Ok(Redirect::to(&format!("/beers/{id}?done=restored")))
 }

@@ -57,11 +57,10 @@ async fn show(State(db): State<Db>, framer: Framer) -> Result<SettingsPage, Erro
 }
 
 async fn revise(State(db): State<Db>, framer: Framer, typed: Form) -> Result<Response, Error> {
-    let version = typed.value("version").parse().ok();
     let saved = async {
         framer.member.may(Permission::KeepSettings)?;
         let new: Settings = typed.body::<SettingsBody>()?.try_into()?;
-        operations::revise(&db, &framer.member, new, version).await
+        operations::revise(&db, &framer.member, new, typed.version()).await
     };
     match saved.await {
         Ok(_) => Ok(Redirect::to("/settings?done=saved").into_response()),

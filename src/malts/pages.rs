@@ -302,11 +302,10 @@ async fn revise(
     At(id): At<MaltId>,
     typed: Form,
 ) -> Result<Response, Error> {
-    let version = typed.value("version").parse().ok();
     let saved = async {
         framer.member.may(Permission::KeepMalts)?;
         let new: Malt = typed.body::<NewMaltBody>()?.try_into()?;
-        operations::revise(&db, &framer.member, id, new, version).await
+        operations::revise(&db, &framer.member, id, new, typed.version()).await
     };
     match saved.await {
         Ok(_) => Ok(Redirect::to(&format!("/malts/{id}?done=saved")).into_response()),
@@ -456,10 +455,17 @@ async fn revise_lot(
     At((id, lot_id)): At<(MaltId, MaltLotId)>,
     typed: Form,
 ) -> Result<Response, Error> {
-    let version = typed.value("version").parse().ok();
     let saved = async {
         framer.member.may(Permission::KeepLots)?;
-        operations::revise_lot(&db, &framer.member, id, lot_id, typed.body()?, version).await
+        operations::revise_lot(
+            &db,
+            &framer.member,
+            id,
+            lot_id,
+            typed.body()?,
+            typed.version(),
+        )
+        .await
     };
     match saved.await {
         Ok(_) => Ok(Redirect::to(&format!("/malts/{id}/lots/{lot_id}?done=saved")).into_response()),

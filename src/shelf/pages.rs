@@ -525,11 +525,10 @@ async fn revise(
     typed: Form,
 ) -> Result<Response, Error> {
     let units = brewery::operations::settings(&db).await?.units;
-    let version = typed.value("version").parse().ok();
     let saved = async {
         framer.member.may(Permission::KeepShelf)?;
         let new = typed_material(&typed, units)?;
-        operations::revise(&db, &framer.member, id, new, version).await
+        operations::revise(&db, &framer.member, id, new, typed.version()).await
     };
     match saved.await {
         Ok(_) => Ok(Redirect::to(&format!("/shelf/{id}?done=saved")).into_response()),
@@ -630,10 +629,9 @@ async fn revise_lot(
     typed: Form,
 ) -> Result<Response, Error> {
     let (material, _) = operations::find_lot_of(&db, &framer.member, id, lot_id).await?;
-    let version = typed.value("version").parse().ok();
     let saved = async {
         framer.member.may(Permission::KeepLots)?;
-        operations::revise_lot(&db, &framer.member, lot_id, typed.body()?, version).await
+        operations::revise_lot(&db, &framer.member, lot_id, typed.body()?, typed.version()).await
     };
     match saved.await {
         Ok(_) => Ok(Redirect::to(&format!("/shelf/{id}?done=saved")).into_response()),

@@ -391,9 +391,16 @@ async fn revise(
 ) -> Result<Response, Error> {
     framer.member.may(Permission::KeepSources)?;
     let units = framer.page("", "").await.settings.units;
-    let version = typed.value("version").parse().ok();
-    let saved =
-        async { operations::revise(&db, &framer.member, id, sent(&typed, units)?, version).await };
+    let saved = async {
+        operations::revise(
+            &db,
+            &framer.member,
+            id,
+            sent(&typed, units)?,
+            typed.version(),
+        )
+        .await
+    };
     match saved.await {
         Ok(_) => Ok(Redirect::to(&format!("/sources/{id}?done=saved")).into_response()),
         Err(error) => {

@@ -53,6 +53,11 @@ impl Form {
         self.value(&format!("{list}.{index}.{name}"))
     }
 
+    /// The version of what was shown when the form was opened.
+    pub fn version(&self) -> Option<i64> {
+        self.value("version").parse().ok()
+    }
+
     /// Whether a box was ticked.
     pub fn ticked(&self, name: &str) -> bool {
         matches!(self.value(name), "on" | "true" | "yes" | "1")

@@ -5,7 +5,6 @@ use askama_web::WebTemplate;
 use axum::extract::State;
 use axum::response::{IntoResponse, Redirect, Response};
 
-use super::version;
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::PlanId;
@@ -92,7 +91,7 @@ pub(super) async fn close(
             &db,
             &framer.member,
             id,
-            version(&typed),
+            typed.version(),
             Closing::try_from(body)?,
         )
         .await

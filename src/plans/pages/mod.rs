@@ -357,10 +357,6 @@ async fn answer<T>(
     }
 }
 
-fn version(typed: &Form) -> Option<i64> {
-    typed.value("version").parse().ok()
-}
-
 async fn move_amounts(
     State(db): State<Db>,
     framer: Framer,
@@ -370,7 +366,7 @@ async fn move_amounts(
     let moved = async {
         framer.member.may(Permission::DraftPlans)?;
         let treatment = typed_treatment(&db, &framer, id, &typed).await?;
-        operations::move_amounts(&db, &framer.member, id, version(&typed), &treatment).await
+        operations::move_amounts(&db, &framer.member, id, typed.version(), &treatment).await
     };
     let moved = moved.await;
     answer(&db, &framer, id, typed, moved, |plan| {
@@ -480,7 +476,7 @@ async fn take_way(
             &db,
             &framer.member,
             id,
-            version(&typed),
+            typed.version(),
             way.unwrap_or(Way::ClosestToPreferred),
         )
         .await
@@ -498,7 +494,7 @@ async fn refresh(
     At(id): At<PlanId>,
     typed: Form,
 ) -> Result<Response, Error> {
-    let read = operations::refresh(&db, &framer.member, id, version(&typed)).await;
+    let read = operations::refresh(&db, &framer.member, id, typed.version()).await;
     answer(&db, &framer, id, typed, read, |plan| {
         format!("/plans/{}?done=read", plan.id)
     })
@@ -518,7 +514,7 @@ async fn reschedule(
         problems.finish()?;
         match (batch, day) {
             (Some(batch), Some(day)) => {
-                operations::reschedule(&db, &framer.member, id, version(&typed), batch, day).await
+                operations::reschedule(&db, &framer.member, id, typed.version(), batch, day).await
             }
             _ => Err(Error::field("", "Fill in every field.")),
         }
@@ -540,7 +536,7 @@ async fn approve(
         let mut problems = Problems::new();
         let reason = problems.optional_text("reason", typed.value("reason"), 500);
         problems.finish()?;
-        decisions::approve(&db, &framer.member, id, version(&typed), reason).await
+        decisions::approve(&db, &framer.member, id, typed.version(), reason).await
     };
     let approved = approved.await;
     answer(&db, &framer, id, typed, approved, |plan| {
@@ -555,7 +551,7 @@ async fn take_back_approval(
     At(id): At<PlanId>,
     typed: Form,
 ) -> Result<Response, Error> {
-    let taken = decisions::take_back_approval(&db, &framer.member, id, version(&typed)).await;
+    let taken = decisions::take_back_approval(&db, &framer.member, id, typed.version()).await;
     answer(&db, &framer, id, typed, taken, |plan| {
         format!("/plans/{}?done=unapproved", plan.id)
     })
@@ -576,7 +572,7 @@ async fn withdraw(
             &db,
             &framer.member,
             id,
-            version(&typed),
+            typed.version(),
             reason.unwrap_or_default(),
         )
         .await

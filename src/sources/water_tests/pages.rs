@@ -428,10 +428,9 @@ async fn correct(
         let page = form(&db, &framer, source, Some(&before), typed).await?;
         return Ok(page.into_response());
     }
-    let version = typed.value("version").parse().ok();
     let saved = async {
         let new = typed.body::<WaterTestBody>()?.try_into()?;
-        operations::correct(&db, &framer.member, id, new, version).await
+        operations::correct(&db, &framer.member, id, new, typed.version()).await
     };
     match saved.await {
         Ok(_) => Ok(Redirect::to(&format!("/water-tests/{id}?done=saved")).into_response()),
