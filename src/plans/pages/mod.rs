@@ -338,23 +338,33 @@ async fn show(State(db): State<Db>, framer: Framer, At(id): At<PlanId>) -> Resul
     show_page(&db, &framer, id, None, None).await
 }
 
-/// The page of the plan again when `changed` was refused, with what stood in the way; to
-/// `to` when it was done.
-async fn answer<T>(
+/// To the plan once it is `changed`, saying what was `done`; its page again when that was
+/// refused.
+async fn answer(
     db: &Db,
     framer: &Framer,
     id: PlanId,
     typed: Form,
-    changed: Result<T, Error>,
-    to: impl FnOnce(T) -> String,
+    changed: Result<Plan, Error>,
+    done: &str,
 ) -> Result<Response, Error> {
     match changed {
-        Ok(done) => Ok(Redirect::to(&to(done)).into_response()),
-        Err(error) => {
-            let (status, typed) = typed.refused(error)?;
-            Ok((status, show_page(db, framer, id, Some(typed), None).await?).into_response())
-        }
+        Ok(plan) => Ok(Redirect::to(&format!("/plans/{}?done={done}", plan.id)).into_response()),
+        Err(error) => refused(db, framer, id, typed, error).await,
     }
+}
+
+/// The page of the plan as typed, with what stood in the way.
+async fn refused(
+    db: &Db,
+    framer: &Framer,
+    id: PlanId,
+    typed: Form,
+    error: Error,
+) -> Result<Response, Error> {
+    let (status, typed) = typed.refused(error)?;
+    let page = show_page(db, framer, id, Some(typed), None).await?;
+    Ok((status, page).into_response())
 }
 
 async fn move_amounts(
@@ -369,10 +379,7 @@ async fn move_amounts(
         operations::move_amounts(&db, &framer.member, id, typed.version(), &treatment).await
     };
     let moved = moved.await;
-    answer(&db, &framer, id, typed, moved, |plan| {
-        format!("/plans/{}?done=saved", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, moved, "saved").await
 }
 
 async fn typed_treatment(
@@ -442,14 +449,7 @@ async fn show_trial(
         Ok(tried) => Ok(show_page(&db, &framer, id, Some(typed), Some(tried))
             .await?
             .into_response()),
-        Err(error) => {
-            let (status, typed) = typed.refused(error)?;
-            Ok((
-                status,
-                show_page(&db, &framer, id, Some(typed), None).await?,
-            )
-                .into_response())
-        }
+        Err(error) => refused(&db, &framer, id, typed, error).await,
     }
 }
 
@@ -482,10 +482,7 @@ async fn take_way(
         .await
     };
     let taken = taken.await;
-    answer(&db, &framer, id, typed, taken, |plan| {
-        format!("/plans/{}?done=saved", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, taken, "saved").await
 }
 
 async fn refresh(
@@ -495,10 +492,7 @@ async fn refresh(
     typed: Form,
 ) -> Result<Response, Error> {
     let read = operations::refresh(&db, &framer.member, id, typed.version()).await;
-    answer(&db, &framer, id, typed, read, |plan| {
-        format!("/plans/{}?done=read", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, read, "read").await
 }
 
 async fn reschedule(
@@ -520,10 +514,7 @@ async fn reschedule(
         }
     };
     let moved = moved.await;
-    answer(&db, &framer, id, typed, moved, |plan| {
-        format!("/plans/{}?done=saved", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, moved, "saved").await
 }
 
 async fn approve(
@@ -539,10 +530,7 @@ async fn approve(
         decisions::approve(&db, &framer.member, id, typed.version(), reason).await
     };
     let approved = approved.await;
-    answer(&db, &framer, id, typed, approved, |plan| {
-        format!("/plans/{}?done=approved", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, approved, "approved").await
 }
 
 async fn take_back_approval(
@@ -552,10 +540,7 @@ async fn take_back_approval(
     typed: Form,
 ) -> Result<Response, Error> {
     let taken = decisions::take_back_approval(&db, &framer.member, id, typed.version()).await;
-    answer(&db, &framer, id, typed, taken, |plan| {
-        format!("/plans/{}?done=unapproved", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, taken, "unapproved").await
 }
 
 async fn withdraw(
@@ -578,10 +563,7 @@ async fn withdraw(
         .await
     };
     let withdrawn = withdrawn.await;
-    answer(&db, &framer, id, typed, withdrawn, |plan| {
-        format!("/plans/{}?done=withdrawn", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, withdrawn, "withdrawn").await
 }
 
 async fn revise(
@@ -591,10 +573,7 @@ async fn revise(
     typed: Form,
 ) -> Result<Response, Error> {
     let revised = decisions::revise(&db, &framer.member, id).await;
-    answer(&db, &framer, id, typed, revised, |plan| {
-        format!("/plans/{}?done=revised", plan.id)
-    })
-    .await
+    answer(&db, &framer, id, typed, revised, "revised").await
 }
 
 /// Where a check's page returns to.
