@@ -101,6 +101,27 @@ impl From<sqlx::Error> for Error {
     }
 }
 
+/// Refuses a change to something that somebody else changed since it was read. `read`:
+/// the version the caller read, where it told; `what`: “this malt”.
+pub fn refuse_stale(read: Option<i64>, stored: i64, what: &str) -> Result<(), Error> {
+    if read.is_some_and(|read| read != stored) {
+        return Err(Error::Conflict(format!(
+            "Somebody else changed {what} meanwhile. Reload and change it again"
+        )));
+    }
+    Ok(())
+}
+
+/// What a failed statement means where a UNIQUE rule keeps what `field` says apart:
+/// `message` when there is one of the kind already.
+pub fn taken(error: sqlx::Error, field: &str, message: String) -> Error {
+    if breaks_unique(&error) {
+        Error::field(field, message)
+    } else {
+        error.into()
+    }
+}
+
 /// Whether a statement failed because a UNIQUE rule of the schema was broken.
 pub fn breaks_unique(error: &sqlx::Error) -> bool {
     matches!(error, sqlx::Error::Database(e) if e.is_unique_violation())

@@ -4,7 +4,7 @@ use super::api::NewBeerBody;
 use super::store::{self, MaltState};
 use super::{Beer, NewBeer};
 use crate::db::Db;
-use crate::error::{Error, breaks_unique};
+use crate::error::{Error, refuse_stale, taken};
 use crate::id::BeerId;
 use crate::input::Problems;
 use crate::people::{Member, Permission};
@@ -69,7 +69,7 @@ pub async fn revise(
     let before = store::find(&mut tx, id)
         .await?
         .ok_or(Error::NotFound("beer"))?;
-    refuse_stale(&before, read_version)?;
+    refuse_stale(read_version, before.version, "this beer")?;
     let malts = store::malts(&mut tx).await?;
     check_malts(&malts, &new)?;
     let after = new.kept_as(id, before.version + 1);
@@ -105,7 +105,7 @@ pub async fn set_in_use(
     let before = store::find(&mut tx, id)
         .await?
         .ok_or(Error::NotFound("beer"))?;
-    refuse_stale(&before, read_version)?;
+    refuse_stale(read_version, before.version, "this beer")?;
     if before.in_use == in_use {
         return Ok(before);
     }
@@ -154,22 +154,12 @@ fn check_malts(malts: &[MaltState], new: &NewBeer) -> Result<(), Error> {
     problems.finish()
 }
 
-fn refuse_stale(before: &Beer, read_version: Option<i64>) -> Result<(), Error> {
-    if read_version.is_some_and(|read| read != before.version) {
-        return Err(Error::Conflict(format!(
-            "Somebody else changed “{}” meanwhile. Reload it and change it again",
-            before.name
-        )));
-    }
-    Ok(())
-}
-
 fn name_taken(error: sqlx::Error, name: &str) -> Error {
-    if breaks_unique(&error) {
-        Error::field("name", format!("A beer named “{name}” exists already."))
-    } else {
-        error.into()
-    }
+    taken(
+        error,
+        "name",
+        format!("A beer named “{name}” exists already."),
+    )
 }
 
 /// The beer as the record book keeps it: malts by the name of that day.

@@ -6,7 +6,7 @@ use super::entered::{NewMaltBody, NewMaltLotBody, NewTitrationBody};
 use super::{KnownMalt, Malt, MaltLot, store};
 use crate::brewery;
 use crate::db::Db;
-use crate::error::{Error, breaks_unique};
+use crate::error::{Error, refuse_stale, taken};
 use crate::id::{MaltId, MaltLotId, MaltTitrationId, UtcTime};
 use crate::input::Problems;
 use crate::people::{Member, Permission};
@@ -105,14 +105,11 @@ pub async fn create(db: &Db, by: &Member, new: Malt) -> Result<Malt, Error> {
 
 async fn save(tx: &mut SqliteConnection, malt: &Malt) -> Result<(), Error> {
     store::save(tx, malt).await.map_err(|error| {
-        if breaks_unique(&error) {
-            Error::field(
-                "name",
-                format!("A malt named “{}” exists already.", malt.name),
-            )
-        } else {
-            error.into()
-        }
+        taken(
+            error,
+            "name",
+            format!("A malt named “{}” exists already.", malt.name),
+        )
     })
 }
 
@@ -127,7 +124,7 @@ pub async fn revise(
     by.may(Permission::KeepMalts)?;
     let mut tx = db.begin().await?;
     let before = known(store::find(&mut tx, id).await?)?;
-    fresh(read_version, before.version, "this malt")?;
+    refuse_stale(read_version, before.version, "this malt")?;
     let after = Malt {
         id,
         version: before.version + 1,
@@ -139,15 +136,6 @@ pub async fn revise(
     record::append(&mut tx, by, entry).await?;
     tx.commit().await?;
     Ok(after)
-}
-
-fn fresh(read: Option<i64>, stored: i64, what: &str) -> Result<(), Error> {
-    if read.is_some_and(|read| read != stored) {
-        return Err(Error::Conflict(format!(
-            "Somebody else changed {what} meanwhile. Reload and change it again"
-        )));
-    }
-    Ok(())
 }
 
 /// The lots of a malt: the current one, then the newest first.
@@ -234,7 +222,7 @@ pub async fn revise_lot(
     let mut tx = db.begin().await?;
     let (malt, before) = both(&mut tx, malt, lot).await?;
     let new = body.lot_of(&malt, today)?;
-    fresh(read_version, before.version, "this lot")?;
+    refuse_stale(read_version, before.version, "this lot")?;
     let after = MaltLot {
         id: lot,
         version: before.version + 1,
@@ -289,14 +277,11 @@ async fn record_lot(
 
 async fn save_lot(tx: &mut SqliteConnection, lot: &MaltLot) -> Result<(), Error> {
     store::save_lot(tx, lot).await.map_err(|error| {
-        if breaks_unique(&error) {
-            Error::field(
-                "code",
-                format!("A lot “{}” of this malt exists already.", lot.code),
-            )
-        } else {
-            error.into()
-        }
+        taken(
+            error,
+            "code",
+            format!("A lot “{}” of this malt exists already.", lot.code),
+        )
     })
 }
 

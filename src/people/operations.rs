@@ -6,7 +6,7 @@ use sha2::{Digest, Sha256};
 use super::passwords::Passwords;
 use super::{Account, ApiToken, Member, Permission, Role, Scope, store};
 use crate::db::Db;
-use crate::error::{Error, breaks_unique};
+use crate::error::{Error, taken};
 use crate::id::{ApiTokenId, MemberId, UtcTime};
 use crate::input::Problems;
 use crate::record;
@@ -162,14 +162,11 @@ pub async fn create(
     store::insert(&mut tx, &account, &hash)
         .await
         .map_err(|error| {
-            if breaks_unique(&error) {
-                Error::field(
-                    "login",
-                    format!("Somebody signs in as “{}” already.", account.login),
-                )
-            } else {
-                error.into()
-            }
+            taken(
+                error,
+                "login",
+                format!("Somebody signs in as “{}” already.", account.login),
+            )
         })?;
     record::append(
         &mut tx,

@@ -7,7 +7,7 @@ use super::entered::{NewMaterialBody, NewMaterialLotBody};
 use super::{Material, MaterialLot, store};
 use crate::brewery;
 use crate::db::Db;
-use crate::error::{Error, breaks_unique};
+use crate::error::{Error, refuse_stale, taken};
 use crate::id::{MaterialId, MaterialLotId};
 use crate::people::{Member, Permission};
 use crate::record::{self, Change};
@@ -120,14 +120,11 @@ async fn insert(tx: &mut SqliteConnection, by: &Member, new: &Material) -> Resul
 
 async fn save(tx: &mut SqliteConnection, material: &Material) -> Result<(), Error> {
     store::save(tx, material).await.map_err(|error| {
-        if breaks_unique(&error) {
-            Error::field(
-                "name",
-                format!("A material named “{}” exists already.", material.name),
-            )
-        } else {
-            error.into()
-        }
+        taken(
+            error,
+            "name",
+            format!("A material named “{}” exists already.", material.name),
+        )
     })
 }
 
@@ -143,7 +140,7 @@ pub async fn revise(
     by.may(Permission::KeepShelf)?;
     let mut tx = db.begin().await?;
     let before = known(store::find(&mut tx, id).await?)?;
-    fresh(read_version, before.version, "this material")?;
+    refuse_stale(read_version, before.version, "this material")?;
     if new.substance != before.substance {
         return Err(Error::field(
             "substance",
@@ -165,15 +162,6 @@ pub async fn revise(
     record::append(&mut tx, by, entry).await?;
     tx.commit().await?;
     Ok(after)
-}
-
-fn fresh(read: Option<i64>, stored: i64, what: &str) -> Result<(), Error> {
-    if read.is_some_and(|read| read != stored) {
-        return Err(Error::Conflict(format!(
-            "Somebody else changed {what} meanwhile. Reload and change it again"
-        )));
-    }
-    Ok(())
 }
 
 /// The lots of a material: the current one, then the newest first.
@@ -257,7 +245,7 @@ pub async fn revise_lot(
     let before = known_lot(store::find_lot(&mut tx, id).await?)?;
     let material = known(store::find(&mut tx, before.material_id).await?)?;
     let new = body.lot_of(&material, today)?;
-    fresh(read_version, before.version, "this lot")?;
+    refuse_stale(read_version, before.version, "this lot")?;
     let after = MaterialLot {
         id,
         version: before.version + 1,
@@ -312,14 +300,11 @@ async fn step_aside(
 
 async fn save_lot(tx: &mut SqliteConnection, lot: &MaterialLot) -> Result<(), Error> {
     store::save_lot(tx, lot).await.map_err(|error| {
-        if breaks_unique(&error) {
-            Error::field(
-                "code",
-                format!("A lot “{}” of this material exists already.", lot.code),
-            )
-        } else {
-            error.into()
-        }
+        taken(
+            error,
+            "code",
+            format!("A lot “{}” of this material exists already.", lot.code),
+        )
     })
 }
 

@@ -11,7 +11,7 @@ use super::water_tests::store::{self as tests, Which};
 use super::{NewSource, Source, TodaysWater, store, todays_water as water};
 use crate::brewery;
 use crate::db::Db;
-use crate::error::{Error, breaks_unique};
+use crate::error::{Error, refuse_stale, taken};
 use crate::id::SourceId;
 use crate::input::Problems;
 use crate::people::{Member, Permission};
@@ -69,7 +69,7 @@ pub async fn create(db: &Db, by: &Member, new: NewSource) -> Result<Source, Erro
     let mut tx = db.begin().await?;
     store::insert(&mut tx, &source)
         .await
-        .map_err(|error| taken(error, &source.name))?;
+        .map_err(|error| name_taken(error, &source.name))?;
     let entry = record::Change::created("source", source.id, &source.name, &describe(&source));
     record::append(&mut tx, by, entry).await?;
     tx.commit().await?;
@@ -89,15 +89,11 @@ pub async fn revise(
     let before = store::find(&mut tx, id)
         .await?
         .ok_or(Error::NotFound("source"))?;
-    if read_version.is_some_and(|read| read != before.version) {
-        return Err(Error::Conflict(
-            "Somebody else changed this source meanwhile. Reload and change it again".into(),
-        ));
-    }
+    refuse_stale(read_version, before.version, "this source")?;
     let after = new.into_source(id, before.version + 1);
     store::update(&mut tx, &after)
         .await
-        .map_err(|error| taken(error, &after.name))?;
+        .map_err(|error| name_taken(error, &after.name))?;
     let entry = record::Change::changed(
         "source",
         id,
@@ -134,12 +130,12 @@ pub async fn set_in_use(db: &Db, by: &Member, id: SourceId, in_use: bool) -> Res
     Ok(after)
 }
 
-fn taken(error: sqlx::Error, name: &str) -> Error {
-    if breaks_unique(&error) {
-        Error::field("name", format!("A source named “{name}” exists already."))
-    } else {
-        error.into()
-    }
+fn name_taken(error: sqlx::Error, name: &str) -> Error {
+    taken(
+        error,
+        "name",
+        format!("A source named “{name}” exists already."),
+    )
 }
 
 fn describe(source: &Source) -> serde_json::Value {
