@@ -7,6 +7,7 @@ use axum::Router;
 use axum::extract::State;
 use axum::response::{IntoResponse, Redirect, Response};
 use axum::routing::{get, post};
+use chemistry::quantity::DoseAmount;
 
 use super::asked::{METER_SD, NewMashCheckBody, WeighedBody};
 use super::mash_checks::{self, NewMashCheck};
@@ -114,6 +115,7 @@ struct WeighOutPage {
     done: Vec<Line>,
     steps: Vec<StepMark>,
     steps_words: String,
+    waters: Vec<String>,
     open: bool,
     may_brew: bool,
     actual_field: String,
@@ -217,7 +219,20 @@ async fn weigh_out_page_of(
     };
     let actual = field("actual", |line| &line.amount);
     let lot = field("lot", |line| &line.lot);
+    let liquor = plan.inputs.problem.volumes.liquor.get();
+    let waters = plan
+        .inputs
+        .sources
+        .iter()
+        .zip(&plan.shares)
+        .filter(|(_, share)| share.get() > 0.0)
+        .map(|(source, share)| {
+            let volume = units.show(Measure::Volume, share.get() * liquor);
+            format!("{volume} {}", source.name)
+        })
+        .collect();
     Ok(WeighOutPage {
+        waters,
         may_brew: page.can(Permission::BrewBatches),
         actual_field: actual,
         lot_field: lot,
@@ -266,6 +281,9 @@ async fn weigh(
         let (actual, lot) = typed_in_si(&typed, units, &fields)
             .body::<WeighedBody>()?
             .check()?;
+        if !typed.ticked("sure") {
+            near_the_plan(&plan, dose, actual, units)?;
+        }
         weigh_out::weigh(&db, &framer.member, id, dose, actual, lot).await
     };
     match weighed.await {
@@ -288,6 +306,29 @@ async fn weigh(
             Ok((status, weigh_out_page_of(&db, &framer, id, typed).await?).into_response())
         }
     }
+}
+
+/// Asks once more about an amount that is far from the planned one: most are a digit too
+/// many. Nothing at all is a line left out on purpose, and is taken as said.
+///
+/// Source: assumed. A tenth is more than any scale or cylinder errs.
+fn near_the_plan(plan: &Plan, id: DoseId, actual: DoseAmount, units: Units) -> Result<(), Error> {
+    let Some(dose) = plan.doses.iter().find(|dose| dose.id == id) else {
+        return Ok(());
+    };
+    let item = plan.inputs.problem.shelf.get(dose.material);
+    let step = item.map_or(0.0, |item| item.step.get());
+    let (actual, planned) = (actual.get(), dose.planned.get());
+    if actual == 0.0 || (actual - planned).abs() <= (0.1 * planned).max(1.01 * step) {
+        return Ok(());
+    }
+    let (shown, unit) = words::dose(units, &plan.inputs, dose.material, planned);
+    let mut problems = Problems::new();
+    problems.add(
+        "actual",
+        format!("{shown} {unit} is planned. Mend the figure, or tick below that this went in."),
+    );
+    problems.finish()
 }
 
 async fn take_back(
@@ -342,6 +383,26 @@ async fn new_check_page(
     let expected = compute::as_weighed(&plan)
         .ok()
         .and_then(|outcome| compute::prediction(&outcome));
+    // After a first step the reading before it foretells more than the plan does.
+    let after_step = mash_checks::list(db, &framer.member, id)
+        .await?
+        .into_iter()
+        .rev()
+        .filter(|check| check.withdrawn.is_none())
+        .find(|check| check.stage == Stage::Mash)
+        .filter(|check| {
+            plan.doses
+                .iter()
+                .any(|dose| dose.mash_check == Some(check.id) && dose.weighed.is_some())
+        })
+        .and_then(|check| check.advised.step)
+        .map(|step| {
+            format!(
+                "{} ± {} after the step that went in",
+                format::ph(step.expected_ph),
+                format::ph(step.expected_sd)
+            )
+        });
     let not_in = plan
         .doses
         .iter()
@@ -355,13 +416,15 @@ async fn new_check_page(
             typed.value("stage"),
         ),
         temperature_unit: page.settings.units.label(Measure::Temperature),
-        expected: expected.map_or_else(String::new, |it| {
-            format!(
-                "{}, 90 % between {} and {}",
-                format::ph(it.ph.get()),
-                format::ph(it.low.get()),
-                format::ph(it.high.get())
-            )
+        expected: after_step.unwrap_or_else(|| {
+            expected.map_or_else(String::new, |it| {
+                format!(
+                    "{}, 90 % between {} and {}",
+                    format::ph(it.ph.get()),
+                    format::ph(it.low.get()),
+                    format::ph(it.high.get())
+                )
+            })
         }),
         not_in,
         page,

@@ -216,6 +216,14 @@ fn advise(plan: &Plan, earlier: &[MashCheck], new: &NewMashCheck) -> Result<Advi
             corrected: corrected.map(|(corrected, _)| corrected),
         },
     );
+    let foreseen_amiss = matches!(
+        assessment.advice,
+        Advice::FirstStep(_)
+            | Advice::Stop { .. }
+            | Advice::ReadAgain {
+                why: ReadAgain::CheckTheMeter
+            }
+    );
     let (advice, heading, mut words, step) = match assessment.advice {
         Advice::LeaveIt { why } => ("leave", "Leave it", vec![leave_words(why)], None),
         Advice::ReadAgain { why } => (
@@ -276,13 +284,31 @@ fn advise(plan: &Plan, earlier: &[MashCheck], new: &NewMashCheck) -> Result<Advi
             }
         }
     };
-    if plan.doses.iter().any(|dose| {
-        dose.mash_check.is_none()
-            && dose.weighed.is_none()
-            && dose.vessel != Vessel::Kettle
-            && dose.vessel != Vessel::SpargeLiquor
-    }) {
-        words.push("Not everything planned for the mash is weighed in; the prediction counts it as if it were.".into());
+    let mut not_in: Vec<&str> = plan
+        .doses
+        .iter()
+        .filter(|dose| {
+            dose.mash_check.is_none()
+                && dose.weighed.is_none()
+                && dose.vessel != Vessel::Kettle
+                && dose.vessel != Vessel::SpargeLiquor
+        })
+        .filter_map(|dose| shelf.get(dose.material))
+        .map(|item| item.name.as_str())
+        .collect();
+    not_in.dedup();
+    let (mut advice, mut heading, mut step) = (advice, heading, step);
+    if !not_in.is_empty() {
+        // The reading is compared with a mash that is not there yet, and a step now would
+        // come on top of what is still to go in.
+        if foreseen_amiss {
+            (advice, heading, step) = ("stop", "Weigh in first what is planned", None);
+            words = vec!["Then wait 10 minutes and read again. Add nothing else before.".into()];
+        }
+        words.push(format!(
+            "Planned and not weighed in yet: {}. The prediction counts it as if it were in.",
+            not_in.join(", ")
+        ));
     }
     let verdict = match assessment.verdict {
         Verdict::Inside => "inside",

@@ -352,9 +352,15 @@ async fn a_brewery_of_ounces_measures_in_ounces_and_stores_millilitres() {
     assert_eq!(dose["unit"], "mL");
     let page = manager.open(&format!("/plans/{id}/weigh-out")).await;
     assert_eq!(page.texts(".weigh-amount .unit"), ["fl oz"]);
-    manager
-        .fill(&page, &weigh_form(&page), &[("actual", "10")])
-        .await;
+    let ten = ("actual", "10");
+    let asked = manager.fill(&page, &weigh_form(&page), &[ten]).await;
+    assert!(
+        asked.words().contains("fl oz is planned"),
+        "{}",
+        asked.words()
+    );
+    let sure = [ten, ("sure", "yes")];
+    manager.fill(&asked, &weigh_form(&asked), &sure).await;
     // A US fluid ounce is 29.573 53 mL (NIST Handbook 44, app. C).
     let actual = house.doses(&id).await.remove(0)["actual"].as_f64().unwrap();
     assert!((actual - 295.735_3).abs() < 1e-4, "{actual}");
@@ -376,4 +382,90 @@ async fn a_brewery_of_ounces_measures_in_ounces_and_stores_millilitres() {
         (check[0]["sample_c"].as_f64().unwrap() - 20.0).abs() < 1e-9,
         "{check}"
     );
+}
+
+#[tokio::test]
+async fn a_digit_too_many_at_the_scale_is_asked_about_before_it_is_believed() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-281").await;
+    let dose = house.doses(&id).await.remove(0);
+    let planned = dose["planned"].as_f64().unwrap();
+    let brewer = house.desk.browser("brewer").await;
+    let page = brewer.open(&format!("/plans/{id}/weigh-out")).await;
+    let action = weigh_form(&page);
+    let tenfold = (planned * 10.0).to_string();
+    let asked = brewer.fill(&page, &action, &[("actual", &tenfold)]).await;
+    assert_eq!(asked.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert!(asked.words().contains("is planned"), "{}", asked.words());
+    assert!(house.doses(&id).await[0]["actual"].is_null());
+    // It may be true all the same: then the record says what went in.
+    let said = [("actual", tenfold.as_str()), ("sure", "yes")];
+    let kept = brewer.fill(&asked, &weigh_form(&asked), &said).await;
+    assert_eq!(kept.status, StatusCode::OK, "{}", kept.words());
+    let actual = house.doses(&id).await[0]["actual"].as_f64().unwrap();
+    assert!((actual - planned * 10.0).abs() < 1e-6, "{actual}");
+}
+
+#[tokio::test]
+async fn the_weigh_out_says_how_much_of_which_water() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-282").await;
+    let page = house.desk.browser("brewer").await;
+    let page = page.open(&format!("/plans/{id}/weigh-out")).await;
+    // 1200 L into the mash and 1500 L of sparge, all from the one source.
+    assert!(
+        page.words().contains("2700 L Town mains"),
+        "{}",
+        page.words()
+    );
+}
+
+#[tokio::test]
+async fn no_first_step_is_advised_on_top_of_acid_that_is_still_to_go_in() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-283").await;
+    let seen = house.read(&id, 5.8, 12.0).await;
+    assert_eq!(seen.status, 201, "{:?}", seen.body);
+    let advised = &seen.body["advised"];
+    assert_eq!(advised["advice"], "stop", "{advised}");
+    assert!(advised["step"].is_null(), "{advised}");
+    assert!(
+        advised["words"].to_string().contains("Lactic acid"),
+        "{advised}"
+    );
+}
+
+#[tokio::test]
+async fn after_a_first_step_the_next_reading_is_expected_where_the_step_leads() {
+    let house = Brewhouse::build().await;
+    let id = house.dosed("26-284").await;
+    let first = house.read(&id, 5.7, 12.0).await;
+    let step = house.doses(&id).await.pop().unwrap();
+    let path = format!("/plans/{id}/doses/{}", step["id"].as_str().unwrap());
+    let given = json!({"actual": step["planned"]});
+    assert_eq!(house.manager.put(&path, &given).await.status, 200);
+    let page = house.desk.browser("brewer").await;
+    let page = page.open(&format!("/plans/{id}/mash-checks/new")).await;
+    let expected = first.body["advised"]["step"]["expected_ph"]
+        .as_f64()
+        .unwrap();
+    assert!(
+        page.words().contains(&format!("Expected {expected:.2} ±")),
+        "{}",
+        page.words()
+    );
+}
+
+#[tokio::test]
+async fn a_cost_names_what_it_leaves_out_for_want_of_a_price() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-285").await;
+    let page = house.desk.browser("brewer").await;
+    let page = page.open(&format!("/plans/{id}")).await;
+    let words = page.words();
+    assert!(words.contains("what has no price yet"), "{words}");
+    let left_out = words.split("what has no price yet").nth(1).unwrap();
+    let sentence = left_out.split('.').next().unwrap();
+    assert!(sentence.contains("Lactic acid"), "{sentence}");
+    assert!(!sentence.contains("Town mains"), "{sentence}");
 }

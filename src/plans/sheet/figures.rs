@@ -79,7 +79,11 @@ pub(super) fn doubts(outcome: &Outcome) -> Vec<DoubtShare> {
         .collect();
     told.iter()
         .map(|influence| DoubtShare {
-            label: influence.name.clone(),
+            label: if influence.name.starts_with("pH") {
+                influence.name.clone()
+            } else {
+                words::capital(&influence.name)
+            },
             width: (influence.share.get() * 1000.0).round() / 10.0,
             text: format!(
                 "{}, ± {} pH",

@@ -41,6 +41,8 @@ pub(in crate::plans) struct Facts {
     pub(in crate::plans) waters: Vec<[String; 6]>,
     /// What it costs.
     pub(in crate::plans) cost: String,
+    /// What is used and has no price, so that the cost leaves it out.
+    pub(in crate::plans) unpriced: Vec<String>,
     /// How many windows are met, of how many.
     pub(in crate::plans) met: (usize, usize),
 }
@@ -89,13 +91,41 @@ pub(in crate::plans) fn consequences(plan: &Plan, outcome: &Outcome, settings: &
             .map(|it| words::broken(inputs, it))
             .collect(),
         waters: waters(outcome),
-        cost: format!(
-            "{} {}",
-            format::decimals(outcome.cost.get(), 2),
-            settings.currency
-        ),
+        cost: cost(outcome, settings),
+        unpriced: unpriced(plan),
         met: (met, outcome.findings.len()),
     }
+}
+
+fn cost(outcome: &Outcome, settings: &Settings) -> String {
+    let amount = format::decimals(outcome.cost.get(), 2);
+    format!("{} {amount}", settings.currency)
+}
+
+/// Waters and materials a plan uses without a price of theirs.
+fn unpriced(plan: &Plan) -> Vec<String> {
+    let problem = &plan.inputs.problem;
+    let waters = plan
+        .inputs
+        .sources
+        .iter()
+        .zip(&problem.sources)
+        .zip(&plan.shares)
+        .filter(|((_, source), share)| share.get() > 0.0 && source.price.get() == 0.0)
+        .map(|((label, _), _)| label.name.clone());
+    let materials = plan
+        .doses
+        .iter()
+        .filter_map(|dose| problem.shelf.get(dose.material))
+        .filter(|item| item.price.get() == 0.0)
+        .map(|item| item.name.clone());
+    let mut names: Vec<String> = Vec::new();
+    for name in waters.chain(materials) {
+        if !names.contains(&name) {
+            names.push(name);
+        }
+    }
+    names
 }
 
 /// The amounts of a draft that may go into one vessel.
@@ -324,13 +354,7 @@ pub(in crate::plans) fn way_cards(
                 mash: treatment
                     .and_then(|it| compute::prediction(&it.outcome))
                     .map_or_else(String::new, |it| format::ph(it.ph.get())),
-                cost: treatment.map_or_else(String::new, |it| {
-                    format!(
-                        "{} {}",
-                        format::decimals(it.outcome.cost.get(), 2),
-                        settings.currency
-                    )
-                }),
+                cost: treatment.map_or_else(String::new, |it| cost(&it.outcome, settings)),
                 possible: treatment.is_some(),
             }
         })
@@ -465,7 +489,7 @@ pub(in crate::plans) fn learned(
             _ => "read the inputs anew to use what they teach".to_owned(),
         };
         said.push(format!(
-            "{} closed batches with a reading so far; {why}.",
+            "Closed batches with a reading so far: {}; {why}.",
             lesson.outcomes
         ));
     }
