@@ -151,7 +151,11 @@ fn outcome_row(outcome: &crate::plans::Outcome) -> OutcomeRow {
             OutcomeRow {
                 predicted,
                 measured: format!("{} ± {}", format::ph(measured), format::ph(sd)),
-                difference: format::decimals(difference, 2),
+                difference: format!(
+                    "{} {}",
+                    format::decimals(difference.abs(), 2),
+                    if difference < 0.0 { "below" } else { "above" }
+                ),
                 inside: if within {
                     "inside the 90 % interval"
                 } else {
