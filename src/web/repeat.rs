@@ -13,6 +13,7 @@ use axum::response::{IntoResponse, Response};
 use base64ct::{Base64UrlUnpadded, Encoding};
 use sha2::{Digest, Sha256};
 use sqlx::{Row, SqliteConnection};
+use tracing::Instrument;
 
 use super::{App, BODY_LIMIT};
 use crate::db::Db;
@@ -105,22 +106,34 @@ async fn apply(db: &Db, request: Request, next: Next) -> Result<Response, Error>
         return Ok(answer);
     }
     let request = Request::from_parts(parts, Body::from(body));
-    let response = KEY.scope(key.clone(), next.run(request)).await;
+    let db = db.clone();
+    let carried = async move {
+        let response = KEY.scope(key.clone(), next.run(request)).await;
+        settled(&db, &key, response).await
+    };
+    // Carried through even when whoever asked has lost the network: asked again, they are
+    // told what came of it.
+    tokio::spawn(carried.in_current_span())
+        .await
+        .map_err(|error| Error::internal("A request was not carried through", error))?
+}
+
+async fn settled(db: &Db, key: &Key, response: Response) -> Result<Response, Error> {
     let repeated = response
         .extensions()
         .get::<super::problem::Problem>()
         .is_some_and(|p| p.kind == "/problems/repeated");
-    if repeated {
-        // Its twin is being answered right now: wait a little for that answer.
-        for _ in 0..40 {
-            if let Some(answer) = stored(db, &key).await? {
-                return Ok(answer);
-            }
-            tokio::time::sleep(std::time::Duration::from_millis(50)).await;
-        }
-        return Ok(response);
+    if !repeated {
+        return store(db, key, response).await;
     }
-    store(db, &key, response).await
+    // Its twin is being answered right now: wait a little for that answer.
+    for _ in 0..40 {
+        if let Some(answer) = stored(db, key).await? {
+            return Ok(answer);
+        }
+        tokio::time::sleep(std::time::Duration::from_millis(50)).await;
+    }
+    Ok(response)
 }
 
 /// Whose key it is: somebody with these very rights. A token is never answered what only

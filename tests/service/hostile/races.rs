@@ -2,8 +2,10 @@
 
 use std::collections::BTreeSet;
 use std::future::Future;
+use std::time::Duration;
 
 use serde_json::{Value, json};
+use tokio::io::AsyncWriteExt;
 
 use super::LivedIn;
 use crate::brewhouse::Brewhouse;
@@ -164,4 +166,40 @@ async fn a_crowd_that_writes_and_reads_is_served_to_the_last() {
     let wanted = json!({"name": "The only well", "kind": "borehole", "days_between_tests": 30});
     let answers = at_once(8, |_| qa.request("POST", "/sources").json(&wanted).send()).await;
     assert_eq!(statuses(&answers), [201, 422, 422, 422, 422, 422, 422, 422]);
+}
+
+#[tokio::test(flavor = "multi_thread", worker_threads = 2)]
+async fn whoever_loses_the_network_and_asks_again_is_told_what_came_of_it() {
+    let house = Brewhouse::build().await;
+    let host = house.desk.address.trim_start_matches("http://").to_owned();
+    for round in 0..24_u64 {
+        let source =
+            json!({"name": format!("Well {round}"), "kind": "borehole", "days_between_tests": 30});
+        let key = format!("lost-{round}");
+        let send = || {
+            let request = house.manager.request("POST", "/sources").json(&source);
+            request.header("idempotency-key", &key)
+        };
+        let request = send().build().unwrap();
+        let token = request.headers()["authorization"].to_str().unwrap();
+        let head = format!(
+            "POST /api/v1/sources HTTP/1.1\r\nhost: {host}\r\nauthorization: {token}\r\nidempotency-key: {key}\r\n\
+             content-type: application/json\r\ncontent-length: {}\r\n\r\n{source}",
+            source.to_string().len()
+        );
+        let mut stream = tokio::net::TcpStream::connect(&host).await.unwrap();
+        stream.write_all(head.as_bytes()).await.unwrap();
+        tokio::time::sleep(Duration::from_micros(400 * round)).await;
+        drop(stream);
+        let answer = Answer::of(send().send().await.unwrap()).await;
+        assert_eq!(
+            answer.status,
+            201,
+            "after {} µs: {:?}",
+            400 * round,
+            answer.body
+        );
+    }
+    let listed = house.manager.get("/sources?limit=200").await;
+    assert_eq!(listed.body["items"].as_array().unwrap().len(), 25);
 }
