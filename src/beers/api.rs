@@ -26,10 +26,13 @@ use crate::web::problem::Problem;
 #[serde(default)]
 pub struct NewBeerBody {
     /// What the brewery calls it; no other beer has this name.
+    #[schema(required = true, min_length = 1)]
     pub name: String,
     /// Beer in the fermenter, L.
+    #[schema(required = true)]
     pub batch_l: Number,
     /// Strike liquor in the mash, L.
+    #[schema(required = true)]
     pub mash_l: Number,
     /// Sparge liquor, L; 0 when not given.
     pub sparge_l: Number,

@@ -35,8 +35,10 @@ pub struct CoefficientsBody {
 #[serde(default)]
 pub struct NewMaltBody {
     /// What the brewery calls it.
+    #[schema(required = true, min_length = 1)]
     pub name: String,
     /// What kind it is, for example `pilsner` or `crystal`.
+    #[schema(required = true, min_length = 1)]
     pub class: String,
     /// Its colour, in `colour_unit`.
     pub colour: Number,
@@ -284,6 +286,7 @@ impl CoefficientsBody {
 #[serde(default)]
 pub struct NewMaltLotBody {
     /// The code on the bag.
+    #[schema(required = true, min_length = 1)]
     pub code: String,
     /// When it came, `2026-03-31`. May be blank.
     pub received_on: String,
@@ -409,12 +412,14 @@ pub struct NewTitrationBody {
     /// When it was done, `2026-03-31`.
     pub tested_on: String,
     /// Malt in each jar, as-is weight, g.
+    #[schema(required = true)]
     pub malt_g: Number,
     /// Strength of the acid, meq/mL (mol/L of hydrochloric acid).
     pub acid_meq_per_ml: Number,
     /// Strength of the base, meq/mL (mol/L of sodium hydroxide).
     pub base_meq_per_ml: Number,
     /// The jars; blank ones are left out.
+    #[schema(required = true)]
     pub jars: Vec<JarBody>,
     /// Anything else.
     pub notes: String,

@@ -20,10 +20,13 @@ use crate::input::{Flag, Number, Problems};
 #[serde(default)]
 pub struct NewPlanBody {
     /// The brewery's number of the batch.
+    #[schema(required = true, min_length = 1)]
     pub batch: String,
     /// What is brewed: an identifier of `/beers`.
+    #[schema(required = true, min_length = 1)]
     pub beer_id: String,
     /// The day it is brewed, `2026-03-31`.
+    #[schema(required = true, min_length = 1)]
     pub brewed_on: String,
     /// How to choose the treatment: `closest_to_preferred`, `fewest_additions`,
     /// `least_blending_water` or `cheapest`; the first when not given.
@@ -117,6 +120,7 @@ impl TryFrom<NewPlanBody> for NewPlan {
 pub struct TreatmentBody {
     /// Share of each source, per cent, in the order of the inputs. They must add up to
     /// 100.
+    #[schema(required = true)]
     pub shares_percent: Vec<Number>,
     /// What goes where. An amount of nothing, or none, is left out.
     pub doses: Vec<DoseInputBody>,
@@ -127,8 +131,10 @@ pub struct TreatmentBody {
 #[serde(default)]
 pub struct DoseInputBody {
     /// Place of the material on the plan's shelf, counting from 0.
+    #[schema(required = true)]
     pub material: Number,
     /// `liquor_tank`, `mash`, `sparge_liquor` or `kettle`.
+    #[schema(required = true, min_length = 1)]
     pub vessel: String,
     /// How much, g or mL.
     pub amount: Number,
@@ -231,6 +237,7 @@ impl ApprovalBody {
 #[serde(default)]
 pub struct WeighedBody {
     /// How much went in, g or mL.
+    #[schema(required = true)]
     pub actual: Number,
     /// Of which lot.
     pub lot: String,
@@ -260,8 +267,10 @@ pub struct NewMashCheckBody {
     /// Minutes since strike.
     pub minute: Number,
     /// As the meter showed it.
+    #[schema(required = true)]
     pub ph: Number,
     /// Temperature of the sample in the meter's cup, °C.
+    #[schema(required = true)]
     pub sample_c: Number,
     /// Which meter.
     pub meter: String,

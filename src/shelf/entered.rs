@@ -153,8 +153,10 @@ impl VesselsBody {
 #[serde(default)]
 pub struct NewMaterialBody {
     /// What the brewery calls it.
+    #[schema(required = true, min_length = 1)]
     pub name: String,
     /// What it is, for example `gypsum` or `lactic_acid`.
+    #[schema(required = true, min_length = 1)]
     pub substance: String,
     /// How strong a liquid is. Blank: as usual for the substance, assumed.
     pub strength: StrengthBody,
@@ -164,6 +166,7 @@ pub struct NewMaterialBody {
     /// Its standard deviation, percentage points. Blank: as usual, assumed.
     pub assay_sd_percent: Number,
     /// Step of the scale, g for a solid, mL for a liquid.
+    #[schema(required = true)]
     pub scale_step_g_or_ml: Number,
     /// The most of it in one hectolitre of liquor, g for a solid, mL for a liquid.
     pub highest_g_or_ml_per_hl: Number,
@@ -303,6 +306,7 @@ fn place(substance: Substance) -> &'static str {
 #[serde(default)]
 pub struct NewMaterialLotBody {
     /// The code on the pack.
+    #[schema(required = true, min_length = 1)]
     pub code: String,
     /// When it came, `2026-03-31`. May be blank.
     pub received_on: String,

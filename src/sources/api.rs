@@ -23,14 +23,17 @@ use crate::web::problem::Problem;
 #[serde(default)]
 pub struct SourceBody {
     /// Its name, unlike every other source's.
+    #[schema(required = true, min_length = 1)]
     pub name: String,
     /// `mains`, `borehole`, `surface`, `permeate` or `other`.
+    #[schema(required = true, min_length = 1)]
     pub kind: String,
     /// Whether it only serves to dilute others.
     pub blending: Flag,
     /// What a cubic metre costs, in the brewery's currency.
     pub price_per_m3: Number,
     /// How often it should be tested, whole days.
+    #[schema(required = true)]
     pub days_between_tests: Number,
     /// Anything else worth knowing.
     pub notes: String,

@@ -9,7 +9,7 @@ use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::openapi::server::ServerBuilder;
 use utoipa::openapi::{
     ComponentsBuilder, ContentBuilder, InfoBuilder, OpenApi, OpenApiBuilder, Ref, RefOr,
-    ResponseBuilder,
+    ResponseBuilder, Schema,
 };
 
 use super::App;
@@ -42,6 +42,20 @@ pub fn description() -> OpenApi {
 /// The description with what holds for every operation: a name that is its own, the
 /// refusals that any of them may give, and the media type of refusals.
 fn completed(mut description: OpenApi) -> OpenApi {
+    for schema in description
+        .components
+        .iter_mut()
+        .flat_map(|it| it.schemas.values_mut())
+    {
+        // What must be sent has no default.
+        if let RefOr::T(Schema::Object(object)) = schema {
+            for name in &object.required {
+                if let Some(RefOr::T(Schema::Object(field))) = object.properties.get_mut(name) {
+                    field.default = None;
+                }
+            }
+        }
+    }
     for (path, item) in &mut description.paths.paths {
         let place: Vec<&str> = path
             .split('/')

@@ -119,7 +119,7 @@ impl ListQuery {
     /// How many items to return.
     pub fn limit(&self) -> Result<i64, Error> {
         match self.limit.as_deref().map(str::trim) {
-            None | Some("") => Ok(50),
+            None => Ok(50),
             Some(text) => match text.parse::<i64>() {
                 Ok(limit @ 1..=200) => Ok(limit),
                 _ => Err(Error::field("limit", "Ask for 1 to 200 items.")),

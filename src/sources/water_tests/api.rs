@@ -46,6 +46,7 @@ pub struct ReadingBody {
 #[serde(default)]
 pub struct WaterTestBody {
     /// The day the sample was drawn, `2026-03-31`.
+    #[schema(required = true, min_length = 1)]
     pub sampled_on: String,
     /// Who made the analysis: a laboratory, a kit, a supplier.
     pub laboratory: String,
@@ -60,6 +61,7 @@ pub struct WaterTestBody {
     /// What one drop of a drop-count kit is worth.
     pub drop_mg_per_l_as_caco3: Number,
     /// The lines.
+    #[schema(required = true)]
     pub readings: Vec<ReadingBody>,
     /// Figures that were not reported and how they may be worked out, as the check
     /// offers them: `{"magnesium": "rest_of_hardness"}`.
@@ -139,6 +141,7 @@ pub struct WaterTestCheckBody {
     /// What one drop of a drop-count kit is worth.
     pub drop_mg_per_l_as_caco3: Number,
     /// The lines.
+    #[schema(required = true)]
     pub readings: Vec<ReadingBody>,
 }
 
