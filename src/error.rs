@@ -126,8 +126,3 @@ pub fn taken(error: sqlx::Error, field: &str, message: String) -> Error {
 pub fn breaks_unique(error: &sqlx::Error) -> bool {
     matches!(error, sqlx::Error::Database(e) if e.is_unique_violation())
 }
-
-/// Whether a statement failed because a foreign key of the schema was broken.
-pub fn breaks_reference(error: &sqlx::Error) -> bool {
-    matches!(error, sqlx::Error::Database(e) if e.is_foreign_key_violation())
-}

@@ -276,19 +276,6 @@ impl Malt {
     }
 }
 
-/// A malt with the lot that counts and what is known of both.
-#[derive(Clone, Debug, PartialEq)]
-pub struct KnownMalt {
-    /// The malt.
-    pub malt: Malt,
-    /// Its lot, if one was named.
-    pub lot: Option<MaltLot>,
-    /// How it meets acid and base.
-    pub behaviour: Behaviour,
-    /// How that is known, in words.
-    pub how_known: &'static str,
-}
-
 /// The pH at which acid demands are quoted.
 pub const QUOTED_PH: Ph = Ph::constant(5.4);
 

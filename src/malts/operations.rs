@@ -3,7 +3,7 @@
 use sqlx::SqliteConnection;
 
 use super::entered::{NewMaltBody, NewMaltLotBody, NewTitrationBody};
-use super::{KnownMalt, Malt, MaltLot, store};
+use super::{Malt, MaltLot, store};
 use crate::brewery;
 use crate::db::Db;
 use crate::error::{Error, refuse_stale, taken};
@@ -37,13 +37,6 @@ pub async fn list_with_lots(db: &Db, by: &Member) -> Result<Vec<(Malt, Option<Ma
         .collect())
 }
 
-/// The malts a grist may use, each with the lot it is mashed from, by name.
-pub async fn list_in_use(db: &Db, by: &Member) -> Result<Vec<(Malt, Option<MaltLot>)>, Error> {
-    let mut malts = list_with_lots(db, by).await?;
-    malts.retain(|(malt, _)| malt.in_use);
-    Ok(malts)
-}
-
 /// Up to `limit` malts made after `after`, in the order they were made.
 pub async fn page(
     db: &Db,
@@ -63,33 +56,6 @@ pub async fn find(db: &Db, by: &Member, id: MaltId) -> Result<Malt, Error> {
 
 fn known(found: Option<Malt>) -> Result<Malt, Error> {
     found.ok_or(Error::NotFound("malt"))
-}
-
-/// What is known of each of these malts and lots, in their order, from one state of the
-/// database. No lot: of the malt alone.
-pub async fn behaviours(
-    db: &Db,
-    by: &Member,
-    ids: &[(MaltId, Option<MaltLotId>)],
-) -> Result<Vec<KnownMalt>, Error> {
-    by.may(Permission::Read)?;
-    let mut snapshot = db.snapshot().await?;
-    let mut found = Vec::with_capacity(ids.len());
-    for &(malt, lot) in ids {
-        let malt = known(store::find(&mut snapshot, malt).await?)?;
-        let lot = match lot {
-            Some(lot) => Some(lot_of(&malt, store::find_lot(&mut snapshot, lot).await?)?),
-            None => None,
-        };
-        let (behaviour, how_known) = malt.behaviour(lot.as_ref());
-        found.push(KnownMalt {
-            malt,
-            lot,
-            behaviour,
-            how_known,
-        });
-    }
-    Ok(found)
 }
 
 /// Adds a malt.

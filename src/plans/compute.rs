@@ -34,18 +34,7 @@ pub fn evaluate(
     Ok(plan::evaluate(&inputs.computed(), shares, doses)?)
 }
 
-/// What a plan does with its doses as planned.
-pub fn as_planned(plan: &Plan) -> Result<plan::Outcome, Error> {
-    let doses: Vec<plan::Dose> = plan
-        .doses
-        .iter()
-        .filter(|dose| dose.mash_check.is_none())
-        .map(|dose| in_numbers(dose, dose.planned))
-        .collect();
-    evaluate(&plan.inputs, &plan.shares, &doses)
-}
-
-/// What it does with what was weighed so far, and the rest as planned. First steps count
+/// What a plan does with what was weighed so far, and the rest as planned. First steps count
 /// when they are in.
 pub fn as_weighed(plan: &Plan) -> Result<plan::Outcome, Error> {
     evaluate(&plan.inputs, &plan.shares, &weighed_doses(plan))

@@ -33,28 +33,15 @@ pub struct Settings {
 }
 
 impl Default for Settings {
-    /// Calcium 0.35 ± 0.12 and magnesium half of it: fitted between Kolbach's
-    /// 1/3.5 and 1/7, made for cast wort, and the mash series of
-    /// [`TAYLOR_1990`](crate::references::TAYLOR_1990). Half the carbon dioxide
-    /// lost, usual range 0.2 to 0.9: assumed, no measurement found.
+    /// Calcium 0.35 ± 0.12 and magnesium half of it: fitted between the 1/3.5 and 1/7
+    /// of [`KOLBACH_1953`](crate::references::KOLBACH_1953), made for cast wort, and
+    /// the mash series of [`TAYLOR_1990`](crate::references::TAYLOR_1990). Half the
+    /// carbon dioxide lost, usual range 0.2 to 0.9: assumed, no measurement found.
     fn default() -> Self {
         Self {
             calcium_release: Estimate::new(Fraction::constant(0.35), 0.12),
             magnesium_release: Estimate::new(Fraction::constant(0.175), 0.06),
             carbon_dioxide_lost: Estimate::new(Fraction::constant(0.5), 0.2),
-        }
-    }
-}
-
-impl Settings {
-    /// Calcium and magnesium as [`KOLBACH_1953`](crate::references::KOLBACH_1953)
-    /// found them in cast wort: 1/3.5 and 1/7. The spreads are assumed.
-    #[must_use]
-    pub fn kolbach() -> Self {
-        Self {
-            calcium_release: Estimate::new(Fraction::constant(1.0 / 3.5), 0.12),
-            magnesium_release: Estimate::new(Fraction::constant(1.0 / 7.0), 0.06),
-            ..Self::default()
         }
     }
 }
