@@ -18,7 +18,7 @@ use crate::id::BeerId;
 use crate::input::{Flag, Number};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, etag, if_match};
 use crate::web::problem::Problem;
 
 /// A beer: grist, volumes and spec.
@@ -293,10 +293,7 @@ pub fn routes() -> OpenApiRouter<App> {
 }
 
 fn answer(beer: &Beer) -> impl IntoResponse + use<> {
-    (
-        [(header::ETAG, format!("\"{}\"", beer.version))],
-        axum::Json(BeerBody::from(beer)),
-    )
+    (etag(beer.version), axum::Json(BeerBody::from(beer)))
 }
 
 /// Every beer, retired ones too, oldest first.
@@ -312,15 +309,7 @@ async fn list(
     Query(query): Query<ListQuery>,
 ) -> Result<axum::Json<Listed<BeerBody>>, Error> {
     let limit = query.limit()?;
-    let after = query
-        .cursor
-        .as_deref()
-        .map(|cursor| {
-            cursor
-                .parse::<BeerId>()
-                .map_err(|_| Error::field("cursor", "Send the next_cursor of the page before."))
-        })
-        .transpose()?;
+    let after = query.after()?;
     let beers = operations::list_after(&db, &by, after, limit + 1).await?;
     let beers = beers.iter().map(BeerBody::from).collect();
     Ok(axum::Json(Listed::cut(beers, limit, |beer: &BeerBody| {

@@ -1,7 +1,7 @@
 //! `/api/v1/settings`.
 
 use axum::extract::State;
-use axum::http::{HeaderMap, header};
+use axum::http::HeaderMap;
 use axum::response::IntoResponse;
 use serde::{Deserialize, Serialize};
 use utoipa_axum::router::OpenApiRouter;
@@ -13,7 +13,7 @@ use crate::error::Error;
 use crate::input::Number;
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{Json, if_match};
+use crate::web::extract::{Json, etag, if_match};
 use crate::web::problem::Problem;
 
 /// The brewery's settings.
@@ -63,7 +63,7 @@ pub fn routes() -> OpenApiRouter<App> {
 
 fn answer(settings: &Settings) -> impl IntoResponse + use<> {
     (
-        [(header::ETAG, format!("\"{}\"", settings.version))],
+        etag(settings.version),
         axum::Json(SettingsBody::from(settings)),
     )
 }

@@ -17,7 +17,7 @@ use crate::id::{MaltId, MaltLotId, MaltTitrationId, UtcTime};
 use crate::input::{ReasonBody, percent};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, etag, if_match};
 use crate::web::problem::Problem;
 
 /// What is known of a malt's acidity, as calculations take it.
@@ -201,10 +201,6 @@ pub fn routes() -> OpenApiRouter<App> {
         .routes(routes!(show_lot, revise_lot))
         .routes(routes!(titrate))
         .routes(routes!(withdraw))
-}
-
-fn etag(version: i64) -> [(header::HeaderName, String); 1] {
-    [(header::ETAG, format!("\"{version}\""))]
 }
 
 /// The malts, in the order they were added.

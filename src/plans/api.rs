@@ -25,7 +25,7 @@ use crate::id::{DoseId, MashCheckId, PlanId};
 use crate::input::{Problems, ReasonBody};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, etag, if_match};
 use crate::web::problem::Problem;
 
 /// Which plans to list.
@@ -77,7 +77,7 @@ pub fn routes() -> OpenApiRouter<App> {
 }
 
 fn tagged<T: Serialize>(version: i64, body: T) -> impl IntoResponse {
-    ([(header::ETAG, format!("\"{version}\""))], axum::Json(body))
+    (etag(version), axum::Json(body))
 }
 
 /// Plans, the latest made first.
@@ -93,15 +93,7 @@ async fn list(
     Query(query): Query<PlanQuery>,
 ) -> Result<axum::Json<Listed<ListingBody>>, Error> {
     let limit = page.limit()?;
-    let before = page
-        .cursor
-        .as_deref()
-        .map(|cursor| {
-            cursor
-                .parse()
-                .map_err(|_| Error::field("cursor", "Send the next_cursor of the page before."))
-        })
-        .transpose()?;
+    let before = page.after()?;
     let found = operations::made_before(&db, &by, &query.filter()?, before, limit + 1).await?;
     let found = found.into_iter().map(ListingBody::from).collect();
     Ok(axum::Json(Listed::cut(

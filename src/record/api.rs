@@ -76,15 +76,7 @@ async fn list(
     Query(query): Query<ListQuery>,
 ) -> Result<axum::Json<Listed<EntryBody>>, Error> {
     let limit = query.limit()?;
-    let before = query
-        .cursor
-        .as_deref()
-        .map(|cursor| {
-            cursor
-                .parse::<i64>()
-                .map_err(|_| Error::field("cursor", "Send the next_cursor of the page before."))
-        })
-        .transpose()?;
+    let before = query.after()?;
     let entries = operations::page(&db, &by, before, limit + 1).await?;
     let entries = entries.into_iter().map(EntryBody::from).collect();
     Ok(axum::Json(Listed::cut(

@@ -16,7 +16,7 @@ use crate::id::{MaterialId, MaterialLotId};
 use crate::input::percent;
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, etag, if_match};
 use crate::web::problem::Problem;
 
 /// A material on the shelf.
@@ -134,10 +134,6 @@ pub fn routes() -> OpenApiRouter<App> {
         .routes(routes!(show, revise))
         .routes(routes!(list_lots, create_lot))
         .routes(routes!(show_lot, revise_lot))
-}
-
-fn etag(version: i64) -> [(header::HeaderName, String); 1] {
-    [(header::ETAG, format!("\"{version}\""))]
 }
 
 /// The materials on the shelf, in the order they were added.

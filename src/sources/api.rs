@@ -15,7 +15,7 @@ use crate::id::{SourceId, WaterTestId};
 use crate::input::{Flag, Number};
 use crate::people::Member;
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, etag, if_match};
 use crate::web::problem::Problem;
 
 /// A source as it is sent.
@@ -183,10 +183,7 @@ pub fn routes() -> OpenApiRouter<App> {
 }
 
 fn answer(source: &Source) -> impl IntoResponse + use<> {
-    (
-        [(header::ETAG, format!("\"{}\"", source.version))],
-        axum::Json(SourceAnswer::from(source)),
-    )
+    (etag(source.version), axum::Json(SourceAnswer::from(source)))
 }
 
 /// The sources, in the order they were made.
@@ -202,15 +199,7 @@ async fn list(
     Query(query): Query<ListQuery>,
 ) -> Result<axum::Json<Listed<SourceAnswer>>, Error> {
     let limit = query.limit()?;
-    let after = query
-        .cursor
-        .as_deref()
-        .map(|cursor| {
-            cursor
-                .parse()
-                .map_err(|_| Error::field("cursor", "Send the next_cursor of the page before."))
-        })
-        .transpose()?;
+    let after = query.after()?;
     let sources = operations::page(&db, &by, after, limit + 1).await?;
     let sources = sources.iter().map(SourceAnswer::from).collect();
     Ok(axum::Json(Listed::cut(

@@ -3,7 +3,7 @@
 
 use axum::extract::{FromRequest, FromRequestParts, Path, Request};
 use axum::http::request::Parts;
-use axum::http::{HeaderMap, header};
+use axum::http::{HeaderMap, HeaderName, header};
 use serde::Deserialize;
 use serde::de::DeserializeOwned;
 
@@ -103,7 +103,7 @@ pub struct ListQuery {
 }
 
 impl ListQuery {
-    /// The identifier the page before ended with, for lists in order of creation.
+    /// The identifier the page before ended with.
     pub fn after<I: std::str::FromStr>(&self) -> Result<Option<I>, Error> {
         let cursor = self.cursor.as_deref().map(str::trim);
         cursor
@@ -153,7 +153,12 @@ impl<T> Listed<T> {
     }
 }
 
-/// The version a client read, from `If-Match`.
+/// The header that tells a client which version it reads.
+pub fn etag(version: i64) -> [(HeaderName, String); 1] {
+    [(header::ETAG, format!("\"{version}\""))]
+}
+
+/// The version a client read, from `If-Match`: what [`etag`] told.
 pub fn if_match(headers: &HeaderMap) -> Result<Option<i64>, Error> {
     let Some(value) = headers.get(header::IF_MATCH) else {
         return Ok(None);

@@ -22,7 +22,7 @@ use crate::id::{SourceId, UtcTime, WaterTestId};
 use crate::input::{Flag, Number, ReasonBody};
 use crate::people::{Member, Permission};
 use crate::web::App;
-use crate::web::extract::{At, Json, ListQuery, Listed, Query, if_match};
+use crate::web::extract::{At, Json, ListQuery, Listed, Query, etag, if_match};
 use crate::web::problem::Problem;
 
 /// One line of a report, as it was printed.
@@ -388,10 +388,7 @@ pub fn routes() -> OpenApiRouter<App> {
 }
 
 async fn answer(db: &Db, test: &WaterTest) -> Result<impl IntoResponse + use<>, Error> {
-    Ok((
-        [(header::ETAG, format!("\"{}\"", test.version))],
-        axum::Json(body(db, test).await?),
-    ))
+    Ok((etag(test.version), axum::Json(body(db, test).await?)))
 }
 
 async fn body(db: &Db, test: &WaterTest) -> Result<WaterTestAnswer, Error> {
