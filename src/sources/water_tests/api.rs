@@ -141,7 +141,6 @@ pub struct WaterTestCheckBody {
     /// What one drop of a drop-count kit is worth.
     pub drop_mg_per_l_as_caco3: Number,
     /// The lines.
-    #[schema(required = true)]
     pub readings: Vec<ReadingBody>,
 }
 
