@@ -54,6 +54,8 @@ struct BrewDayPage {
     drafts: Vec<ListRow>,
     may_draft: bool,
     nothing: bool,
+    /// Whether there is no beer yet to plan.
+    beginning: bool,
 }
 
 async fn brew_day(State(db): State<Db>, framer: Framer) -> Result<BrewDayPage, Error> {
@@ -73,9 +75,15 @@ async fn brew_day(State(db): State<Db>, framer: Framer) -> Result<BrewDayPage, E
         lists.next().unwrap_or_default(),
         lists.next().unwrap_or_default(),
     );
+    let nothing = approved.is_empty() && dosed.is_empty() && drafts.is_empty();
+    let beginning = nothing
+        && crate::beers::operations::list(&db, &framer.member, true)
+            .await?
+            .is_empty();
     Ok(BrewDayPage {
         may_draft: page.can(Permission::DraftPlans),
-        nothing: approved.is_empty() && dosed.is_empty() && drafts.is_empty(),
+        nothing,
+        beginning,
         page,
         approved,
         dosed,

@@ -2,9 +2,10 @@
 //! window before and after, where the doubt comes from, the liquor vessel by vessel.
 
 use chemistry::ion::Ion;
+use chemistry::material::Vessel;
 use chemistry::plan::{Finding, Measure, Outcome, Requirement, Window};
 use chemistry::put_right::Aim;
-use chemistry::quantity::{Fraction, MgPerL};
+use chemistry::quantity::{Fraction, Litres, MgPerL};
 use chemistry::water::Water;
 
 use crate::plans::inputs::{Inputs, SHOWN_IONS};
@@ -97,10 +98,15 @@ pub(super) fn doubts(outcome: &Outcome) -> Vec<DoubtShare> {
 pub(super) fn windows(plan: &Plan, outcome: &Outcome) -> Vec<WindowBar> {
     let inputs = &plan.inputs;
     let spec = &inputs.problem.spec;
+    let in_the_mash = |vessel| match vessel {
+        Vessel::LiquorTank => Some(inputs.problem.volumes.liquor),
+        Vessel::Mash => Some(inputs.problem.volumes.mash.value),
+        Vessel::SpargeLiquor | Vessel::Kettle => None,
+    };
     let ions = SHOWN_IONS.iter().filter_map(|ion| {
         let window = spec.ions[*ion]?;
         let finding = outcome.finding(Requirement::Ion(*ion))?;
-        let doubt = blended_sd(inputs, &plan.shares, *ion);
+        let doubt = treated_sd(plan, *ion, &|_| Some(inputs.problem.volumes.liquor));
         Some(bar(
             finding,
             in_numbers(window, MgPerL::get),
@@ -116,7 +122,7 @@ pub(super) fn windows(plan: &Plan, outcome: &Outcome) -> Vec<WindowBar> {
             finding,
             in_numbers(window, MgPerL::get),
             Some(before),
-            None,
+            Some(treated_sd(plan, Ion::Calcium, &in_the_mash)),
             "mg/L",
         ))
     });
@@ -163,6 +169,28 @@ fn blended_sd(inputs: &Inputs, shares: &[Fraction], ion: Ion) -> f64 {
         .map(|(source, share)| (share.get() * source.ion_sd[ion].get()).powi(2))
         .sum();
     sum.sqrt()
+}
+
+/// One standard deviation of an ion after treatment: the water's as tested, and what each
+/// material holds. Doses of one material are as wrong together; materials are not.
+/// `diluted` says into how much the doses of a vessel go, or that they do not count.
+fn treated_sd(plan: &Plan, ion: Ion, diluted: &dyn Fn(Vessel) -> Option<Litres>) -> f64 {
+    let materials = plan.inputs.problem.shelf.iter().enumerate();
+    let squares = materials.map(|(index, item)| {
+        let added: f64 = plan
+            .doses
+            .iter()
+            .filter(|dose| dose.material == index)
+            .filter_map(|dose| Some((dose, diluted(dose.vessel)?)))
+            .map(|(dose, volume)| {
+                let brought = item.material.contribution(dose.amount());
+                brought.added_to(&Water::pure(), volume).ions[ion].get()
+            })
+            .sum();
+        (added * item.material.relative_sd().get()).powi(2)
+    });
+    let water = blended_sd(&plan.inputs, &plan.shares, ion);
+    (water.powi(2) + squares.sum::<f64>()).sqrt()
 }
 
 fn bar(
