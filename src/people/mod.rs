@@ -168,7 +168,9 @@ impl Scope {
         match self {
             Self::Read => "Read everything",
             Self::Tests => "Enter water tests and keep sources",
-            Self::Plans => "Draft and approve plans; keep beers, malts and the shelf",
+            Self::Plans => {
+                "Draft and approve plans; keep beers, malts and the shelf. Tick “Read everything” too"
+            }
             Self::Readings => "Record doses and mash checks",
         }
     }

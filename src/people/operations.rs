@@ -10,6 +10,7 @@ use crate::error::{Error, taken};
 use crate::id::{ApiTokenId, MemberId, UtcTime};
 use crate::input::Problems;
 use crate::record;
+use crate::web::repeat;
 
 /// A session ends after this long without a request, s: twelve hours, a long brew day.
 const IDLE_SECONDS: i64 = 12 * 3600;
@@ -313,6 +314,7 @@ pub async fn sign_in(
     let now = UtcTime::now();
     let mut tx = db.begin().await?;
     store::delete_expired_sessions(&mut tx, now).await?;
+    repeat::forget_old(&mut tx).await?;
     store::insert_session(
         &mut tx,
         &secret.hash(),

@@ -35,6 +35,18 @@ struct Key {
 /// Headers worth replaying.
 const REPLAYED: [HeaderName; 3] = [header::LOCATION, header::CONTENT_TYPE, header::ETAG];
 
+/// A key is remembered this long, s: seven days. Nothing sends a request again after that.
+const REMEMBERED_SECONDS: i64 = 7 * 24 * 3600;
+
+/// Forgets the keys of requests long past, with the answers kept beside them.
+pub async fn forget_old(tx: &mut SqliteConnection) -> Result<(), Error> {
+    sqlx::query("DELETE FROM request_keys WHERE at < ?")
+        .bind(UtcTime::now().plus_seconds(-REMEMBERED_SECONDS))
+        .execute(tx)
+        .await?;
+    Ok(())
+}
+
 /// Claims the request's key, if it has one, in this transaction.
 pub async fn claim(tx: &mut SqliteConnection) -> Result<(), Error> {
     let Ok(key) = KEY.try_with(Clone::clone) else {

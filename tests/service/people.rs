@@ -144,3 +144,30 @@ async fn the_record_book_cannot_be_rewritten_even_at_a_console() {
         assert!(error.to_string().contains("append-only"), "{error}");
     }
 }
+
+#[tokio::test]
+async fn keys_of_requests_long_past_are_forgotten_when_somebody_signs_in() {
+    let desk = Desk::start().await;
+    let mut tx = desk.app.db.begin_unkeyed().await.unwrap();
+    for (key, at) in [
+        ("old", "2020-01-01T00:00:00.000Z"),
+        ("young", "2100-01-01T00:00:00.000Z"),
+    ] {
+        sqlx::query(
+            "INSERT INTO request_keys (actor, key, fingerprint, at) VALUES ('a', ?, 'f', ?)",
+        )
+        .bind(key)
+        .bind(at)
+        .execute(&mut *tx)
+        .await
+        .unwrap();
+    }
+    tx.commit().await.unwrap();
+    desk.browser("qa").await;
+    let mut reader = desk.app.db.reader().await.unwrap();
+    let left: Vec<String> = sqlx::query_scalar("SELECT key FROM request_keys")
+        .fetch_all(&mut *reader)
+        .await
+        .unwrap();
+    assert_eq!(left, ["young"]);
+}
