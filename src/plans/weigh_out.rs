@@ -4,11 +4,13 @@ use chemistry::quantity::DoseAmount;
 
 use super::operations::{title, weighed_json};
 use super::{Dose, Plan, State, Weighed, store};
+use crate::brewery;
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{DoseId, PlanId, UtcTime};
 use crate::people::{Member, Permission};
 use crate::record;
+use crate::web::format;
 
 /// Writes down that a dose is in. A dose that is in already is refused with who weighed
 /// it, so that none goes in twice.
@@ -21,6 +23,7 @@ pub async fn weigh(
     lot: String,
 ) -> Result<Plan, Error> {
     by.may(Permission::BrewBatches)?;
+    let time_zone = brewery::operations::settings(db).await?.time_zone;
     let mut tx = db.begin().await?;
     let plan = open(&mut tx, plan_id).await?;
     let mut dose = find(&plan, dose_id)?.clone();
@@ -28,7 +31,7 @@ pub async fn weigh(
         return Err(Error::Conflict(format!(
             "{} weighed this in already, at {}. Do not add it again",
             weighed.by,
-            weighed.at.timestamp().strftime("%H:%M UTC")
+            format::moment(weighed.at, &time_zone)
         )));
     }
     dose.weighed = Some(Weighed {

@@ -477,7 +477,7 @@ pub(in crate::plans) fn learned(
                 format!("{which} by {} pH", format::ph(change.abs()))
             };
             said.push(format!(
-                "The 90 % interval is ± {} with what was learned and would be ± {} without: {compared}, because readings stand in the place of what is assumed of the malts.",
+                "The 90 % interval is ± {} with what was learned and would be ± {} without: {compared}. Readings stand in the place of what is assumed of the malts.",
                 format::ph(half(&with)),
                 format::ph(half(&without)),
             ));
