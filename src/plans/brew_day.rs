@@ -324,6 +324,10 @@ fn near_the_plan(plan: &Plan, id: DoseId, actual: DoseAmount, units: Units) -> R
     let Some(dose) = plan.doses.iter().find(|dose| dose.id == id) else {
         return Ok(());
     };
+    // That it is in already matters more, and is said by the operation.
+    if dose.weighed.is_some() {
+        return Ok(());
+    }
     let item = plan.inputs.problem.shelf.get(dose.material);
     let step = item.map_or(0.0, |item| item.step.get());
     let (actual, planned) = (actual.get(), dose.planned.get());
