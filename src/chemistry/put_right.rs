@@ -7,6 +7,7 @@
 
 use crate::mash::{Addition, MashError, MashInputs};
 use crate::material::{DoseUnit, Material};
+use crate::quantity::NINETY_PERCENT;
 use crate::quantity::{Celsius, DoseAmount, Estimate, Minutes, Ph, PhShift};
 
 /// No advice before this; a mash falls by 0.3 in its first ten minutes.
@@ -25,10 +26,6 @@ pub const WARMEST_SAMPLE: Celsius = Celsius::constant(30.0);
 /// Beyond this many standard deviations a reading says more about the meter, the
 /// malt or the doses than about the mash. Source: assumed; one in two thousand.
 const SURPRISING: f64 = 3.5;
-
-/// Within this many standard deviations of the target a reading cannot be told from
-/// it (nine in ten). Source: Φ⁻¹(0.95), any table.
-const NINETY_PERCENT: f64 = 1.645;
 
 /// Share of the computed dose given first. Source: common practice, no source.
 const FIRST_SHARE: f64 = 0.5;

@@ -221,6 +221,10 @@ macro_rules! sums {
 
 sums! { MgPerL MmolPerL MeqPerL Meq MeqPerKg Litres Millilitres Kilograms Grams Milligrams Millimoles }
 
+/// Standard deviations either side that hold ninety of a hundred, normal distribution.
+/// Source: Φ⁻¹(0.95) = 1.645, any table.
+pub const NINETY_PERCENT: f64 = 1.645;
+
 /// A figure and how well it is known.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Estimate<T> {

@@ -555,8 +555,12 @@ async fn check_page(
             let expected = super::Prediction {
                 ph: chemistry::quantity::Ph::clamped(ph),
                 sd: chemistry::quantity::PhShift::clamped(sd),
-                low: chemistry::quantity::Ph::clamped(ph - 1.645 * sd),
-                high: chemistry::quantity::Ph::clamped(ph + 1.645 * sd),
+                low: chemistry::quantity::Ph::clamped(
+                    ph - chemistry::quantity::NINETY_PERCENT * sd,
+                ),
+                high: chemistry::quantity::Ph::clamped(
+                    ph + chemistry::quantity::NINETY_PERCENT * sd,
+                ),
             };
             let reading = Some((advised.reading_ph, advised.reading_sd));
             Some(sheet::interval(

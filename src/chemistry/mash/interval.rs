@@ -11,9 +11,7 @@ use super::balance::Demand;
 use super::malt::Doubt;
 use super::{MashInputs, Settings};
 
-/// Standard deviations either side that hold ninety of a hundred, normal
-/// distribution. Source: Φ⁻¹(0.95) = 1.645, any table.
-pub(super) const NINETY_PERCENT: f64 = 1.645;
+pub(super) use crate::quantity::NINETY_PERCENT;
 
 /// One input and its part in the doubt.
 #[derive(Clone, Debug, PartialEq)]

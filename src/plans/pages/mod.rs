@@ -146,8 +146,8 @@ fn outcome_row(outcome: &crate::plans::Outcome) -> OutcomeRow {
     match (outcome.measured_ph, outcome.measured_sd) {
         (Some(measured), Some(sd)) => {
             let difference = measured - outcome.predicted_ph;
-            // 1.645 standard deviations hold nine in ten (normal distribution, any table).
-            let within = difference.abs() <= 1.645 * outcome.predicted_sd.hypot(sd);
+            let within = difference.abs()
+                <= chemistry::quantity::NINETY_PERCENT * outcome.predicted_sd.hypot(sd);
             OutcomeRow {
                 predicted,
                 measured: format!("{} ± {}", format::ph(measured), format::ph(sd)),

@@ -5,7 +5,7 @@ use chemistry::ion::Ion;
 use chemistry::material::Vessel;
 use chemistry::plan::{Finding, Measure, Outcome, Requirement, Window};
 use chemistry::put_right::Aim;
-use chemistry::quantity::{Fraction, Litres, MgPerL};
+use chemistry::quantity::{Fraction, Litres, MgPerL, NINETY_PERCENT};
 use chemistry::water::Water;
 
 use crate::plans::inputs::{Inputs, SHOWN_IONS};
@@ -26,7 +26,7 @@ pub(in crate::plans) fn interval(
     );
     let read = reading
         .iter()
-        .flat_map(|(ph, sd)| [ph - 1.645 * sd, ph + 1.645 * sd]);
+        .flat_map(|(ph, sd)| [ph - NINETY_PERCENT * sd, ph + NINETY_PERCENT * sd]);
     let values = [low, high, aim.low.get(), aim.high.get()]
         .into_iter()
         .chain(read);
@@ -62,7 +62,11 @@ pub(in crate::plans) fn interval(
         reading: reading
             .map(|(ph, sd)| scale.mark(ph, format!("{} ± {}", format::ph(ph), format::ph(sd)))),
         reading_doubt: reading.map(|(ph, sd)| {
-            scale.span(Some(ph - 1.645 * sd), Some(ph + 1.645 * sd), String::new())
+            scale.span(
+                Some(ph - NINETY_PERCENT * sd),
+                Some(ph + NINETY_PERCENT * sd),
+                String::new(),
+            )
         }),
         text,
     }
@@ -250,9 +254,13 @@ fn bar(
             .map(|preferred| scale.mark(preferred, with_unit(preferred))),
         before: before.map(|before| scale.mark(before, figure(before))),
         after: Some(scale.mark(after, after_words)),
-        after_doubt: sd
-            .filter(|sd| *sd > 0.0)
-            .map(|sd| scale.span(Some(after - 1.645 * sd), Some(after + 1.645 * sd), "")),
+        after_doubt: sd.filter(|sd| *sd > 0.0).map(|sd| {
+            scale.span(
+                Some(after - NINETY_PERCENT * sd),
+                Some(after + NINETY_PERCENT * sd),
+                "",
+            )
+        }),
     }
 }
 
