@@ -168,6 +168,12 @@ pub struct NewMaterialBody {
     /// Step of the scale, g for a solid, mL for a liquid.
     #[schema(required = true)]
     pub scale_step_g_or_ml: Number,
+    /// How far a weighed dose may be from its plan before it needs a reason, %. Blank: 2,
+    /// assumed. One step of the scale is always allowed.
+    pub tolerance_percent: Number,
+    /// Warn when less than this is on the shelf, g for a solid, mL for a liquid. Blank:
+    /// never.
+    pub reorder_below_g_or_ml: Number,
     /// The most of it in one hectolitre of liquor, g for a solid, mL for a liquid.
     pub highest_g_or_ml_per_hl: Number,
     /// Price per kilogram of a solid, per litre of a liquid.
@@ -194,6 +200,11 @@ impl From<&Material> for NewMaterialBody {
                 .into(),
             assay_sd_percent: material.assay.map(|assay| percent(assay.sd)).into(),
             scale_step_g_or_ml: material.scale_step.get().into(),
+            tolerance_percent: material
+                .own_tolerance
+                .map(|share| percent(share.get()))
+                .into(),
+            reorder_below_g_or_ml: material.reorder_below.map(DoseAmount::get).into(),
             highest_g_or_ml_per_hl: material.highest.map(DoseAmount::get).into(),
             price_per_kg_or_l: material.price.map(Price::get).into(),
             vessels: VesselsBody::of(&material.vessels),
@@ -249,6 +260,15 @@ fn material(body: &NewMaterialBody, problems: &mut Problems) -> Option<Material>
         &body.scale_step_g_or_ml,
         more_than_nothing,
     );
+    let own_tolerance =
+        problems.optional_quantity("tolerance_percent", &body.tolerance_percent, |percent| {
+            within(percent, "%", 0.1, 20.0).map(|percent| Fraction::clamped(percent / 100.0))
+        });
+    let reorder_below = problems.optional_quantity(
+        "reorder_below_g_or_ml",
+        &body.reorder_below_g_or_ml,
+        |value| within(value, "g or mL", 1.0, 1e8).and_then(DoseAmount::new),
+    );
     let highest = problems.optional_quantity(
         "highest_g_or_ml_per_hl",
         &body.highest_g_or_ml_per_hl,
@@ -282,6 +302,8 @@ fn material(body: &NewMaterialBody, problems: &mut Problems) -> Option<Material>
         strength,
         assay,
         scale_step: scale_step?,
+        own_tolerance,
+        reorder_below,
         price,
         vessels,
         highest,

@@ -68,6 +68,10 @@ pub struct Material {
     pub assay: Option<Estimate<Fraction>>,
     /// The step of the scale or cylinder, g or mL.
     pub scale_step: DoseAmount,
+    /// How far a weighed dose may be from its plan, as a share of it; `None`: as usual.
+    pub own_tolerance: Option<Fraction>,
+    /// Less than this on the shelf is little, g or mL; `None`: never warned of.
+    pub reorder_below: Option<DoseAmount>,
     /// What it costs.
     pub price: Option<Price>,
     /// Where it may go; at least one.
@@ -148,7 +152,16 @@ fn labelled(
 /// Source: assumed.
 const CERTIFIED_SD: f64 = 0.01;
 
+/// How far a weighed dose may be from its plan, as a share of it, where the brewery says
+/// nothing else. Source: assumed.
+pub const USUAL_TOLERANCE: Fraction = Fraction::constant(0.02);
+
 impl Material {
+    /// How far a weighed dose may be from its plan, as a share of it.
+    pub fn tolerance(&self) -> Fraction {
+        self.own_tolerance.unwrap_or(USUAL_TOLERANCE)
+    }
+
     /// The substance as it is usually sold, measured out to one gram or millilitre.
     /// `None` where nothing is usual: a blended acid, and what has no usual vessel.
     pub fn usual(substance: Substance) -> Option<Self> {
@@ -163,6 +176,8 @@ impl Material {
             strength: None,
             assay: None,
             scale_step: DoseAmount::constant(1.0),
+            own_tolerance: None,
+            reorder_below: None,
             price: None,
             vessels: vessels.to_vec(),
             highest: None,

@@ -221,6 +221,8 @@ struct ShowPage {
     strength: String,
     how_known: &'static str,
     scale_step: String,
+    tolerance: String,
+    reorder_below: String,
     price: String,
     vessels: String,
     unusual: String,
@@ -295,6 +297,10 @@ async fn show(
         strength: words::strength(&material.chemistry(current)),
         how_known: material.how_known(current),
         scale_step: words::amount(units, measures.dose, material.scale_step),
+        tolerance: words::tolerance(&material),
+        reorder_below: material.reorder_below.map_or_else(String::new, |level| {
+            words::amount(units, measures.stock, level)
+        }),
         price: words::price(&material, &page.settings),
         vessels: words::vessels(&material.vessels),
         unusual: words::vessels(&material.unusual_vessels()),
@@ -329,6 +335,7 @@ struct EditPage {
     new: bool,
     substance: SubstanceWords,
     dose_unit: &'static str,
+    stock_unit: &'static str,
     per_batch_unit: &'static str,
     price_unit: String,
     vessels: Vec<VesselBox>,
@@ -394,6 +401,7 @@ async fn edit_page(
         new: material.is_none(),
         substance: SubstanceWords::of(substance),
         dose_unit: units.label(measures.dose),
+        stock_unit: units.label(measures.stock),
         per_batch_unit: units.label(measures.per_batch),
         price_unit: format!("{} {}", page.settings.currency, units.label(measures.price)),
         vessels: Vessel::ALL

@@ -29,6 +29,8 @@ fn material(row: &SqliteRow) -> Result<Material, Error> {
         }
     }
     let price: Option<f64> = row.try_get("price_per_kg_or_l")?;
+    let tolerance: Option<f64> = row.try_get("tolerance_percent")?;
+    let reorder_below: Option<f64> = row.try_get("reorder_below_g_or_ml")?;
     let highest: Option<f64> = row.try_get("highest_g_or_ml_per_hl")?;
     Ok(Material {
         id: row.try_get("id")?,
@@ -37,6 +39,8 @@ fn material(row: &SqliteRow) -> Result<Material, Error> {
         strength,
         assay,
         scale_step: DoseAmount::clamped(row.try_get("scale_step_g_or_ml")?),
+        own_tolerance: tolerance.map(|percent| Fraction::clamped(percent / 100.0)),
+        reorder_below: reorder_below.map(DoseAmount::clamped),
         price: price.and_then(|price| Price::new(price).ok()),
         vessels,
         highest: highest.map(DoseAmount::clamped),
@@ -108,6 +112,7 @@ pub(super) async fn save(
     db: &mut SqliteConnection,
     material: &Material,
 ) -> Result<(), sqlx::Error> {
+    let tolerance = material.own_tolerance.map(|share| percent(share.get()));
     let [percent, density, grams, meq, chloride] = strength_columns(material.strength);
     let [assay, assay_sd] = assay_columns(material.assay);
     let into = |vessel| material.vessels.contains(&vessel);
@@ -115,9 +120,10 @@ pub(super) async fn save(
         "INSERT INTO materials
              (id, name, substance, strength_percent, density_g_per_ml, strength_g_per_l,
               strength_meq_per_ml, chloride_percent, assay_percent, assay_sd_percent,
-              scale_step_g_or_ml, highest_g_or_ml_per_hl, price_per_kg_or_l, into_liquor_tank,
-              into_mash, into_sparge_liquor, into_kettle, avoid, notes, in_use, version)
-         VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)
+              scale_step_g_or_ml, tolerance_percent, reorder_below_g_or_ml,
+              highest_g_or_ml_per_hl, price_per_kg_or_l, into_liquor_tank, into_mash,
+              into_sparge_liquor, into_kettle, avoid, notes, in_use, version)
+         VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)
          ON CONFLICT (id) DO UPDATE SET
              name = excluded.name, strength_percent = excluded.strength_percent,
              density_g_per_ml = excluded.density_g_per_ml,
@@ -126,6 +132,8 @@ pub(super) async fn save(
              chloride_percent = excluded.chloride_percent,
              assay_percent = excluded.assay_percent, assay_sd_percent = excluded.assay_sd_percent,
              scale_step_g_or_ml = excluded.scale_step_g_or_ml,
+             tolerance_percent = excluded.tolerance_percent,
+             reorder_below_g_or_ml = excluded.reorder_below_g_or_ml,
              highest_g_or_ml_per_hl = excluded.highest_g_or_ml_per_hl,
              price_per_kg_or_l = excluded.price_per_kg_or_l,
              into_liquor_tank = excluded.into_liquor_tank, into_mash = excluded.into_mash,
@@ -144,6 +152,8 @@ pub(super) async fn save(
     .bind(assay)
     .bind(assay_sd)
     .bind(material.scale_step.get())
+    .bind(tolerance)
+    .bind(material.reorder_below.map(DoseAmount::get))
     .bind(material.highest.map(DoseAmount::get))
     .bind(material.price.map(Price::get))
     .bind(into(Vessel::LiquorTank))
@@ -165,8 +175,8 @@ macro_rules! select_materials {
         concat!(
             "SELECT id, name, substance, strength_percent, density_g_per_ml, strength_g_per_l,
                     strength_meq_per_ml, chloride_percent, assay_percent, assay_sd_percent,
-                    scale_step_g_or_ml, highest_g_or_ml_per_hl, price_per_kg_or_l,
-                    into_liquor_tank, into_mash, into_sparge_liquor, into_kettle, avoid, notes,
+                    scale_step_g_or_ml, tolerance_percent, reorder_below_g_or_ml,
+                    highest_g_or_ml_per_hl, price_per_kg_or_l, into_liquor_tank, into_mash, into_sparge_liquor, into_kettle, avoid, notes,
                     in_use, version
              FROM materials ",
             $rest

@@ -5,6 +5,7 @@ use chemistry::quantity::{DoseAmount, Estimate, Fraction};
 
 use super::{Brings, Material, Price};
 use crate::brewery::{Settings, Units};
+use crate::input::percent;
 use crate::web::format;
 use crate::web::units::Measure;
 
@@ -13,6 +14,8 @@ use crate::web::units::Measure;
 pub struct Measures {
     /// A dose.
     pub dose: Measure,
+    /// What is on the shelf.
+    pub stock: Measure,
     /// A dose in so much liquor.
     pub per_batch: Measure,
     /// A price.
@@ -25,11 +28,13 @@ impl Measures {
         match substance.form() {
             Form::Solid => Self {
                 dose: Measure::DoseMass,
+                stock: Measure::StockMass,
                 per_batch: Measure::DoseMassPerBatch,
                 price: Measure::PricePerMass,
             },
             Form::Liquid => Self {
                 dose: Measure::DoseVolume,
+                stock: Measure::StockVolume,
                 per_batch: Measure::DoseVolumePerBatch,
                 price: Measure::PricePerVolume,
             },
@@ -40,6 +45,7 @@ impl Measures {
     pub fn fields(self) -> Vec<(String, Measure)> {
         vec![
             ("scale_step_g_or_ml".into(), self.dose),
+            ("reorder_below_g_or_ml".into(), self.stock),
             ("highest_g_or_ml_per_hl".into(), self.per_batch),
             ("price_per_kg_or_l".into(), self.price),
         ]
@@ -67,6 +73,17 @@ pub fn amount(units: Units, measure: Measure, amount: DoseAmount) -> String {
         format::entered(units.shown(measure, amount.get())),
         units.label(measure)
     )
+}
+
+/// How far a weighed dose may be from its plan: `2 %, assumed`.
+pub fn tolerance(material: &Material) -> String {
+    let percent = format::entered(percent(material.tolerance().get()));
+    let assumed = if material.own_tolerance.is_none() {
+        ", assumed"
+    } else {
+        ""
+    };
+    format!("{percent} %{assumed}")
 }
 
 /// What it is for.

@@ -22,6 +22,10 @@ pub enum Measure {
     DoseMass,
     /// A poured dose: millilitres or US fluid ounces.
     DoseVolume,
+    /// What is on the shelf of a solid: kilograms or pounds; stored in grams.
+    StockMass,
+    /// What is on the shelf of a liquid: litres or US gallons; stored in millilitres.
+    StockVolume,
     /// A weighed dose in so much liquor: grams per hectolitre or ounces per US barrel.
     DoseMassPerBatch,
     /// A poured dose in so much liquor: millilitres per hectolitre or US fluid ounces per
@@ -58,6 +62,10 @@ impl Units {
             (Self::Us, Measure::DoseMass) => "oz",
             (Self::Metric, Measure::DoseVolume) => "mL",
             (Self::Us, Measure::DoseVolume) => "fl oz",
+            (Self::Metric, Measure::StockMass) => "kg",
+            (Self::Us, Measure::StockMass) => "lb",
+            (Self::Metric, Measure::StockVolume) => "L",
+            (Self::Us, Measure::StockVolume) => "gal",
             (Self::Metric, Measure::DoseMassPerBatch) => "g/hL",
             (Self::Us, Measure::DoseMassPerBatch) => "oz/bbl",
             (Self::Metric, Measure::DoseVolumePerBatch) => "mL/hL",
@@ -77,12 +85,15 @@ impl Units {
     const fn size(self, measure: Measure) -> f64 {
         match (self, measure) {
             (Self::Metric, Measure::Batch) => 100.0,
+            (Self::Metric, Measure::StockMass | Measure::StockVolume) => 1000.0,
             (Self::Metric, _) | (_, Measure::Temperature) => 1.0,
             (Self::Us, Measure::Volume) => LITRES_PER_GALLON,
             (Self::Us, Measure::Batch) => LITRES_PER_BARREL,
             (Self::Us, Measure::Malt) => KILOGRAMS_PER_POUND,
             (Self::Us, Measure::DoseMass) => KILOGRAMS_PER_POUND * 1000.0 / 16.0,
             (Self::Us, Measure::DoseVolume) => LITRES_PER_GALLON * 1000.0 / 128.0,
+            (Self::Us, Measure::StockMass) => KILOGRAMS_PER_POUND * 1000.0,
+            (Self::Us, Measure::StockVolume) => LITRES_PER_GALLON * 1000.0,
             (Self::Us, Measure::DoseMassPerBatch) => {
                 self.size(Measure::DoseMass) * 100.0 / LITRES_PER_BARREL
             }
@@ -171,6 +182,8 @@ mod tests {
             (Measure::Malt, 0.453_592),
             (Measure::DoseMass, 28.349_52),
             (Measure::DoseVolume, 29.573_53),
+            (Measure::StockMass, 453.592),
+            (Measure::StockVolume, 3_785.412),
             (Measure::DoseMassPerBatch, 28.349_52 / 1.173_48),
             (Measure::DoseVolumePerBatch, 29.573_53 / 1.173_48),
         ] {
@@ -188,6 +201,7 @@ mod tests {
             for measure in [
                 Measure::Volume,
                 Measure::Batch,
+                Measure::StockMass,
                 Measure::Temperature,
                 Measure::PriceOfWater,
             ] {

@@ -146,6 +146,12 @@ async fn what_no_material_can_be_is_refused_at_its_field() {
         ),
         (json!({"scale_step_g_or_ml": 0}), "/scale_step_g_or_ml"),
         (json!({"scale_step_g_or_ml": "NaN"}), "/scale_step_g_or_ml"),
+        (json!({"tolerance_percent": 0}), "/tolerance_percent"),
+        (json!({"tolerance_percent": "50"}), "/tolerance_percent"),
+        (
+            json!({"reorder_below_g_or_ml": -5}),
+            "/reorder_below_g_or_ml",
+        ),
         (json!({"assay_percent": 101}), "/assay_percent"),
         (
             json!({"assay_percent": 98, "assay_sd_percent": -1}),
@@ -353,8 +359,21 @@ async fn a_material_is_entered_changed_and_taken_out_of_use_through_its_forms() 
     assert!(page.words().contains("Follow the safety data sheet"));
     assert!(page.words().contains("€ 6.40 per L"));
 
+    assert!(page.words().contains("2 %, assumed"), "{}", page.words());
+
     let place = format!("{}/edit", page.path);
     let form = browser.open(&place).await;
+    let fields = [("tolerance_percent", "1,5"), ("reorder_below_g_or_ml", "5")];
+    let page = browser.fill(&form, &place, &fields).await;
+    assert!(page.words().contains("1.5 %"), "{}", page.words());
+    assert!(
+        page.words().contains("Buy more below5 L"),
+        "{}",
+        page.words()
+    );
+
+    let form = browser.open(&place).await;
+    assert_eq!(form.field("reorder_below_g_or_ml"), "5");
     assert_eq!(form.field("strength.percent"), "88");
     let changed = browser
         .fill(&form, &place, &[("name", "Lactic acid, drum")])
