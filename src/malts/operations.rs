@@ -168,7 +168,7 @@ pub async fn create_lot(
     save_lot(&mut tx, &lot).await?;
     let name = malt.name_with(Some(&lot));
     let entry = Change::created("malt lot", lot.id, &name, &describe_lot(&lot));
-    record::append(&mut tx, by, entry).await?;
+    record::append(&mut tx, by, entry.about("malt", malt.id)).await?;
     tx.commit().await?;
     Ok(lot)
 }
@@ -238,7 +238,7 @@ async fn record_lot(
     let name = malt.name_with(Some(after));
     let (was, is) = (describe_lot(before), describe_lot(after));
     let entry = Change::changed("malt lot", after.id, &name, &was, &is);
-    record::append(tx, by, entry).await
+    record::append(tx, by, entry.about("malt", malt.id)).await
 }
 
 async fn save_lot(tx: &mut SqliteConnection, lot: &MaltLot) -> Result<(), Error> {
@@ -272,7 +272,9 @@ pub async fn titrate(
     let titration = body.titration_of(&lot, today, &by.name)?;
     store::insert_titration(&mut tx, &titration).await?;
     let name = malt.name_with(Some(&lot));
-    let entry = Change::created("malt titration", titration.id, &name, &typed);
+    let entry = Change::created("malt titration", titration.id, &name, &typed)
+        .about("malt lot", lot.id)
+        .about("malt", malt.id);
     record::append(&mut tx, by, entry).await?;
     let (_, lot) = both(&mut tx, malt.id, lot.id).await?;
     tx.commit().await?;
@@ -304,7 +306,10 @@ pub async fn withdraw_titration(
     }
     store::withdraw_titration(&mut tx, id, UtcTime::now(), &reason).await?;
     let name = malt.name_with(Some(&lot));
-    let entry = Change::event("withdrew", "malt titration", id, &name).because(Some(reason));
+    let entry = Change::event("withdrew", "malt titration", id, &name)
+        .because(Some(reason))
+        .about("malt lot", lot.id)
+        .about("malt", malt.id);
     record::append(&mut tx, by, entry).await?;
     let (_, lot) = both(&mut tx, malt.id, lot.id).await?;
     tx.commit().await?;

@@ -400,7 +400,8 @@ pub async fn create_token(
     record::append(
         &mut tx,
         by,
-        record::Change::created("API token", token.id, &token.name, &describe_token(&token)),
+        record::Change::created("API token", token.id, &token.name, &describe_token(&token))
+            .about("account", by.id),
     )
     .await?;
     tx.commit().await?;

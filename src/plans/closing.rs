@@ -6,7 +6,7 @@ use sqlx::SqliteConnection;
 
 use super::inputs::Learned;
 use super::learning::Lesson;
-use super::operations::{same_version, title};
+use super::operations::{about, same_version, title};
 use super::{Deed, Inputs, MashCheck, Outcome, Plan, Stage, State, compute, learning, store};
 use crate::db::Db;
 use crate::error::Error;
@@ -81,7 +81,8 @@ pub async fn close(
     store::update_state(&mut tx, &after).await?;
     let after_json = serde_json::to_value(&after.outcome).unwrap_or_default();
     let change = record::Change::of("closed", "plan", id, &title(&after), None, Some(after_json));
-    record::append(&mut tx, by, change.because(closing.note)).await?;
+    let change = change.because(closing.note).about_each(about(&after));
+    record::append(&mut tx, by, change).await?;
     tx.commit().await?;
     Ok(after)
 }

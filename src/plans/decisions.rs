@@ -3,7 +3,7 @@
 
 use sqlx::SqliteConnection;
 
-use super::operations::{describe, open_draft, same_version, title};
+use super::operations::{about, describe, open_draft, same_version, title};
 use super::{Deed, Dose, Plan, State, compute, store, words};
 use crate::db::Db;
 use crate::error::{Error, breaks_unique};
@@ -73,7 +73,8 @@ pub async fn approve(
         Some(describe(&before)),
         Some(describe(&after)),
     );
-    record::append(&mut tx, by, change.because(reason)).await?;
+    let change = change.because(reason).about_each(about(&after));
+    record::append(&mut tx, by, change).await?;
     tx.commit().await?;
     Ok(after)
 }
@@ -97,7 +98,9 @@ async fn replace(
     record::append(
         tx,
         by,
-        record::Change::event("withdrawn", "plan", id, &title(&after)).because(Some(reason)),
+        record::Change::event("withdrawn", "plan", id, &title(&after))
+            .because(Some(reason))
+            .about_each(about(&after)),
     )
     .await
 }
@@ -154,7 +157,8 @@ pub async fn take_back_approval(
     record::append(
         &mut tx,
         by,
-        record::Change::event("approval taken back", "plan", id, &title(&after)),
+        record::Change::event("approval taken back", "plan", id, &title(&after))
+            .about_each(about(&after)),
     )
     .await?;
     tx.commit().await?;
@@ -190,7 +194,9 @@ pub async fn withdraw(
     record::append(
         &mut tx,
         by,
-        record::Change::event("withdrawn", "plan", id, &title(&after)).because(Some(reason)),
+        record::Change::event("withdrawn", "plan", id, &title(&after))
+            .because(Some(reason))
+            .about_each(about(&after)),
     )
     .await?;
     tx.commit().await?;
@@ -263,7 +269,8 @@ pub async fn revise(db: &Db, by: &Member, id: PlanId) -> Result<Plan, Error> {
     record::append(
         &mut tx,
         by,
-        record::Change::created("plan", plan.id, &title(&plan), &describe(&plan)),
+        record::Change::created("plan", plan.id, &title(&plan), &describe(&plan))
+            .about_each(about(&plan)),
     )
     .await?;
     tx.commit().await?;

@@ -8,7 +8,7 @@ use chemistry::put_right::{
 use chemistry::quantity::{Celsius, DoseAmount, Minutes, Ph, PhShift};
 use serde_json::json;
 
-use super::operations::title;
+use super::operations::{batch, title};
 use super::{Advised, Deed, Dose, MashCheck, Plan, Stage, State, Step, compute, store};
 use crate::db::Db;
 use crate::error::Error;
@@ -97,7 +97,8 @@ pub async fn read(
     record::append(
         &mut tx,
         by,
-        record::Change::created("mash check", check.id, &name, &describe(&check)),
+        record::Change::created("mash check", check.id, &name, &describe(&check))
+            .about_each(batch(&plan)),
     )
     .await?;
     tx.commit().await?;
@@ -149,7 +150,9 @@ pub async fn withdraw(
     record::append(
         &mut tx,
         by,
-        record::Change::event("withdrawn", "mash check", id, &name).because(Some(reason)),
+        record::Change::event("withdrawn", "mash check", id, &name)
+            .because(Some(reason))
+            .about_each(batch(&plan)),
     )
     .await?;
     tx.commit().await?;

@@ -110,7 +110,8 @@ pub async fn draft(db: &Db, by: &Member, new: NewPlan) -> Result<Plan, Error> {
     record::append(
         &mut tx,
         by,
-        record::Change::created("plan", plan.id, &title(&plan), &describe(&plan)),
+        record::Change::created("plan", plan.id, &title(&plan), &describe(&plan))
+            .about_each(about(&plan)),
     )
     .await?;
     tx.commit().await?;
@@ -447,6 +448,8 @@ async fn save_draft(
         Some(describe(before)),
         Some(describe(after)),
     );
+    // Under its former number it is found as well.
+    let change = change.about_each(about(before)).about_each(about(after));
     record::append(tx, by, change).await
 }
 
@@ -456,6 +459,29 @@ pub(super) fn title(plan: &Plan) -> String {
         "{} {}, revision {}",
         plan.batch, plan.beer_name, plan.revision
     )
+}
+
+/// What an entry about a plan is about: its batch and beer, and what the plan rests on.
+pub(super) fn about(plan: &Plan) -> Vec<(&'static str, String)> {
+    let used = plan.inputs.sources.iter().zip(&plan.shares);
+    let used = used.filter(|(_, share)| share.get() > 0.0);
+    let mut about = batch(plan);
+    for (source, _) in used {
+        about.extend(source.id.map(|id| ("source", id.to_string())));
+        about.extend(source.tests.iter().map(|id| ("water test", id.to_string())));
+    }
+    let lots = plan.inputs.malts.iter().filter_map(|malt| malt.lot_id);
+    about.extend(lots.map(|id| ("malt lot", id.to_string())));
+    about
+}
+
+/// What an entry about something of a plan is about.
+pub(super) fn batch(plan: &Plan) -> Vec<(&'static str, String)> {
+    vec![
+        ("plan", plan.id.to_string()),
+        ("batch", plan.batch.clone()),
+        ("beer", plan.beer_id.to_string()),
+    ]
 }
 
 /// A plan as the record book writes it.

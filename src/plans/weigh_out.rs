@@ -2,7 +2,7 @@
 
 use chemistry::quantity::DoseAmount;
 
-use super::operations::{title, weighed_json};
+use super::operations::{batch, title, weighed_json};
 use super::{Dose, Plan, State, Weighed, store};
 use crate::brewery;
 use crate::db::Db;
@@ -56,7 +56,7 @@ pub async fn weigh(
         Some(planned),
         Some(weighed_json(actual, &lot)),
     );
-    record::append(&mut tx, by, change).await?;
+    record::append(&mut tx, by, change.about_each(batch(&plan))).await?;
     let after = settle(&mut tx, &plan).await?;
     tx.commit().await?;
     Ok(after)
@@ -93,7 +93,8 @@ pub async fn take_back(
         Some(before),
         None,
     );
-    record::append(&mut tx, by, change.because(Some(reason))).await?;
+    let change = change.because(Some(reason)).about_each(batch(&plan));
+    record::append(&mut tx, by, change).await?;
     let after = settle(&mut tx, &plan).await?;
     tx.commit().await?;
     Ok(after)

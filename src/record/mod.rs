@@ -28,6 +28,7 @@ pub struct Change {
     before: Option<Value>,
     after: Option<Value>,
     reason: Option<String>,
+    about: Vec<(&'static str, String)>,
 }
 
 impl Change {
@@ -76,6 +77,7 @@ impl Change {
             before,
             after,
             reason: None,
+            about: vec![(kind, id.to_string())],
         }
     }
 
@@ -84,6 +86,28 @@ impl Change {
     pub fn because(mut self, reason: Option<String>) -> Self {
         self.reason = reason;
         self
+    }
+
+    /// What else it is about: the book is searched by that. `kind` as subjects are named,
+    /// or `batch` with the number of the batch.
+    #[must_use]
+    pub fn about(mut self, kind: &'static str, id: impl Display) -> Self {
+        let link = (kind, id.to_string());
+        if !self.about.contains(&link) {
+            self.about.push(link);
+        }
+        self
+    }
+
+    /// The same for several things.
+    #[must_use]
+    pub fn about_each<I: Display>(
+        self,
+        things: impl IntoIterator<Item = (&'static str, I)>,
+    ) -> Self {
+        things
+            .into_iter()
+            .fold(self, |change, (kind, id)| change.about(kind, id))
     }
 }
 

@@ -13,7 +13,7 @@ pub(super) async fn insert(
     at: UtcTime,
     change: &Change,
 ) -> Result<(), sqlx::Error> {
-    sqlx::query(
+    let seq = sqlx::query(
         "INSERT INTO record_entries
              (at, member_id, member_name, action, subject_kind, subject_id, subject_name, before, after, reason)
          VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
@@ -28,8 +28,17 @@ pub(super) async fn insert(
     .bind(change.before.as_ref().map(ToString::to_string))
     .bind(change.after.as_ref().map(ToString::to_string))
     .bind(&change.reason)
-    .execute(db)
-    .await?;
+    .execute(&mut *db)
+    .await?
+    .last_insert_rowid();
+    for (kind, id) in &change.about {
+        sqlx::query("INSERT INTO record_links (kind, id, seq) VALUES (?, ?, ?)")
+            .bind(kind)
+            .bind(id)
+            .bind(seq)
+            .execute(&mut *db)
+            .await?;
+    }
     Ok(())
 }
 

@@ -226,7 +226,7 @@ pub async fn create_lot(
     save_lot(&mut tx, &lot).await?;
     let name = material.name_with(Some(&lot));
     let entry = Change::created("material lot", lot.id, &name, &describe_lot(&lot));
-    record::append(&mut tx, by, entry).await?;
+    record::append(&mut tx, by, entry.about("material", material.id)).await?;
     tx.commit().await?;
     Ok(lot)
 }
@@ -258,7 +258,7 @@ pub async fn revise_lot(
     record::append(
         &mut tx,
         by,
-        Change::changed("material lot", id, &name, &was, &is),
+        Change::changed("material lot", id, &name, &was, &is).about("material", after.material_id),
     )
     .await?;
     tx.commit().await?;
@@ -291,7 +291,8 @@ async fn step_aside(
         record::append(
             tx,
             by,
-            Change::changed("material lot", after.id, &name, &was, &is),
+            Change::changed("material lot", after.id, &name, &was, &is)
+                .about("material", after.material_id),
         )
         .await?;
     }

@@ -139,6 +139,12 @@ async fn the_record_book_cannot_be_rewritten_even_at_a_console() {
     for statement in [
         "UPDATE record_entries SET action = 'x'",
         "DELETE FROM record_entries",
+        "INSERT OR REPLACE INTO record_entries (seq, at, member_name, action, subject_kind, subject_id, subject_name)
+         VALUES (1, '2026-12-01T00:00:00.000Z', 'x', 'x', 'x', 'x', 'x')",
+        "UPDATE record_links SET id = 'x'",
+        "DELETE FROM record_links",
+        "INSERT OR REPLACE INTO record_links SELECT * FROM record_links",
+        "INSERT INTO record_links (kind, id, seq) VALUES ('batch', '26-1', 1)",
     ] {
         let error = sqlx::query(statement).execute(&mut *tx).await.unwrap_err();
         assert!(error.to_string().contains("append-only"), "{error}");

@@ -378,7 +378,7 @@ pub async fn enter(
     store::insert(&mut tx, &test).await?;
     let name = name(&source, &test);
     let entry = record::Change::created("water test", test.id, &name, &describe(&test));
-    record::append(&mut tx, by, entry).await?;
+    record::append(&mut tx, by, entry.about("source", source.id)).await?;
     tx.commit().await?;
     Ok(test)
 }
@@ -531,7 +531,8 @@ async fn change(
         Some(describe(&before)),
         Some(describe(&after)),
     );
-    record::append(&mut tx, by, entry.because(reason)).await?;
+    let entry = entry.because(reason).about("source", source.id);
+    record::append(&mut tx, by, entry).await?;
     tx.commit().await?;
     Ok(after)
 }
