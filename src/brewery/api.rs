@@ -30,6 +30,14 @@ pub struct SettingsBody {
     pub currency: String,
     /// Limits for drinking water: `eu`, `us` or `who`.
     pub potable_limits: String,
+    /// The four vessels, `liquor_tank`, `mash`, `sparge_liquor` and `kettle`, in the order in
+    /// which the brewery weighs out.
+    pub vessel_order: Vec<String>,
+    /// Which lines somebody else has to look at before they count: `never` (none) or
+    /// `acid_and_lime` (acids, lime and other bases).
+    pub second_person: String,
+    /// Minutes a shared tablet may lie idle before it goes back to the names: 1 to 60, whole.
+    pub tablet_idle_minutes: Number,
     /// Equivalents of acid set free in the mash per equivalent of calcium.
     pub calcium_share: Number,
     /// Its standard deviation.
@@ -48,6 +56,13 @@ impl From<&Settings> for SettingsBody {
             time_zone: settings.time_zone.clone(),
             currency: settings.currency.clone(),
             potable_limits: settings.potable_limits.key().into(),
+            vessel_order: settings
+                .vessel_order
+                .iter()
+                .map(|vessel| vessel.key().to_owned())
+                .collect(),
+            second_person: settings.second_person.key().into(),
+            tablet_idle_minutes: settings.idle_minutes().into(),
             calcium_share: settings.mash.calcium_release.value.get().into(),
             calcium_share_sd: settings.mash.calcium_release.sd.into(),
             co2_lost_share: settings.mash.carbon_dioxide_lost.value.get().into(),

@@ -1,7 +1,10 @@
-//! The brewery's own choices: its name, units, time zone, and what it assumes of a
-//! mash.
+//! The brewery's own choices: its name, units, time zone, how it weighs out, and what it
+//! assumes of a mash.
+
+use std::time::Duration;
 
 use chemistry::mash;
+use chemistry::material::Vessel;
 use chemistry::quantity::{Estimate, Fraction};
 use chemistry::report::LimitSet;
 
@@ -45,6 +48,41 @@ impl Units {
     }
 }
 
+/// Which lines of a weigh-out somebody else has to look at before they count.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum SecondPerson {
+    /// None: whoever weighs ticks alone.
+    Never,
+    /// Acids and bases, the materials that burn and that move the mash most.
+    AcidAndLime,
+}
+
+impl SecondPerson {
+    /// Both.
+    pub const ALL: [Self; 2] = [Self::Never, Self::AcidAndLime];
+
+    /// As stored and sent.
+    pub const fn key(self) -> &'static str {
+        match self {
+            Self::Never => "never",
+            Self::AcidAndLime => "acid_and_lime",
+        }
+    }
+
+    /// In words.
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::Never => "For no line",
+            Self::AcidAndLime => "For every acid and for lime and other bases",
+        }
+    }
+
+    /// The choice with this key.
+    pub fn from_key(key: &str) -> Option<Self> {
+        Self::ALL.into_iter().find(|choice| choice.key() == key)
+    }
+}
+
 /// Everything one row of settings holds.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Settings {
@@ -58,12 +96,25 @@ pub struct Settings {
     pub currency: String,
     /// Whose limits for drinking water a report is held against.
     pub potable_limits: LimitSet,
+    /// The vessels in the order in which this brewery weighs out.
+    pub vessel_order: [Vessel; 4],
+    /// Which lines somebody else has to look at.
+    pub second_person: SecondPerson,
+    /// How long a shared tablet may lie idle before it goes back to the names.
+    pub tablet_idle: Duration,
     /// What happens in a mash that no analysis tells.
     pub mash: mash::Settings,
     /// Whether the brewery is invented.
     pub demo: bool,
     /// Counts changes, so that two people do not overwrite each other.
     pub version: i64,
+}
+
+impl Settings {
+    /// How long a shared tablet may lie idle, in whole minutes.
+    pub fn idle_minutes(&self) -> f64 {
+        (self.tablet_idle.as_secs() / 60) as f64
+    }
 }
 
 impl Default for Settings {
@@ -74,6 +125,9 @@ impl Default for Settings {
             time_zone: "UTC".into(),
             currency: "€".into(),
             potable_limits: LimitSet::EuropeanUnion,
+            vessel_order: Vessel::ALL,
+            second_person: SecondPerson::Never,
+            tablet_idle: Duration::from_mins(5),
             mash: mash::Settings::default(),
             demo: false,
             version: 0,

@@ -1,13 +1,16 @@
 //! Reading and changing the settings.
 
+use std::time::Duration;
+
+use chemistry::material::Vessel;
 use chemistry::quantity::{Estimate, Fraction};
 use chemistry::report::LimitSet;
 
 use super::api::SettingsBody;
-use super::{Settings, Units, mash_settings, store};
+use super::{SecondPerson, Settings, Units, mash_settings, store};
 use crate::db::Db;
 use crate::error::Error;
-use crate::input::Problems;
+use crate::input::{Problems, within};
 use crate::people::{Member, Permission};
 use crate::record;
 
@@ -44,6 +47,15 @@ impl TryFrom<SettingsBody> for Settings {
             });
         let currency = problems.text("currency", &body.currency, 8);
         let limits = problems.choice("potable_limits", &body.potable_limits, LimitSet::from_key);
+        let vessel_order = vessel_order(&body.vessel_order, &mut problems);
+        let second_person =
+            problems.choice("second_person", &body.second_person, SecondPerson::from_key);
+        let idle = problems.quantity("tablet_idle_minutes", &body.tablet_idle_minutes, |it| {
+            within(it, "min", 1.0, 60.0)
+        });
+        if idle.is_some_and(|minutes| minutes.fract() != 0.0) {
+            problems.add("tablet_idle_minutes", "Enter whole minutes.");
+        }
         let mut share = |name: &str, number, sd_name: &str, sd: &crate::input::Number| {
             let value = problems.quantity(name, number, Fraction::new);
             let sd = problems.quantity(sd_name, sd, Fraction::new);
@@ -62,13 +74,27 @@ impl TryFrom<SettingsBody> for Settings {
             &body.co2_lost_share_sd,
         );
         problems.finish()?;
-        match (name, units, zone, currency, limits, calcium, lost) {
+        match (
+            name,
+            units,
+            zone,
+            currency,
+            limits,
+            vessel_order,
+            second_person,
+            idle,
+            calcium,
+            lost,
+        ) {
             (
                 Some(name),
                 Some(units),
                 Some(time_zone),
                 Some(currency),
                 Some(potable_limits),
+                Some(vessel_order),
+                Some(second_person),
+                Some(idle),
                 Some(calcium),
                 Some(lost),
             ) => Ok(Self {
@@ -77,6 +103,9 @@ impl TryFrom<SettingsBody> for Settings {
                 time_zone,
                 currency,
                 potable_limits,
+                vessel_order,
+                second_person,
+                tablet_idle: Duration::from_mins(idle as u64),
                 mash: mash_settings(calcium, lost),
                 demo: false,
                 version: 0,
@@ -84,6 +113,34 @@ impl TryFrom<SettingsBody> for Settings {
             _ => Err(Error::field("", "Fill in every field.")),
         }
     }
+}
+
+/// The four vessels, each once.
+fn vessel_order(keys: &[String], problems: &mut Problems) -> Option<[Vessel; 4]> {
+    let mut vessels = Vec::new();
+    for (index, key) in keys.iter().enumerate() {
+        let field = format!("vessel_order.{index}");
+        let vessel = problems.choice(&field, key, Vessel::from_key)?;
+        if vessels.contains(&vessel) {
+            problems.add(
+                field,
+                format!(
+                    "The {} stands above already: name each once.",
+                    vessel.name()
+                ),
+            );
+            return None;
+        }
+        vessels.push(vessel);
+    }
+    let order = vessels.try_into().ok();
+    if order.is_none() {
+        problems.add(
+            "vessel_order",
+            "Name the four vessels, liquor_tank, mash, sparge_liquor and kettle, each once.",
+        );
+    }
+    order
 }
 
 /// Replaces the settings. `read_version`: the version the caller changed.

@@ -9,6 +9,7 @@
 
 mod beers;
 mod brew_day;
+mod brewery;
 mod brewhouse;
 mod desk;
 mod help;
