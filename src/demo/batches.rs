@@ -1,7 +1,7 @@
 //! The plans of the invented brewery, one in every state and a dozen closed.
 
 use chemistry::plan::Way;
-use chemistry::quantity::{Celsius, DoseAmount, Minutes, Ph, PhShift};
+use chemistry::quantity::{Celsius, Minutes, Ph, PhShift};
 use jiff::ToSpan;
 use jiff::civil::Date;
 
@@ -14,7 +14,8 @@ use crate::plans::closing::{self, Closing};
 use crate::plans::decisions;
 use crate::plans::mash_checks::{self, NewMashCheck};
 use crate::plans::operations::{self as plans, NewPlan};
-use crate::plans::{Plan, Stage, compute, weigh_out};
+use crate::plans::weigh_out::{self, LotNamed, NewWeighed};
+use crate::plans::{Plan, Stage, compute};
 
 pub(super) async fn fill_plans(
     db: &Db,
@@ -138,14 +139,15 @@ async fn drafted(
 async fn weighed(db: &Db, by: &Member, plan: Plan, lines: usize) -> Result<Plan, Error> {
     let mut after = plan.clone();
     for dose in plan.doses.iter().take(lines) {
-        let lot = plan
-            .inputs
-            .shelf
-            .get(dose.material)
-            .map(|label| label.lot.clone())
-            .unwrap_or_default();
-        let amount = DoseAmount::clamped(dose.planned.get());
-        after = weigh_out::weigh(db, by, plan.id, dose.id, amount, lot).await?;
+        let label = plan.inputs.shelf.get(dose.material);
+        let new = NewWeighed {
+            actual: dose.planned,
+            lot: label
+                .and_then(|label| label.lot_id)
+                .map_or(LotNamed::Untold, LotNamed::Picked),
+            reason: None,
+        };
+        after = weigh_out::weigh(db, by, plan.id, dose.id, new).await?;
     }
     Ok(after)
 }

@@ -9,8 +9,8 @@ use serde::Serialize;
 use super::inputs::Inputs;
 use super::operations::Shown;
 use super::store::Listing;
-use super::{Advised, Deed, Dose, MashCheck, Plan, Prediction, compute, words};
-use crate::id::{BeerId, DoseId, MashCheckId, PlanId, UtcTime};
+use super::{Advised, Correction, Deed, Dose, MashCheck, Plan, Prediction, compute, words};
+use crate::id::{BeerId, DoseId, MashCheckId, MaterialLotId, PlanId, UtcTime};
 
 /// The composition of a liquor.
 #[derive(Clone, Debug, Serialize, utoipa::ToSchema)]
@@ -270,12 +270,20 @@ pub struct DoseBody {
     mash_check_id: Option<MashCheckId>,
     /// How much went in.
     actual: Option<f64>,
-    /// Of which lot.
+    /// Of which lot: the code on its pack.
     actual_lot: Option<String>,
+    /// Which lot of the shelf that is, if it knows one of that code.
+    actual_material_lot_id: Option<MaterialLotId>,
     /// When.
     weighed_at: Option<UtcTime>,
     /// By whom.
     weighed_by: Option<String>,
+    /// Why it is not what was planned.
+    reason: Option<String>,
+    /// The second person who stood by.
+    second_person: Option<String>,
+    /// What was written down before it was corrected, the earliest first.
+    corrections: Vec<Correction>,
     /// What can hurt about it.
     cautions: Vec<&'static str>,
 }
@@ -304,9 +312,15 @@ impl DoseBody {
             planned: dose.planned.get(),
             mash_check_id: dose.mash_check,
             actual: weighed.map(|weighed| weighed.actual.get()),
-            actual_lot: weighed.map(|weighed| weighed.lot.clone()),
+            actual_lot: weighed.map(|weighed| weighed.lot.code.clone()),
+            actual_material_lot_id: weighed.and_then(|weighed| weighed.lot.id),
             weighed_at: weighed.map(|weighed| weighed.at),
             weighed_by: weighed.map(|weighed| weighed.by.clone()),
+            reason: weighed
+                .map(|weighed| weighed.reason.clone())
+                .filter(|reason| !reason.is_empty()),
+            second_person: weighed.and_then(|weighed| Some(weighed.witness.as_ref()?.name.clone())),
+            corrections: weighed.map_or_else(Vec::new, |weighed| weighed.corrections.clone()),
             cautions: cautions.unwrap_or_default(),
         }
     }

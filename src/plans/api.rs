@@ -348,8 +348,7 @@ async fn weigh(
     Json(body): Json<WeighedBody>,
 ) -> Result<impl IntoResponse, Error> {
     by.may(Permission::BrewBatches)?;
-    let (actual, lot) = body.check()?;
-    let plan = weigh_out::weigh(&db, &by, id, dose, actual, lot).await?;
+    let plan = weigh_out::weigh(&db, &by, id, dose, body.try_into()?).await?;
     Ok(tagged(plan.version, PlanBody::from(&plan)))
 }
 

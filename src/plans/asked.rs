@@ -11,6 +11,7 @@ use super::bodies::InputsBody;
 use super::closing::Closing;
 use super::mash_checks::NewMashCheck;
 use super::operations::{NewPlan, SourceChoice, Treatment};
+use super::weigh_out::{LotNamed, NewWeighed};
 use crate::error::Error;
 use crate::id::{BeerId, MashCheckId};
 use crate::input::{Flag, Number, Problems};
@@ -239,21 +240,41 @@ pub struct WeighedBody {
     /// How much went in, g or mL.
     #[schema(required = true)]
     pub actual: Number,
-    /// Of which lot.
+    /// Of which lot: an identifier of `/materials/{id}/lots`.
+    pub material_lot_id: String,
+    /// The code on its pack, or what its label reads: `LEAT:LOT:` and the identifier.
+    /// Counts before `material_lot_id`.
+    #[schema(max_length = 80)]
     pub lot: String,
+    /// Why it is not what was planned.
+    #[schema(max_length = 500)]
+    pub reason: String,
 }
 
-impl WeighedBody {
-    /// The amount and the lot, checked.
-    pub fn check(&self) -> Result<(DoseAmount, String), Error> {
+impl TryFrom<WeighedBody> for NewWeighed {
+    type Error = Error;
+
+    fn try_from(body: WeighedBody) -> Result<Self, Error> {
         let mut problems = Problems::new();
-        let actual = problems.quantity("actual", &self.actual, DoseAmount::new);
-        let lot = problems.optional_text("lot", &self.lot, 80);
+        let actual = problems.quantity("actual", &body.actual, DoseAmount::new);
+        let typed = problems.optional_text("lot", &body.lot, 80);
+        let lot = if let Some(text) = typed {
+            LotNamed::read(&text)
+        } else if body.material_lot_id.trim().is_empty() {
+            Ok(LotNamed::Untold)
+        } else {
+            let picked = problems.choice("material_lot_id", &body.material_lot_id, |key| {
+                key.parse().ok()
+            });
+            Ok(picked.map_or(LotNamed::Untold, LotNamed::Picked))
+        };
+        let reason = problems.optional_text("reason", &body.reason, 500);
         problems.finish()?;
-        Ok((
-            actual.unwrap_or(DoseAmount::constant(0.0)),
-            lot.unwrap_or_default(),
-        ))
+        Ok(Self {
+            actual: actual.unwrap_or(DoseAmount::constant(0.0)),
+            lot: lot?,
+            reason,
+        })
     }
 }
 

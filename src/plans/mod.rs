@@ -9,11 +9,11 @@
 //! Read [`operations`] for the rules and the files it names, [`inputs`] for what is frozen, [`compute`] for
 //! how a treatment is worked out.
 
-use chemistry::material::Vessel;
+use chemistry::material::{Material, Vessel};
 use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
 use jiff::civil::Date;
 
-use crate::id::{BeerId, DoseId, MashCheckId, PlanId, UtcTime};
+use crate::id::{BeerId, DoseId, MashCheckId, MaterialLotId, MemberId, PlanId, UtcTime};
 
 pub mod answers;
 pub mod api;
@@ -235,11 +235,55 @@ pub struct Weighed {
     /// How much, g or mL.
     pub actual: DoseAmount,
     /// Of which lot.
-    pub lot: String,
-    /// When.
+    pub lot: Lot,
+    /// When it went in.
     pub at: UtcTime,
     /// By whom.
     pub by: String,
+    /// Why it is not what was planned; empty where it is.
+    pub reason: String,
+    /// The second person who stood by, where the brewery wants one.
+    pub witness: Option<Witness>,
+    /// What was written down before it was corrected, the earliest first.
+    pub corrections: Vec<Correction>,
+}
+
+/// What a dose was taken from.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct Lot {
+    /// The code on the pack; empty if it was not told.
+    pub code: String,
+    /// Which lot of the shelf; absent where the shelf knows none of that code.
+    pub id: Option<MaterialLotId>,
+    /// What that lot was, by its label and certificate on that day. Absent with the lot:
+    /// then the figures of the plan count.
+    pub material: Option<Material>,
+}
+
+/// Somebody who stood by.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Witness {
+    /// Whose account.
+    pub id: MemberId,
+    /// The name of that day.
+    pub name: String,
+}
+
+/// What was written down about a dose, and why it no longer holds.
+#[derive(Clone, Debug, PartialEq, serde::Serialize, serde::Deserialize, utoipa::ToSchema)]
+pub struct Correction {
+    /// How much was written down, g or mL.
+    pub actual: f64,
+    /// Of which lot.
+    pub lot: String,
+    /// Why that was not what was planned; empty where it was.
+    pub reason: String,
+    /// When it was corrected.
+    pub corrected_at: UtcTime,
+    /// By whom.
+    pub corrected_by: String,
+    /// Why.
+    pub because: String,
 }
 
 /// When in the making of beer a pH is read.

@@ -3,12 +3,12 @@
 //! [`mash_checks`](super::mash_checks), [`closing`](super::closing).
 
 use chemistry::plan::{self, Ending, Way};
-use chemistry::quantity::{DoseAmount, Fraction};
+use chemistry::quantity::Fraction;
 use serde_json::json;
 use sqlx::SqliteConnection;
 
 use super::store::{Filter, Listing, Order};
-use super::{Choice, Deed, Dose, Inputs, Plan, State, compute, gather, store};
+use super::{Choice, Deed, Dose, Inputs, Plan, State, Weighed, compute, gather, store};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{BeerId, PlanId, SourceId, UtcTime};
@@ -518,7 +518,15 @@ pub(super) fn describe(plan: &Plan) -> serde_json::Value {
     })
 }
 
-/// An amount that was weighed, as the record book writes it.
-pub(super) fn weighed_json(amount: DoseAmount, lot: &str) -> serde_json::Value {
-    json!({"actual": amount.get(), "lot": lot})
+/// What went in, as the record book writes it.
+pub(super) fn weighed_json(weighed: &Weighed) -> serde_json::Value {
+    let lot = &weighed.lot;
+    let mut told = json!({"actual": weighed.actual.get(), "lot": lot.code});
+    if let Some(id) = lot.id {
+        told["material_lot_id"] = json!(id);
+    }
+    if let Some(witness) = &weighed.witness {
+        told["second_person"] = json!(witness.name);
+    }
+    told
 }

@@ -5,9 +5,10 @@ use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
 use serde::{Deserialize, Serialize};
 use sqlx::{Row, SqliteConnection, sqlite::SqliteRow};
 
-use super::bodies::InputsBody;
+use super::bodies::{InputsBody, ShelfItemBody};
 use super::{
-    Choice, Deed, Dose, Inputs, MashCheck, Outcome, Plan, Prediction, Stage, State, Weighed,
+    Choice, Deed, Dose, Inputs, Lot, MashCheck, Outcome, Plan, Prediction, Stage, State, Weighed,
+    Witness,
 };
 use crate::error::Error;
 use crate::id::{BeerId, MashCheckId, PlanId, UtcTime};
@@ -141,14 +142,7 @@ fn state(key: &str) -> Result<State, Error> {
 fn dose(row: &SqliteRow) -> Result<Dose, Error> {
     let weighed = match row.try_get::<Option<UtcTime>, _>("weighed_at")? {
         None => None,
-        Some(at) => Some(Weighed {
-            actual: DoseAmount::clamped(row.try_get("actual")?),
-            lot: row.try_get::<Option<String>, _>("lot")?.unwrap_or_default(),
-            at,
-            by: row
-                .try_get::<Option<String>, _>("weighed_by")?
-                .unwrap_or_default(),
-        }),
+        Some(at) => Some(weighed(row, at)?),
     };
     Ok(Dose {
         id: row.try_get("id")?,
@@ -161,6 +155,78 @@ fn dose(row: &SqliteRow) -> Result<Dose, Error> {
         weighed,
     })
 }
+
+fn weighed(row: &SqliteRow, at: UtcTime) -> Result<Weighed, Error> {
+    let text = |column: &str| {
+        let text: Option<String> = row.try_get(column)?;
+        Ok::<_, Error>(text.unwrap_or_default())
+    };
+    let material = match row.try_get::<Option<&str>, _>("shelf_item")? {
+        None => None,
+        Some(json) => {
+            let body: ShelfItemBody = serde_json::from_str(json).map_err(unreadable)?;
+            Some(body.material()?)
+        }
+    };
+    let witness_name: Option<String> = row.try_get("witness_name")?;
+    let witness_id = row.try_get("witness_id")?;
+    Ok(Weighed {
+        actual: DoseAmount::clamped(row.try_get("actual")?),
+        lot: Lot {
+            code: text("lot")?,
+            id: row.try_get("material_lot_id")?,
+            material,
+        },
+        at,
+        by: text("weighed_by")?,
+        reason: text("reason")?,
+        witness: Option::zip(witness_id, witness_name).map(|(id, name)| Witness { id, name }),
+        corrections: serde_json::from_str(row.try_get("corrections")?).map_err(unreadable)?,
+    })
+}
+
+/// What is stored of a dose that is in, beside its amount.
+struct Kept<'a> {
+    weighed: Option<&'a Weighed>,
+    shelf_item: Option<String>,
+    corrections: String,
+}
+
+impl<'a> Kept<'a> {
+    fn of(dose: &'a Dose) -> Self {
+        let weighed = dose.weighed.as_ref();
+        let corrections = weighed.map_or(&[][..], |weighed| &weighed.corrections);
+        Self {
+            weighed,
+            shelf_item: weighed
+                .and_then(|weighed| ShelfItemBody::of_lot(&weighed.lot))
+                .and_then(|body| serde_json::to_string(&body).ok()),
+            corrections: serde_json::to_string(corrections).unwrap_or_default(),
+        }
+    }
+
+    fn bound<'q>(self, query: Query<'q>) -> Query<'q>
+    where
+        'a: 'q,
+    {
+        let weighed = self.weighed;
+        let witness = weighed.and_then(|weighed| weighed.witness.as_ref());
+        let reason = weighed.map(|weighed| &weighed.reason);
+        query
+            .bind(weighed.map(|weighed| weighed.actual.get()))
+            .bind(weighed.map(|weighed| &weighed.lot.code))
+            .bind(weighed.and_then(|weighed| weighed.lot.id))
+            .bind(self.shelf_item)
+            .bind(reason.filter(|reason| !reason.is_empty()))
+            .bind(witness.map(|witness| witness.id))
+            .bind(witness.map(|witness| &witness.name))
+            .bind(self.corrections)
+            .bind(weighed.map(|weighed| weighed.at))
+            .bind(weighed.map(|weighed| &weighed.by))
+    }
+}
+
+type Query<'q> = sqlx::query::Query<'q, sqlx::Sqlite, sqlx::sqlite::SqliteArguments>;
 
 pub(super) async fn insert(db: &mut SqliteConnection, plan: &Plan) -> Result<(), sqlx::Error> {
     sqlx::query(
@@ -203,11 +269,11 @@ pub(super) async fn insert_doses(
     doses: &[Dose],
 ) -> Result<(), sqlx::Error> {
     for dose in doses {
-        let weighed = dose.weighed.as_ref();
-        sqlx::query(
+        let query = sqlx::query(
             "INSERT INTO doses (id, plan_id, position, vessel, material, planned, mash_check_id, actual, lot,
+                                material_lot_id, shelf_item, reason, witness_id, witness_name, corrections,
                                 weighed_at, weighed_by)
-             VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+             VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
         )
         .bind(dose.id)
         .bind(plan)
@@ -215,13 +281,8 @@ pub(super) async fn insert_doses(
         .bind(dose.vessel.key())
         .bind(i64::try_from(dose.material).unwrap_or(i64::MAX))
         .bind(dose.planned.get())
-        .bind(dose.mash_check)
-        .bind(weighed.map(|weighed| weighed.actual.get()))
-        .bind(weighed.map(|weighed| &weighed.lot))
-        .bind(weighed.map(|weighed| weighed.at))
-        .bind(weighed.map(|weighed| &weighed.by))
-        .execute(&mut *db)
-        .await?;
+        .bind(dose.mash_check);
+        Kept::of(dose).bound(query).execute(&mut *db).await?;
     }
     Ok(())
 }
@@ -301,7 +362,8 @@ pub(super) async fn find(db: &mut SqliteConnection, id: PlanId) -> Result<Option
     .await?;
     let Some(row) = row else { return Ok(None) };
     let doses = sqlx::query(
-        "SELECT id, position, vessel, material, planned, mash_check_id, actual, lot, weighed_at, weighed_by
+        "SELECT id, position, vessel, material, planned, mash_check_id, actual, lot, material_lot_id, shelf_item,
+                reason, witness_id, witness_name, corrections, weighed_at, weighed_by
          FROM doses WHERE plan_id = ? ORDER BY position",
     )
     .bind(id)
@@ -458,17 +520,12 @@ pub(super) async fn update_weighed(
     db: &mut SqliteConnection,
     dose: &Dose,
 ) -> Result<(), sqlx::Error> {
-    let weighed = dose.weighed.as_ref();
-    sqlx::query(
-        "UPDATE doses SET actual = ?, lot = ?, weighed_at = ?, weighed_by = ? WHERE id = ?",
-    )
-    .bind(weighed.map(|weighed| weighed.actual.get()))
-    .bind(weighed.map(|weighed| &weighed.lot))
-    .bind(weighed.map(|weighed| weighed.at))
-    .bind(weighed.map(|weighed| &weighed.by))
-    .bind(dose.id)
-    .execute(db)
-    .await?;
+    let query = sqlx::query(
+        "UPDATE doses SET actual = ?, lot = ?, material_lot_id = ?, shelf_item = ?, reason = ?, witness_id = ?,
+                          witness_name = ?, corrections = ?, weighed_at = ?, weighed_by = ? WHERE id = ?",
+    );
+    let query = Kept::of(dose).bound(query).bind(dose.id);
+    query.execute(db).await?;
     Ok(())
 }
 

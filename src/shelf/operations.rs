@@ -206,6 +206,33 @@ pub async fn find_lot_of(
     Ok((material, lot))
 }
 
+/// A lot and its material, for an operation of another group that has asked for its own
+/// permission.
+pub async fn lot_of_dose(
+    conn: &mut SqliteConnection,
+    lot: MaterialLotId,
+) -> Result<Option<(Material, MaterialLot)>, Error> {
+    let Some(lot) = store::find_lot(conn, lot).await? else {
+        return Ok(None);
+    };
+    let material = known(store::find(conn, lot.material_id).await?)?;
+    Ok(Some((material, lot)))
+}
+
+/// The lot of a material with this code, upper or lower case, likewise.
+pub async fn lot_by_code(
+    conn: &mut SqliteConnection,
+    material: MaterialId,
+    code: &str,
+) -> Result<Option<MaterialLotId>, Error> {
+    let code = code.to_lowercase();
+    let lots = store::lots(conn, material).await?;
+    Ok(lots
+        .into_iter()
+        .find(|lot| lot.code.to_lowercase() == code)
+        .map(|lot| lot.id))
+}
+
 fn known_lot(found: Option<MaterialLot>) -> Result<MaterialLot, Error> {
     found.ok_or(Error::NotFound("lot"))
 }

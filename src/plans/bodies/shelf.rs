@@ -8,7 +8,9 @@ use chemistry::quantity::{
 use serde::{Deserialize, Serialize};
 
 use super::{id, or};
+use crate::error::Error;
 use crate::input::{Number, Problems};
+use crate::plans::Lot;
 use crate::plans::inputs::ShelfLabel;
 
 /// Something that can be added.
@@ -157,16 +159,35 @@ impl ShelfItemBody {
         ))
     }
 
+    /// The substance, strength and assay alone.
+    pub(in crate::plans) fn material(&self) -> Result<Material, Error> {
+        let mut problems = Problems::new();
+        let named = Self {
+            name: self.substance.clone(),
+            ..self.clone()
+        };
+        let item = named.check(&mut problems);
+        problems.finish()?;
+        item.map(|(item, _)| item.material)
+            .ok_or_else(|| Error::field("substance", "Name a substance."))
+    }
+
+    /// The lot a dose was taken from, if the shelf knows it.
+    pub(in crate::plans) fn of_lot(lot: &Lot) -> Option<Self> {
+        let material = lot.material.as_ref()?;
+        Some(Self {
+            material_lot_id: lot.id.map(|id| id.to_string()).unwrap_or_default(),
+            lot: lot.code.clone(),
+            ..Self::of_material(material)
+        })
+    }
+
     pub(super) fn of(item: &ShelfItem, label: &ShelfLabel) -> Self {
-        let material = &item.material;
-        let mut body = Self {
+        Self {
             name: item.name.clone(),
             material_id: label.id.map(|id| id.to_string()).unwrap_or_default(),
             material_lot_id: label.lot_id.map(|id| id.to_string()).unwrap_or_default(),
             lot: label.lot.clone(),
-            substance: material.substance().key().into(),
-            assay: material.assay().value.get().into(),
-            assay_sd: material.assay().sd.into(),
             vessels: item
                 .vessels
                 .iter()
@@ -176,6 +197,15 @@ impl ShelfItemBody {
             price_per_kg_or_l: (item.price.get() * 1000.0).into(),
             most: item.most.map(DoseAmount::get).into(),
             preference: preference_key(item.preference).into(),
+            ..Self::of_material(&item.material)
+        }
+    }
+
+    fn of_material(material: &Material) -> Self {
+        let mut body = Self {
+            substance: material.substance().key().into(),
+            assay: material.assay().value.get().into(),
+            assay_sd: material.assay().sd.into(),
             ..Self::default()
         };
         match material.strength() {

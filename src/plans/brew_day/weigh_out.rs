@@ -16,6 +16,7 @@ use crate::input::Problems;
 use crate::people::Permission;
 use crate::plans::asked::WeighedBody;
 use crate::plans::pages::check_address;
+use crate::plans::weigh_out::NewWeighed;
 use crate::plans::{Dose, Plan, State as PlanState, operations, weigh_out, words};
 use crate::web::App;
 use crate::web::extract::At;
@@ -89,7 +90,7 @@ fn line(plan: &Plan, dose: &Dose, units: Units, time_zone: &str) -> Line {
         amount,
         unit,
         lot: match &dose.weighed {
-            Some(weighed) => weighed.lot.clone(),
+            Some(weighed) => weighed.lot.code.clone(),
             None => inputs
                 .shelf
                 .get(dose.material)
@@ -227,13 +228,12 @@ async fn weigh(
             "actual".to_owned(),
             words::dose_measure(&plan.inputs, material),
         )];
-        let (actual, lot) = typed_in_si(&typed, units, &fields)
-            .body::<WeighedBody>()?
-            .check()?;
+        let body: WeighedBody = typed_in_si(&typed, units, &fields).body()?;
+        let new: NewWeighed = body.try_into()?;
         if !typed.ticked("sure") {
-            near_the_plan(&plan, dose, actual, units)?;
+            near_the_plan(&plan, dose, new.actual, units)?;
         }
-        weigh_out::weigh(&db, &framer.member, id, dose, actual, lot).await
+        weigh_out::weigh(&db, &framer.member, id, dose, new).await
     };
     match weighed.await {
         Ok(plan) => {

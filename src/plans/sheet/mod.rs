@@ -249,7 +249,7 @@ pub(in crate::plans) fn dose_rows(plan: &Plan, units: Units, time_zone: &str) ->
                 name: item.map_or_else(String::new, |item| item.name.clone()),
                 detail: words::material_detail(inputs, dose.material),
                 lot: match &dose.weighed {
-                    Some(weighed) => weighed.lot.clone(),
+                    Some(weighed) => weighed.lot.code.clone(),
                     None => inputs
                         .shelf
                         .get(dose.material)

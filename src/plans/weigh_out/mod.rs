@@ -12,6 +12,21 @@ use crate::people::{Member, Permission};
 use crate::record;
 use crate::web::format;
 
+pub mod lots;
+
+pub use lots::LotNamed;
+
+/// What somebody says went in.
+#[derive(Clone, Debug, PartialEq)]
+pub struct NewWeighed {
+    /// How much, g or mL.
+    pub actual: DoseAmount,
+    /// Of which lot.
+    pub lot: LotNamed,
+    /// Why it is not what was planned.
+    pub reason: Option<String>,
+}
+
 /// Writes down that a dose is in. A dose that is in already is refused with who weighed
 /// it, so that none goes in twice.
 pub async fn weigh(
@@ -19,8 +34,7 @@ pub async fn weigh(
     by: &Member,
     plan_id: PlanId,
     dose_id: DoseId,
-    actual: DoseAmount,
-    lot: String,
+    new: NewWeighed,
 ) -> Result<Plan, Error> {
     by.may(Permission::BrewBatches)?;
     let time_zone = brewery::operations::settings(db).await?.time_zone;
@@ -34,12 +48,17 @@ pub async fn weigh(
             format::moment(weighed.at, &time_zone)
         )));
     }
-    dose.weighed = Some(Weighed {
-        actual,
-        lot: lot.clone(),
+    let weighed = Weighed {
+        actual: new.actual,
+        lot: lots::find(&mut tx, &plan, &dose, new.lot).await?,
         at: UtcTime::now(),
         by: by.name.clone(),
-    });
+        reason: new.reason.clone().unwrap_or_default(),
+        witness: None,
+        corrections: Vec::new(),
+    };
+    let after = weighed_json(&weighed);
+    dose.weighed = Some(weighed);
     store::update_weighed(&mut tx, &dose).await?;
     let name = format!(
         "{} into the {}, {}",
@@ -54,9 +73,10 @@ pub async fn weigh(
         dose_id,
         &name,
         Some(planned),
-        Some(weighed_json(actual, &lot)),
+        Some(after),
     );
-    record::append(&mut tx, by, change.about_each(batch(&plan))).await?;
+    let change = change.because(new.reason).about_each(batch(&plan));
+    record::append(&mut tx, by, change).await?;
     let after = settle(&mut tx, &plan).await?;
     tx.commit().await?;
     Ok(after)
@@ -84,7 +104,7 @@ pub async fn take_back(
         dose.vessel.name(),
         title(&plan)
     );
-    let before = weighed_json(weighed.actual, &weighed.lot);
+    let before = weighed_json(&weighed);
     let change = record::Change::of(
         "weighing taken back",
         "dose",
