@@ -6,6 +6,7 @@ use serde::Serialize;
 use serde::de::DeserializeOwned;
 use serde_json::{Map, Value};
 
+use super::queued;
 use crate::error::{Error, FieldProblem};
 
 /// A form as it was typed, with what is wrong beside each field.
@@ -14,6 +15,8 @@ pub struct Form {
     fields: Vec<(String, String)>,
     /// What is wrong, in the order of the fields.
     pub problems: Vec<FieldProblem>,
+    /// Whether a script reads the answer.
+    by_script: bool,
 }
 
 impl Form {
@@ -30,7 +33,7 @@ impl Form {
         }
         Self {
             fields,
-            problems: Vec::new(),
+            ..Self::default()
         }
     }
 
@@ -98,8 +101,12 @@ impl Form {
     }
 
     /// The same form with what stood in its way, and the status to answer with. Only
-    /// refusals that mending or waiting can undo come back as a form.
+    /// refusals that mending or waiting can undo come back as a form, and none does to a
+    /// script that asked for JSON.
     pub fn refused(mut self, error: Error) -> Result<(StatusCode, Self), Error> {
+        if self.by_script {
+            return Err(error);
+        }
         let (status, problems) = match error {
             Error::Invalid(problems) => (StatusCode::UNPROCESSABLE_ENTITY, problems),
             Error::Conflict(message) => (
@@ -181,6 +188,7 @@ impl<S: Send + Sync> FromRequest<S> for Form {
     type Rejection = Error;
 
     async fn from_request(request: Request, state: &S) -> Result<Self, Error> {
+        let by_script = queued::by_script(request.headers());
         let is_form = request
             .headers()
             .get(header::CONTENT_TYPE)
@@ -206,7 +214,10 @@ impl<S: Send + Sync> FromRequest<S> for Form {
                     "The form is too large or was cut off. Send at most 1 MB.",
                 )
             })?;
-        Self::read(&bytes)
+        Ok(Self {
+            by_script,
+            ..Self::read(&bytes)?
+        })
     }
 }
 
@@ -218,7 +229,7 @@ impl Form {
         }
         Ok(Self {
             fields,
-            problems: Vec::new(),
+            ..Self::default()
         })
     }
 }

@@ -7,6 +7,7 @@ use super::App;
 use crate::brewery;
 use crate::db::Db;
 use crate::error::Error;
+use crate::id::UtcTime;
 use crate::people::{Member, Permission};
 
 /// The frame of a page.
@@ -68,6 +69,11 @@ impl Page {
             flash: None,
             settings,
         }
+    }
+
+    /// What the clock of the server says, which a tablet's need not.
+    pub fn now(&self) -> UtcTime {
+        UtcTime::now()
     }
 
     /// Whether whoever is signed in may do this.

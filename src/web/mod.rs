@@ -34,6 +34,7 @@ pub mod help;
 pub mod layout;
 pub mod list;
 pub mod problem;
+pub mod queued;
 pub mod repeat;
 pub mod session;
 pub mod throttle;
@@ -86,6 +87,7 @@ pub fn router(app: App) -> Router {
     let pages = guarded(pages)
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .merge(guarded(crate::people::pages::routes()))
+        .layer(from_fn(queued::layer))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))
         .layer(CsrfLayer::new())
         .layer(from_fn_with_state(app.clone(), problem::page_layer))
@@ -117,7 +119,7 @@ pub fn router(app: App) -> Router {
             header::CONTENT_SECURITY_POLICY,
             HeaderValue::from_static(
                 "default-src 'none'; style-src 'self'; script-src 'self'; img-src 'self'; connect-src 'self'; \
-                 form-action 'self'; base-uri 'none'; frame-ancestors 'none'",
+                 worker-src 'self'; form-action 'self'; base-uri 'none'; frame-ancestors 'none'",
             ),
         ))
         .layer(SetResponseHeaderLayer::overriding(

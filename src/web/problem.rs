@@ -13,6 +13,7 @@ use serde::Serialize;
 
 use super::App;
 use super::layout::Page;
+use super::queued;
 use crate::error::Error;
 use crate::people::Member;
 
@@ -212,7 +213,8 @@ struct ProblemPage {
     problem: Problem,
 }
 
-/// Any refusal of a page as a page; without a session, the way to sign in.
+/// Any refusal of a page as a page; without a session, the way to sign in. A script that
+/// asked for JSON is answered as a program is.
 pub async fn page_layer(State(app): State<App>, request: Request, next: Next) -> Response {
     let id = request_id(&request);
     let wanted = request
@@ -221,6 +223,7 @@ pub async fn page_layer(State(app): State<App>, request: Request, next: Next) ->
         .map(ToString::to_string)
         .unwrap_or_default();
     let reads = request.method().is_safe();
+    let by_script = queued::by_script(request.headers());
     let mut response = next.run(request).await;
     if !(response.status().is_client_error() || response.status().is_server_error()) {
         return response;
@@ -234,6 +237,11 @@ pub async fn page_layer(State(app): State<App>, request: Request, next: Next) ->
         return response;
     }
     let problem = response.extensions_mut().remove::<Problem>();
+    if by_script {
+        let mut problem = problem.unwrap_or_else(|| unexplained(response.status()));
+        problem.request_id = id;
+        return respond(problem);
+    }
     if response.status() == StatusCode::UNAUTHORIZED {
         let next = if reads { wanted } else { "/".into() };
         return Redirect::to(&format!("/sign-in?next={}", super::form::percent(&next)))

@@ -18,6 +18,7 @@ mod malts;
 mod people;
 mod plans;
 mod program;
+mod queued;
 mod shelf;
 mod source_pages;
 mod sources;

@@ -23,12 +23,16 @@ use crate::web::extract::At;
 use crate::web::form::Form;
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
+use crate::web::queued;
 use crate::web::units::{Measure, typed_in_si};
 
 /// The pages.
 pub(super) fn routes() -> Router<App> {
     Router::new()
-        .route("/plans/{id}/weigh-out", get(weigh_out_page))
+        .route(
+            "/plans/{id}/weigh-out",
+            get(weigh_out_page).layer(queued::may_be_kept()),
+        )
         .route("/plans/{id}/doses/{dose_id}", post(weigh))
         .route("/plans/{id}/doses/{dose_id}/taking-back", post(take_back))
 }
