@@ -88,6 +88,10 @@ ids! {
     DoseId;
     /// One mash check.
     MashCheckId;
+    /// A pH meter.
+    MeterId;
+    /// One calibration of a pH meter.
+    CalibrationId;
 }
 
 /// A moment in UTC, stored with three decimals of a second.

@@ -10,12 +10,13 @@
 //! - [`material`] holds the salts, acids and bases;
 //! - [`mash`] predicts the pH of a mash and how surely;
 //! - [`plan`] finds the treatment of one batch;
-//! - [`put_right`] says what to do about a reading.
+//! - [`put_right`] says what to do about a reading, [`electrode`] how far to believe it.
 //!
 //! Every constant carries its source; [`references`] holds each source once.
 
 pub mod acid;
 pub mod carbonate;
+pub mod electrode;
 pub mod ion;
 pub mod mash;
 pub mod material;

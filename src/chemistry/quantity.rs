@@ -115,6 +115,15 @@ quantities! {
     RelativeSd, "", 0.0, 10.0;
     /// Buffering of a malt relative to an average pale malt.
     RelativeBuffering, "", 0.0, 20.0;
+    /// Potential of an electrode, mV.
+    Millivolts, "mV", -2_000.0, 2_000.0;
+    /// How much a potential changes with pH, mV/pH; positive where it falls with rising pH.
+    MillivoltsPerPh, "mV/pH", 0.0, 200.0;
+    /// Slope of an electrode relative to the Nernst slope at its temperature, %. Negative
+    /// where the potential rises with pH, which no sound electrode does.
+    SlopePercent, "%", -300.0, 300.0;
+    /// Time since something was done, days.
+    Days, "days", 0.0, 100_000.0;
     /// Time since strike or between readings, min.
     Minutes, "min", 0.0, 100_000.0;
     /// Volume, L.

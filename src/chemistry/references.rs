@@ -145,6 +145,22 @@ pub const ONSAGER_1927: Reference = Reference {
     place: "Physikalische Zeitschrift 28, 277",
 };
 
+/// The gas and Faraday constants behind the Nernst slope, exact by definition.
+pub const CODATA_2018: Reference = Reference {
+    authors: "E. Tiesinga, P. J. Mohr, D. B. Newell, B. N. Taylor",
+    year: 2021,
+    title: "CODATA recommended values of the fundamental physical constants: 2018",
+    place: "J. Phys. Chem. Ref. Data 50, 033105",
+};
+
+/// pH of the phthalate standard, 0 to 60 °C.
+pub const HETZER_1977: Reference = Reference {
+    authors: "H. B. Hetzer, R. A. Durst, R. A. Robinson, R. G. Bates",
+    year: 1977,
+    title: "Standard pH values for the potassium hydrogen phthalate reference buffer solution from 0 to 60 °C",
+    place: "J. Res. Natl. Bur. Stand. 81A, 21",
+};
+
 /// Drinking-water values of the European Union.
 pub const EU_DRINKING_WATER_2020: Reference = Reference {
     authors: "European Parliament and Council",
@@ -170,7 +186,7 @@ pub const WHO_DRINKING_WATER_2022: Reference = Reference {
 };
 
 /// Every source above, in that order.
-pub const ALL: [Reference; 18] = [
+pub const ALL: [Reference; 20] = [
     IUPAC_2021,
     PLUMMER_BUSENBERG_1982,
     TRUESDELL_JONES_1974,
@@ -186,6 +202,8 @@ pub const ALL: [Reference; 18] = [
     HOSOM_2020,
     STANDARD_METHODS,
     ONSAGER_1927,
+    CODATA_2018,
+    HETZER_1977,
     EU_DRINKING_WATER_2020,
     US_DRINKING_WATER,
     WHO_DRINKING_WATER_2022,

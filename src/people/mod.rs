@@ -62,7 +62,7 @@ pub enum Permission {
     Read,
     /// Draft, change and revise plans.
     DraftPlans,
-    /// Weigh out, enter mash checks, close a batch.
+    /// Calibrate meters, weigh out, enter mash checks, close a batch.
     BrewBatches,
     /// Enter and withdraw water tests.
     EnterWaterTests,
@@ -70,6 +70,8 @@ pub enum Permission {
     KeepSources,
     /// Keep lots of materials and malts.
     KeepLots,
+    /// Keep pH meters.
+    KeepMeters,
     /// Approve and withdraw plans.
     ApprovePlans,
     /// Keep the materials on the shelf.
@@ -89,9 +91,11 @@ impl Permission {
     const fn least_role(self) -> Role {
         match self {
             Self::Read | Self::DraftPlans | Self::BrewBatches => Role::Brewer,
-            Self::EnterWaterTests | Self::KeepSources | Self::KeepLots | Self::ApprovePlans => {
-                Role::Qa
-            }
+            Self::EnterWaterTests
+            | Self::KeepSources
+            | Self::KeepLots
+            | Self::KeepMeters
+            | Self::ApprovePlans => Role::Qa,
             Self::KeepShelf
             | Self::KeepMalts
             | Self::KeepBeers
@@ -111,7 +115,7 @@ impl Permission {
             | Self::KeepMalts
             | Self::KeepShelf
             | Self::KeepLots => Some(Scope::Plans),
-            Self::BrewBatches => Some(Scope::Readings),
+            Self::BrewBatches | Self::KeepMeters => Some(Scope::Readings),
             Self::KeepSettings | Self::KeepPeople => None,
         }
     }
@@ -121,10 +125,11 @@ impl Permission {
         match self {
             Self::Read => "see this",
             Self::DraftPlans => "draft plans",
-            Self::BrewBatches => "weigh out, enter mash checks or close batches",
+            Self::BrewBatches => "calibrate meters, weigh out, enter mash checks or close batches",
             Self::EnterWaterTests => "enter or withdraw water tests",
             Self::KeepSources => "change sources",
             Self::KeepLots => "change lots",
+            Self::KeepMeters => "change pH meters",
             Self::ApprovePlans => "approve or withdraw plans",
             Self::KeepShelf => "change the materials on the shelf",
             Self::KeepMalts => "change malts",
@@ -145,7 +150,7 @@ pub enum Scope {
     Tests,
     /// Draft and approve plans; keep beers, malts and the shelf.
     Plans,
-    /// Record doses and mash checks.
+    /// Record doses and mash checks; keep and calibrate meters.
     Readings,
 }
 
@@ -171,7 +176,7 @@ impl Scope {
             Self::Plans => {
                 "Draft and approve plans; keep beers, malts and the shelf. Tick “Read everything” too"
             }
-            Self::Readings => "Record doses and mash checks",
+            Self::Readings => "Record doses and mash checks; keep and calibrate meters",
         }
     }
 

@@ -80,6 +80,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::malts::pages::routes())
         .merge(crate::beers::pages::routes())
         .merge(crate::plans::pages::routes())
+        .merge(crate::meters::pages::routes())
         .merge(crate::sources::pages::routes())
         .merge(help::routes())
         .fallback(problem::no_such_page);
@@ -99,6 +100,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::brewery::api::routes())
         .merge(crate::beers::api::routes())
         .merge(crate::plans::api::routes())
+        .merge(crate::meters::api::routes())
         .merge(crate::shelf::api::routes())
         .merge(crate::sources::api::routes())
         .merge(crate::malts::api::routes())
