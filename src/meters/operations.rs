@@ -204,7 +204,8 @@ pub async fn calibrate(
     })?;
     store::insert_calibration(&mut tx, &calibration).await?;
     let typed = describe_calibration(&body, &calibration);
-    let entry = Change::created("meter calibration", calibration.id, &meter.name, &typed);
+    let entry = Change::created("meter calibration", calibration.id, &meter.name, &typed)
+        .about("meter", meter.id);
     record::append(&mut tx, by, entry).await?;
     tx.commit().await?;
     Ok((meter, calibration))
@@ -231,8 +232,9 @@ pub async fn withdraw(
         ));
     }
     store::withdraw(&mut tx, id, UtcTime::now(), &reason).await?;
-    let entry =
-        Change::event("withdrew", "meter calibration", id, &meter.name).because(Some(reason));
+    let entry = Change::event("withdrew", "meter calibration", id, &meter.name)
+        .because(Some(reason))
+        .about("meter", meter.id);
     record::append(&mut tx, by, entry).await?;
     let found = both(&mut tx, meter.id, id).await?;
     tx.commit().await?;
