@@ -128,6 +128,8 @@ quantities! {
     Days, "days", 0.0, 100_000.0;
     /// Time since strike or between readings, min.
     Minutes, "min", 0.0, 100_000.0;
+    /// Time a pack stands open, d.
+    Days, "d", 0.0, 100_000.0;
     /// Volume, L.
     Litres, "L", 0.0, 10_000_000.0;
     /// Volume, mL.
