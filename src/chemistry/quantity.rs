@@ -124,12 +124,10 @@ quantities! {
     /// Slope of an electrode relative to the Nernst slope at its temperature, %. Negative
     /// where the potential rises with pH, which no sound electrode does.
     SlopePercent, "%", -300.0, 300.0;
-    /// Time since something was done, days.
+    /// Time since something was done, or that a pack stands open, days.
     Days, "days", 0.0, 100_000.0;
     /// Time since strike or between readings, min.
     Minutes, "min", 0.0, 100_000.0;
-    /// Time a pack stands open, d.
-    Days, "d", 0.0, 100_000.0;
     /// Volume, L.
     Litres, "L", 0.0, 10_000_000.0;
     /// Volume, mL.
