@@ -98,7 +98,7 @@ pub(super) async fn find(
         ));
     }
     Ok(Lot {
-        material: Some(material.chemistry(Some(&lot))),
+        material: Some(material.chemistry(Some(&lot), plan.brewed_on)),
         id: Some(lot.id),
         code: lot.code,
     })
