@@ -19,6 +19,7 @@ mod people;
 mod plans;
 mod program;
 mod queued;
+mod record;
 mod shelf;
 mod source_pages;
 mod sources;
