@@ -74,6 +74,7 @@ pub fn routes() -> OpenApiRouter<App> {
         .routes(routes!(checks, check))
         .routes(routes!(withdraw_check))
         .routes(routes!(preview))
+        .merge(super::readiness::api::routes())
 }
 
 fn tagged<T: Serialize>(version: i64, body: T) -> impl IntoResponse {

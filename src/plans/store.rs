@@ -58,11 +58,11 @@ fn prediction_json(prediction: Prediction) -> String {
     serde_json::to_string(&row).unwrap_or_default()
 }
 
-fn unreadable(error: impl Into<Box<dyn std::error::Error + Send + Sync>>) -> Error {
+pub(super) fn unreadable(error: impl Into<Box<dyn std::error::Error + Send + Sync>>) -> Error {
     Error::internal("A stored plan cannot be read", error)
 }
 
-fn prediction(text: Option<&str>) -> Result<Option<Prediction>, Error> {
+pub(super) fn prediction(text: Option<&str>) -> Result<Option<Prediction>, Error> {
     let row: Option<PredictionRow> = text
         .map(serde_json::from_str)
         .transpose()

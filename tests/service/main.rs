@@ -19,7 +19,7 @@ mod people;
 mod plans;
 mod program;
 mod queued;
-mod record;
+mod readiness;
 mod shelf;
 mod source_pages;
 mod sources;

@@ -6,14 +6,15 @@ use askama_web::WebTemplate;
 use axum::Router;
 use axum::extract::State;
 use axum::routing::get;
+use jiff::civil::Date;
 
-use super::pages::ListRow;
-use super::store::{Filter, Order};
-use super::{State as PlanState, operations};
+use super::State as PlanState;
+use super::readiness::{self, Batch, Freshness, Missing, Next, When};
 use crate::db::Db;
 use crate::error::Error;
 use crate::people::Permission;
 use crate::web::App;
+use crate::web::format;
 use crate::web::layout::{Framer, Page};
 
 mod checks;
@@ -31,44 +32,192 @@ pub(super) fn routes() -> Router<App> {
 #[template(path = "plans/brew_day.html")]
 struct BrewDayPage {
     page: Page,
-    approved: Vec<ListRow>,
-    dosed: Vec<ListRow>,
-    drafts: Vec<ListRow>,
+    /// Today in words.
+    day: String,
+    until: String,
+    sections: Vec<Section>,
+    more_late: usize,
+    later: usize,
+    waters: Vec<Freshness>,
     may_draft: bool,
+    /// Whether no batch is open at all.
     nothing: bool,
     /// Whether there is no beer yet to plan.
     beginning: bool,
 }
 
+/// The batches of one time.
+struct Section {
+    when: When,
+    cards: Vec<Card>,
+}
+
+/// An open batch on the page.
+struct Card {
+    batch: Batch,
+    /// The day in words; empty for today.
+    day: String,
+    /// How far it is, part by part.
+    progress: Vec<String>,
+    missing: Vec<MissingRow>,
+    next: Step,
+    /// What else waits, where the next thing interrupts it.
+    other: Option<Step>,
+}
+
+/// Something to go on with.
+struct Step {
+    address: String,
+    words: String,
+    /// Whether whoever is signed in may do it.
+    allowed: bool,
+}
+
+/// Something that is missing, and where it is mended.
+pub(super) struct MissingRow {
+    pub(super) words: String,
+    pub(super) stops: bool,
+    /// Address and words of a link; empty where the plan's own page is the place.
+    pub(super) mend: Option<(String, &'static str)>,
+}
+
 async fn brew_day(State(db): State<Db>, framer: Framer) -> Result<BrewDayPage, Error> {
     let page = framer.page("Brew day", "brew-day").await;
-    let mut lists = Vec::new();
-    for state in [PlanState::Approved, PlanState::Dosed, PlanState::Draft] {
-        let filter = Filter {
-            state: Some(state),
-            ..Filter::default()
-        };
-        let found = operations::list(&db, &framer.member, &filter, Order::Earliest, 0, 20).await?;
-        lists.push(found.into_iter().map(ListRow::from).collect::<Vec<_>>());
-    }
-    let mut lists = lists.into_iter();
-    let (approved, dosed, drafts) = (
-        lists.next().unwrap_or_default(),
-        lists.next().unwrap_or_default(),
-        lists.next().unwrap_or_default(),
-    );
-    let nothing = approved.is_empty() && dosed.is_empty() && drafts.is_empty();
+    let found = readiness::brew_day(&db, &framer.member).await?;
+    let nothing = found.batches.is_empty() && found.later == 0;
     let beginning = nothing
-        && crate::beers::operations::list(&db, &framer.member, true)
+        && crate::beers::operations::list_after(&db, &framer.member, None, 1)
             .await?
             .is_empty();
+    let mut sections = [When::Today, When::Late, When::ThisWeek].map(|when| Section {
+        when,
+        cards: Vec::new(),
+    });
+    for batch in found.batches {
+        let card = card(batch, found.on, &page);
+        if let Some(section) = sections.iter_mut().find(|it| it.when == card.batch.when) {
+            section.cards.push(card);
+        }
+    }
     Ok(BrewDayPage {
+        day: weekday(found.on),
+        until: weekday(found.until),
+        sections: sections.into(),
+        more_late: found.more_late,
+        later: found.later,
+        waters: found.waters,
         may_draft: page.can(Permission::DraftPlans),
         nothing,
         beginning,
         page,
-        approved,
-        dosed,
-        drafts,
+    })
+}
+
+fn weekday(day: Date) -> String {
+    day.strftime("%A %-d %B").to_string()
+}
+
+fn card(batch: Batch, today: Date, page: &Page) -> Card {
+    Card {
+        day: match batch.brewed_on {
+            day if day == today => String::new(),
+            day if today.yesterday().is_ok_and(|it| it == day) => "Yesterday".into(),
+            day if today.tomorrow().is_ok_and(|it| it == day) => "Tomorrow".into(),
+            day if day.year() == today.year() => weekday(day),
+            day => day.to_string(),
+        },
+        progress: progress(&batch),
+        missing: missing_rows(&batch, page),
+        next: next(&batch, page),
+        other: waiting(&batch),
+        batch,
+    }
+}
+
+fn progress(batch: &Batch) -> Vec<String> {
+    let mut parts = Vec::new();
+    if batch.state != PlanState::Draft && batch.lines > 0 {
+        parts.push(if batch.lines_in == batch.lines {
+            format!("all {} lines in", batch.lines)
+        } else {
+            format!("{} of {} lines in", batch.lines_in, batch.lines)
+        });
+    }
+    match (&batch.reading, batch.prediction) {
+        (Some(reading), _) => parts.push(format!(
+            "mash read: {} ± {}",
+            format::ph(reading.ph),
+            format::ph(reading.sd)
+        )),
+        (None, Some(predicted)) => parts.push(format!(
+            "mash pH expected {}, 90 % between {} and {}",
+            format::ph(predicted.ph.get()),
+            format::ph(predicted.low.get()),
+            format::ph(predicted.high.get())
+        )),
+        (None, None) => {}
+    }
+    parts
+}
+
+/// What a batch lacks, each with where it is mended.
+pub(super) fn missing_rows(batch: &Batch, page: &Page) -> Vec<MissingRow> {
+    let row = |missing: &Missing| MissingRow {
+        words: missing.words(),
+        stops: missing.stops(),
+        mend: match missing {
+            Missing::Approval => None,
+            Missing::Revision { id, .. } => Some((format!("/plans/{id}"), "That revision")),
+            Missing::Test { source, .. } | Missing::FreshTest { source, .. } => {
+                Some(if page.can(Permission::EnterWaterTests) {
+                    let address = format!("/sources/{source}/water-tests/new");
+                    (address, "Enter a test")
+                } else {
+                    (format!("/sources/{source}"), "The source")
+                })
+            }
+            Missing::NewerTest { .. } if batch.state == PlanState::Draft => {
+                Some((format!("/plans/{}", batch.id), "Read it anew"))
+            }
+            Missing::NewerTest { .. } => Some((format!("/plans/{}", batch.id), "Revise the plan")),
+            Missing::Assumed { source, .. } => Some((format!("/sources/{source}"), "The water")),
+            Missing::FreshLot { material, .. } => Some((format!("/shelf/{material}"), "The lots")),
+        },
+    };
+    batch.missing.iter().map(row).collect()
+}
+
+fn next(batch: &Batch, page: &Page) -> Step {
+    let id = batch.id;
+    let may_approve = page.can(Permission::ApprovePlans);
+    let (address, allowed) = match batch.next {
+        Next::Approve => (format!("/plans/{id}#approval"), may_approve),
+        Next::Decide(revision) => (format!("/plans/{revision}#approval"), may_approve),
+        Next::WeighOut { .. } => (format!("/plans/{id}/weigh-out"), true),
+        Next::GiveStep(dose) => (format!("/plans/{id}/weigh-out?dose={dose}"), true),
+        Next::ReadMash | Next::ReadAgain(_) => (format!("/plans/{id}/mash-checks/new"), true),
+        Next::Close => (format!("/plans/{id}/closing"), true),
+    };
+    Step {
+        address,
+        words: if allowed {
+            batch.next.words(&page.settings.time_zone)
+        } else {
+            "Ask QA to approve".into()
+        },
+        allowed,
+    }
+}
+
+/// The rest of the weigh-out, where the mash comes first.
+fn waiting(batch: &Batch) -> Option<Step> {
+    let reading = matches!(
+        batch.next,
+        Next::GiveStep(_) | Next::ReadMash | Next::ReadAgain(_)
+    );
+    (reading && batch.state == PlanState::Approved && batch.lines_in < batch.lines).then(|| Step {
+        address: format!("/plans/{}/weigh-out", batch.id),
+        words: "Weigh out the rest".into(),
+        allowed: true,
     })
 }

@@ -17,12 +17,13 @@ use crate::input::Problems;
 use crate::people::Permission;
 use crate::plans::asked::TreatmentBody;
 use crate::plans::bodies::InputsBody;
+use crate::plans::brew_day::{MissingRow, missing_rows};
 use crate::plans::closing::lesson;
 use crate::plans::decisions;
 use crate::plans::inputs::Inputs;
 use crate::plans::operations::{self, Treatment};
 use crate::plans::sheet::{self, DoseRow, Facts, Group, WayCard, consequences};
-use crate::plans::{MashCheck, Plan, State as PlanState, mash_checks, words};
+use crate::plans::{MashCheck, Plan, State as PlanState, mash_checks, readiness, words};
 use crate::record;
 use crate::record::pages::Line;
 use crate::web::App;
@@ -90,6 +91,8 @@ struct ShowPage {
     unweighed_steps: bool,
     cautions: Vec<(String, Vec<&'static str>)>,
     trial: bool,
+    /// What it lacks, under these words.
+    missing: (&'static str, Vec<MissingRow>),
 }
 
 struct ShareRow {
@@ -242,6 +245,11 @@ async fn show_page(
     let units = page.settings.units;
     let zone = page.settings.time_zone.clone();
     let lesson = lesson(db, &framer.member, &plan).await?;
+    let missing = match readiness::of_plan(db, &framer.member, id).await? {
+        Some(open) if open.lines_in > 0 => ("Before it goes on", missing_rows(&open, &page)),
+        Some(open) => ("Before it can start", missing_rows(&open, &page)),
+        None => ("", Vec::new()),
+    };
     let checks = mash_checks::list(db, &framer.member, id).await?;
     let history =
         record::operations::of_subject(db, &framer.member, "plan", &id.to_string(), 20).await?;
@@ -322,6 +330,7 @@ async fn show_page(
         volumes: sheet::volumes(&plan.inputs, units),
         cautions: sheet::cautions(&plan),
         trial: tried.is_some(),
+        missing,
         unweighed_steps: plan
             .doses
             .iter()
