@@ -66,6 +66,10 @@ ids! {
     MemberId;
     /// A token for the JSON API.
     ApiTokenId;
+    /// A tablet that several people share.
+    TabletId;
+    /// An invitation to make an account.
+    InvitationId;
     /// A source of water.
     SourceId;
     /// One water test.

@@ -10,7 +10,10 @@
 //! - [`material`] holds the salts, acids and bases;
 //! - [`mash`] predicts the pH of a mash and how surely;
 //! - [`plan`] finds the treatment of one batch;
-//! - [`put_right`] says what to do about a reading, [`electrode`] how far to believe it.
+//! - [`electrode`] says how far to believe a meter, [`reading`] makes one figure of what
+//!   it showed, [`stages`] holds where it should lie;
+//! - [`put_right`] says what to do about a mash, [`sparge`] about sparge liquor,
+//!   [`kettle`] about wort.
 //!
 //! Every constant carries its source; [`references`] holds each source once.
 
@@ -18,11 +21,15 @@ pub mod acid;
 pub mod carbonate;
 pub mod electrode;
 pub mod ion;
+pub mod kettle;
 pub mod mash;
 pub mod material;
 pub mod plan;
 pub mod put_right;
 pub mod quantity;
+pub mod reading;
 pub mod references;
 pub mod report;
+pub mod sparge;
+pub mod stages;
 pub mod water;

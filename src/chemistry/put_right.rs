@@ -1,14 +1,17 @@
 //! What to do about a pH read in the mash.
 //!
-//! [`assess`] brings the reading to the cooled basis, says what it proves given the
-//! meter's own error, and proposes nothing, another reading, a first step of half
-//! the computed dose, or to stop. It never proposes more than the brewery's cap, and
-//! never one correction against another.
+//! [`assess`] says what a reading proves given its own error, and proposes nothing,
+//! another reading, a first step of half the computed dose, or to stop. It never proposes
+//! more than the brewery's cap, and never one correction against another.
+//! [`expected_after`] says where a step leads, [`curve`] draws where others would.
+
+use statrs::function::erf::erfc;
 
 use crate::mash::{Addition, MashError, MashInputs};
-use crate::material::{DoseUnit, Material};
+use crate::material::{Contribution, DoseUnit, Material};
 use crate::quantity::NINETY_PERCENT;
-use crate::quantity::{Celsius, DoseAmount, Estimate, Minutes, Ph, PhShift};
+use crate::quantity::{Celsius, DoseAmount, Estimate, Fraction, Meq, Minutes, Ph, PhShift};
+use crate::reading::WARMEST_SAMPLE;
 
 /// No advice before this; a mash falls by 0.3 in its first ten minutes.
 /// Source: [`HOSOM_2020`](crate::references::HOSOM_2020): 6.00 at strike, 5.73 at
@@ -19,10 +22,6 @@ pub const EARLIEST: Minutes = Minutes::constant(10.0);
 /// within minutes.
 pub const REREAD_AFTER: Minutes = Minutes::constant(10.0);
 
-/// A sample warmer than this is only an estimate of the cooled reading. Source:
-/// assumed; the usual rule is to cool to 20 to 25 °C.
-pub const WARMEST_SAMPLE: Celsius = Celsius::constant(30.0);
-
 /// Beyond this many standard deviations a reading says more about the meter, the
 /// malt or the doses than about the mash. Source: assumed; one in two thousand.
 const SURPRISING: f64 = 3.5;
@@ -32,19 +31,25 @@ const FIRST_SHARE: f64 = 0.5;
 
 /// How far a computed step may be off, relative to it: the spread of malt buffering.
 /// Source: from memory, as for [`MaltClass`](crate::mash::MaltClass).
-const STEP_RELATIVE_SD: f64 = 0.25;
+pub const STEP_RELATIVE_SD: f64 = 0.25;
+
+/// Where less than this share of a step is left below the cap, the cap counts as reached:
+/// what is left would hardly show. Source: assumed.
+const NEARLY_SPENT: f64 = 0.2;
 
 /// A pH read in the mash.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct MashCheck {
-    /// As the meter showed it.
-    pub ph: Ph,
+    /// On the cooled basis, repeats put together: see [`reading`](crate::reading).
+    pub reading: Estimate<Ph>,
     /// Temperature of the sample in the meter's cup.
     pub sample: Celsius,
     /// Time since strike.
     pub minute: Minutes,
-    /// One standard deviation of the meter at its last calibration.
-    pub meter_sd: PhShift,
+    /// Whether the meter was calibrated lately and is fit for use.
+    pub calibrated: bool,
+    /// Whether no other reading taken within minutes contradicts it.
+    pub agrees: bool,
     /// Whether the meter was checked in buffer after a surprising reading.
     pub meter_checked: bool,
 }
@@ -60,6 +65,25 @@ pub struct Aim {
     pub high: Ph,
 }
 
+impl Aim {
+    /// The chance that a mash expected so lands between lowest and highest, normal
+    /// distribution.
+    #[must_use]
+    pub fn chance(&self, expected: Estimate<Ph>) -> Fraction {
+        let below = |edge: Ph| {
+            let away = edge.get() - expected.value.get();
+            if expected.sd > 0.0 {
+                erfc(-away / (expected.sd * std::f64::consts::SQRT_2)) / 2.0
+            } else if away >= 0.0 {
+                1.0
+            } else {
+                0.0
+            }
+        };
+        Fraction::clamped(below(self.high) - below(self.low))
+    }
+}
+
 /// Which way a mash must be moved.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
 pub enum Direction {
@@ -69,14 +93,25 @@ pub enum Direction {
     Raise,
 }
 
-/// A material at hand for putting a mash right, and how much of it one batch may
-/// take in all.
+/// A material at hand for putting a mash right, and how much more of it the batch may
+/// take.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Remedy<'a> {
     /// What is added.
     pub material: &'a Material,
-    /// Most of it that corrections of one batch may add up to.
+    /// How much more of it the batch may take before it passes a limit.
     pub cap: DoseAmount,
+}
+
+impl Remedy<'_> {
+    /// Half of a full dose, or less where the cap says so, and whether it did.
+    pub(crate) fn first_of(&self, full_dose: DoseAmount) -> Result<(DoseAmount, bool), Stop> {
+        let (half, left) = (FIRST_SHARE * full_dose.get(), self.cap.get());
+        if left <= NEARLY_SPENT * half {
+            return Err(Stop::CapReached);
+        }
+        Ok((DoseAmount::clamped(half.min(left)), half > left))
+    }
 }
 
 /// Corrections already made to this mash.
@@ -84,10 +119,10 @@ pub struct Remedy<'a> {
 pub struct Corrected {
     /// Which way.
     pub direction: Direction,
-    /// How much in all, in the unit of the remedy.
-    pub given: DoseAmount,
-    /// The full dose computed at the first check that led to a step.
-    pub first_full_dose: DoseAmount,
+    /// How much in all, acid or base at the target: see [`strength`].
+    pub given: Meq,
+    /// What the first check that led to a step asked for in full, in the same measure.
+    pub first_full: Meq,
 }
 
 /// Everything the advice depends on.
@@ -158,6 +193,8 @@ pub enum LeaveIt {
     InsideWindow,
     /// The reading cannot be told from the target.
     CannotBeTold,
+    /// It is below, and wort in the kettle is not raised.
+    NeverRaised,
 }
 
 /// Why to read again.
@@ -167,6 +204,10 @@ pub enum ReadAgain {
     TooEarly,
     /// The sample was hot, so its cooled pH is only an estimate: cool it and read.
     CoolTheSample,
+    /// The meter was not calibrated within a day, or is not fit for use.
+    Calibrate,
+    /// Two readings taken within minutes contradict each other: take a third.
+    ReadingsDisagree,
     /// The reading is further from the prediction than chance explains: check the
     /// meter in fresh buffer first.
     CheckTheMeter,
@@ -178,7 +219,8 @@ pub enum Stop {
     /// The meter is right and the mash is not what was planned: look for a wrong
     /// malt, a wrong dose or a changed water before adding anything.
     NotThePlannedMash,
-    /// Corrections have reached the cap of the batch or the dose first computed.
+    /// Corrections have reached, or all but reached, the cap of the batch or the dose
+    /// first computed.
     CapReached,
     /// An earlier correction went the other way; another would only chase the meter.
     AlreadyCorrectedTheOtherWay,
@@ -197,12 +239,16 @@ pub struct FirstStep {
     pub dose: DoseAmount,
     /// The unit of the dose.
     pub unit: DoseUnit,
-    /// What the target would take in full. Keep it: later steps stop there.
+    /// What the target would take in full.
     pub full_dose: DoseAmount,
+    /// The same as acid or base. Keep it: later steps stop there, whatever the material.
+    pub full: Meq,
     /// Whether the cap made the dose smaller than half.
     pub capped: bool,
     /// The pH to expect after it.
     pub expected_ph: Estimate<Ph>,
+    /// The chance that this lies in the window.
+    pub chance: Fraction,
     /// When to read again.
     pub reread_after: Minutes,
 }
@@ -210,12 +256,12 @@ pub struct FirstStep {
 /// Assesses a mash check.
 #[must_use]
 pub fn assess(check: &MashCheck, situation: &Situation<'_>) -> Assessment {
-    let reading = cooled(check.ph, check.sample, check.meter_sd);
+    let reading = check.reading;
     let verdict = verdict(reading, situation.aim);
     let (expected, advice) = match situation.mash.predict() {
         Ok(prediction) => (
             prediction.ph,
-            advise(check, situation, reading, prediction.ph, verdict),
+            advise(check, situation, prediction.ph, verdict),
         ),
         Err(error) => (
             reading,
@@ -232,27 +278,60 @@ pub fn assess(check: &MashCheck, situation: &Situation<'_>) -> Assessment {
     }
 }
 
-/// The reading a cooled sample would have given, with the doubt of the meter and of
-/// the conversion.
-///
-/// pH = (pH(t) + b·(t₀ − t)) / (1 + m·(t − t₀)), t₀ = 21.1 °C, b = 0.0166,
-/// m = −0.00382. Source: [`HOSOM_2020`](crate::references::HOSOM_2020), 19 worts.
-/// Other sources put the fall to 65 °C between 0.2 and 0.35, hence ± 0.1 for a hot
-/// reading and in proportion below it (the proportion is assumed).
+/// The acid or base that this much of a material gives a mash at `target`, without its
+/// sign.
 #[must_use]
-pub fn cooled(ph: Ph, sample: Celsius, meter_sd: PhShift) -> Estimate<Ph> {
-    const REFERENCE: f64 = 21.1;
-    const HOT: f64 = 65.0;
-    let above = sample.get() - REFERENCE;
-    let converted = (ph.get() - 0.0166 * above) / (1.0 - 0.003_82 * above);
-    let conversion_sd = 0.1 * above.abs() / (HOT - REFERENCE);
-    Estimate::new(
-        Ph::clamped(converted),
-        meter_sd.get().abs().hypot(conversion_sd),
-    )
+pub fn strength(mash: &MashInputs, target: Ph, brings: &Contribution) -> Meq {
+    Meq::clamped(mash.acid_given(target, brings).get().abs())
 }
 
-fn verdict(reading: Estimate<Ph>, aim: Aim) -> Verdict {
+/// The mash as the meter sees it: the same balance, moved to where it was read.
+pub fn as_read(mash: &MashInputs, reading: Ph) -> Result<MashInputs, MashError> {
+    let expected = mash.predict()?.ph.value.get();
+    let mut moved = mash.clone();
+    moved.offset.value = PhShift::clamped(mash.offset.value.get() + reading.get() - expected);
+    Ok(moved)
+}
+
+/// Where a mash goes from `reading` when these go in. `mash`: as it was read, without
+/// them.
+pub fn expected_after(
+    mash: &MashInputs,
+    reading: Estimate<Ph>,
+    since: &[Addition],
+) -> Result<Estimate<Ph>, MashError> {
+    let mut after = as_read(mash, reading.value)?;
+    after.additions.extend_from_slice(since);
+    let ph = after.predict()?.ph.value;
+    let moved = ph.get() - reading.value.get();
+    Ok(Estimate::new(
+        ph,
+        reading.sd.hypot(STEP_RELATIVE_SD * moved),
+    ))
+}
+
+/// The pH of a mash for doses of a material from nothing to `most`, in equal steps.
+/// Where a dose would take it off the scale the curve ends.
+#[must_use]
+pub fn curve(mash: &MashInputs, material: &Material, most: DoseAmount) -> Vec<(DoseAmount, Ph)> {
+    const STEPS: u8 = 24;
+    let mut mash = mash.clone();
+    let place = mash.additions.len();
+    mash.additions
+        .push(Addition::of("dose", material, DoseAmount::constant(0.0)));
+    let mut points = Vec::new();
+    for step in 0..=STEPS {
+        let dose = DoseAmount::clamped(most.get() * f64::from(step) / f64::from(STEPS));
+        mash.additions[place] = Addition::of("dose", material, dose);
+        match mash.predict() {
+            Ok(prediction) => points.push((dose, prediction.ph.value)),
+            Err(_) => break,
+        }
+    }
+    points
+}
+
+pub(crate) fn verdict(reading: Estimate<Ph>, aim: Aim) -> Verdict {
     let ph = reading.value;
     if (ph.get() - aim.target.get()).abs() <= NINETY_PERCENT * reading.sd {
         Verdict::CannotBeTold
@@ -265,22 +344,33 @@ fn verdict(reading: Estimate<Ph>, aim: Aim) -> Verdict {
     }
 }
 
+/// Why a reading is no ground for adding anything, whatever it says.
+pub(crate) fn unfit_to_act_on(check: &MashCheck) -> Option<ReadAgain> {
+    if check.sample > WARMEST_SAMPLE {
+        Some(ReadAgain::CoolTheSample)
+    } else if !check.calibrated {
+        Some(ReadAgain::Calibrate)
+    } else if !check.agrees {
+        Some(ReadAgain::ReadingsDisagree)
+    } else {
+        None
+    }
+}
+
 fn advise(
     check: &MashCheck,
     situation: &Situation<'_>,
-    reading: Estimate<Ph>,
     expected: Estimate<Ph>,
     verdict: Verdict,
 ) -> Advice {
+    let reading = check.reading;
     if check.minute < EARLIEST {
         return Advice::ReadAgain {
             why: ReadAgain::TooEarly,
         };
     }
-    if check.sample > WARMEST_SAMPLE {
-        return Advice::ReadAgain {
-            why: ReadAgain::CoolTheSample,
-        };
+    if let Some(why) = unfit_to_act_on(check) {
+        return Advice::ReadAgain { why };
     }
     let surprise = (reading.value.get() - expected.value.get()).abs();
     if surprise > SURPRISING * reading.sd.hypot(expected.sd) {
@@ -301,7 +391,7 @@ fn advise(
         Verdict::CannotBeTold => Advice::LeaveIt {
             why: LeaveIt::CannotBeTold,
         },
-        Verdict::Outside(direction) => match step(situation, reading, expected, direction) {
+        Verdict::Outside(direction) => match step(situation, reading, direction) {
             Ok(step) => Advice::FirstStep(step),
             Err(why) => Advice::Stop { why },
         },
@@ -311,7 +401,6 @@ fn advise(
 fn step(
     situation: &Situation<'_>,
     reading: Estimate<Ph>,
-    expected: Estimate<Ph>,
     direction: Direction,
 ) -> Result<FirstStep, Stop> {
     let remedy = match direction {
@@ -324,38 +413,33 @@ fn step(
     {
         return Err(Stop::AlreadyCorrectedTheOtherWay);
     }
-
-    // The mash as the meter sees it: the same balance, moved to where it was read.
-    let mut mash = situation.mash.clone();
-    mash.offset.value =
-        PhShift::clamped(mash.offset.value.get() + reading.value.get() - expected.value.get());
+    let (aim, material) = (situation.aim, remedy.material);
+    let mash = as_read(situation.mash, reading.value).map_err(Stop::NoPrediction)?;
     let full_dose = mash
-        .dose_for(situation.aim.target, remedy.material)
+        .dose_for(aim.target, material)
         .map_err(|_| Stop::NoRemedy)?;
+    let per_unit = strength(&mash, aim.target, &material.per_unit()).get();
+    let full = per_unit * full_dose.get();
 
-    let (given, first_full_dose) = situation
-        .corrected
-        .map_or((0.0, full_dose.get()), |corrected| {
-            (corrected.given.get(), corrected.first_full_dose.get())
-        });
-    let left = remedy.cap.get().min(first_full_dose) - given;
-    if left <= 0.0 {
-        return Err(Stop::CapReached);
-    }
-    let half = FIRST_SHARE * full_dose.get();
-    let dose = DoseAmount::clamped(half.min(left));
+    // What corrections may still add up to, as acid or base, then in this material.
+    let left = situation.corrected.map_or(full, |corrected| {
+        corrected.first_full.get() - corrected.given.get()
+    });
+    let cap = DoseAmount::clamped((left / per_unit).min(remedy.cap.get()));
+    let (dose, capped) = Remedy { cap, ..remedy }.first_of(full_dose)?;
 
-    mash.additions
-        .push(Addition::of("correction", remedy.material, dose));
-    let expected_ph = mash.predict().map_err(Stop::NoPrediction)?.ph.value;
-    let moved = expected_ph.get() - reading.value.get();
+    let addition = Addition::of("correction", material, dose);
+    let expected_ph = expected_after(situation.mash, reading, std::slice::from_ref(&addition))
+        .map_err(Stop::NoPrediction)?;
     Ok(FirstStep {
         direction,
         dose,
-        unit: remedy.material.unit(),
+        unit: material.unit(),
         full_dose,
-        capped: half > left,
-        expected_ph: Estimate::new(expected_ph, reading.sd.hypot(STEP_RELATIVE_SD * moved)),
+        full: Meq::clamped(full),
+        capped,
+        expected_ph,
+        chance: aim.chance(expected_ph),
         reread_after: REREAD_AFTER,
     })
 }

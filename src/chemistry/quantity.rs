@@ -101,6 +101,8 @@ quantities! {
     MeqPerKg, "meq/kg", -100_000.0, 100_000.0;
     /// Buffering, meq per kg of grist and pH unit.
     MeqPerKgPh, "meq/(kg·pH)", 0.0, 10_000.0;
+    /// Buffering of a wort, meq per litre and pH unit.
+    MeqPerLPh, "meq/(L·pH)", 0.0, 10_000.0;
     /// Equivalents per mole: protons given, charge or alkalinity of one molecule.
     EqPerMol, "eq/mol", -10.0, 10.0;
     /// Strength of a liquid acid or base by titration, meq/mL.
@@ -122,7 +124,7 @@ quantities! {
     /// Slope of an electrode relative to the Nernst slope at its temperature, %. Negative
     /// where the potential rises with pH, which no sound electrode does.
     SlopePercent, "%", -300.0, 300.0;
-    /// Time since something was done, days.
+    /// Time since something was done, or that a pack stands open, days.
     Days, "days", 0.0, 100_000.0;
     /// Time since strike or between readings, min.
     Minutes, "min", 0.0, 100_000.0;
@@ -147,6 +149,8 @@ quantities! {
     DoseAmount, "g or mL", 0.0, 1e9;
     /// Density, g/mL.
     GramsPerMl, "g/mL", 0.5, 3.0;
+    /// Drops of a drop-count kit.
+    Drops, "drops", 0.0, 200.0;
     /// A share between nothing and all.
     Fraction, "", 0.0, 1.0;
     /// Mass of one ion per mass of another.

@@ -129,6 +129,46 @@ pub const HOSOM_2020: Reference = Reference {
     place: "open notes of the author",
 };
 
+/// pH from mash to beer, and how far it falls when a sample is warmed.
+pub const MACWILLIAM_1975: Reference = Reference {
+    authors: "I. C. MacWilliam",
+    year: 1975,
+    title: "pH in malting and brewing: a review",
+    place: "J. Inst. Brew. 81, 65 (abstract read; tables at second hand)",
+};
+
+/// pH of wort, cold and at mash temperature.
+pub const HOPKINS_KRAUSE_1947: Reference = Reference {
+    authors: "R. H. Hopkins, B. Krause",
+    year: 1947,
+    title: "Biochemistry applied to malting and brewing",
+    place: "George Allen & Unwin, London (at second hand)",
+};
+
+/// pH of mashes and worts, hot and cold.
+pub const BRIGGS_2004: Reference = Reference {
+    authors: "D. E. Briggs, C. A. Boulton, P. A. Brookes, R. Stevens",
+    year: 2004,
+    title: "Brewing: Science and Practice",
+    place: "Woodhead Publishing, Cambridge (at second hand)",
+};
+
+/// Water, grist and the pH of the mash.
+pub const TROESTER_2009: Reference = Reference {
+    authors: "K. Troester",
+    year: 2009,
+    title: "The effect of brewing water and grist composition on the pH of the mash",
+    place: "published by the author (abstract read; the rest at second hand)",
+};
+
+/// Usual pH of mash, kettle and boiled wort.
+pub const SUPPLIER_NOTE: Reference = Reference {
+    authors: "A British brewers' supplier",
+    year: 2010,
+    title: "(technical note on pH in brewing; year not at hand)",
+    place: "the supplier's web pages (read)",
+};
+
 /// Acceptance of an ion balance (1030 E), hardness by calculation (2340 B).
 pub const STANDARD_METHODS: Reference = Reference {
     authors: "American Public Health Association, American Water Works Association, Water Environment Federation",
@@ -186,7 +226,7 @@ pub const WHO_DRINKING_WATER_2022: Reference = Reference {
 };
 
 /// Every source above, in that order.
-pub const ALL: [Reference; 20] = [
+pub const ALL: [Reference; 25] = [
     IUPAC_2021,
     PLUMMER_BUSENBERG_1982,
     TRUESDELL_JONES_1974,
@@ -200,6 +240,11 @@ pub const ALL: [Reference; 20] = [
     TAYLOR_1990,
     LI_2016,
     HOSOM_2020,
+    MACWILLIAM_1975,
+    HOPKINS_KRAUSE_1947,
+    BRIGGS_2004,
+    TROESTER_2009,
+    SUPPLIER_NOTE,
     STANDARD_METHODS,
     ONSAGER_1927,
     CODATA_2018,

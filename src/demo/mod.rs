@@ -74,6 +74,7 @@ async fn first(db: &Db, passwords: &Passwords) -> Result<Member, Error> {
         name: account.name,
         role: Role::Manager,
         scopes: None,
+        by_pin: false,
     })
 }
 

@@ -4,10 +4,12 @@
 //! changes something takes one and asks [`Member::may`]. Pages prove it with a
 //! session cookie, the API with a bearer token; neither accepts the other's.
 
+use std::net::IpAddr;
+
 use serde::{Deserialize, Serialize};
 
 use crate::error::Error;
-use crate::id::{ApiTokenId, MemberId, UtcTime};
+use crate::id::{ApiTokenId, InvitationId, MemberId, TabletId, UtcTime};
 
 pub mod api;
 pub mod operations;
@@ -197,6 +199,8 @@ pub struct Member {
     pub role: Role,
     /// The limits of the token they came with; `None`: they came with a session.
     pub scopes: Option<Vec<Scope>>,
+    /// Whether a PIN proved it: shorter than a password, it opens no accounts.
+    pub by_pin: bool,
 }
 
 impl Member {
@@ -215,6 +219,12 @@ impl Member {
             )));
         }
         match (&self.scopes, permission.scope()) {
+            (None, _) if self.by_pin && permission == Permission::KeepPeople => {
+                Err(Error::Forbidden(format!(
+                    "A PIN may not {}. Sign in with your password.",
+                    permission.deed()
+                )))
+            }
             (None, _) => Ok(()),
             (Some(scopes), Some(needed)) if scopes.contains(&needed) => Ok(()),
             (Some(_), Some(needed)) => Err(Error::Forbidden(format!(
@@ -250,6 +260,86 @@ pub struct Account {
     pub created_at: UtcTime,
     /// When it was closed, if it was.
     pub disabled_at: Option<UtcTime>,
+}
+
+/// Where a request comes from.
+#[derive(Clone, Debug)]
+pub struct Place {
+    /// The address of whoever asks, for the limits on guessing.
+    pub address: IpAddr,
+    /// The enrolled tablet that asks, if it is one.
+    pub tablet: Option<Tablet>,
+    /// The browser in a few words, for example “Firefox on Linux”; empty when not known.
+    pub device: String,
+}
+
+impl Place {
+    /// A browser of one's own, of which no more than the address is known.
+    pub const fn at(address: IpAddr) -> Self {
+        Self {
+            address,
+            tablet: None,
+            device: String::new(),
+        }
+    }
+}
+
+/// A tablet that several people share. On it, and nowhere else, a PIN proves who one is.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Tablet {
+    /// Its identifier.
+    pub id: TabletId,
+    /// What it is called, for example “Mash tun”.
+    pub name: String,
+    /// Who enrolled it.
+    pub enrolled_by: String,
+    /// When it was enrolled.
+    pub enrolled_at: UtcTime,
+    /// When it last asked for anything, to a few minutes.
+    pub last_seen_at: UtcTime,
+    /// When it was revoked, if it was.
+    pub revoked_at: Option<UtcTime>,
+}
+
+/// Somebody who can be picked by name.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Person {
+    /// Their account.
+    pub id: MemberId,
+    /// Their name.
+    pub name: String,
+    /// What they do.
+    pub role: Role,
+}
+
+/// A session that is open.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Session {
+    /// The tablet's name, else the browser in a few words; empty when not known.
+    pub device: String,
+    /// Whether it is on a tablet.
+    pub on_tablet: bool,
+    /// When it began.
+    pub created_at: UtcTime,
+    /// When it was last used, to a few minutes.
+    pub last_seen_at: UtcTime,
+    /// Whether it is the one that asks.
+    pub this_one: bool,
+}
+
+/// An account that its owner has yet to make.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Invitation {
+    /// Its identifier.
+    pub id: InvitationId,
+    /// Who is invited, as the record book will print it.
+    pub name: String,
+    /// What they will do.
+    pub role: Role,
+    /// When it was made.
+    pub created_at: UtcTime,
+    /// When it ends.
+    pub expires_at: UtcTime,
 }
 
 /// An API token, without its secret.

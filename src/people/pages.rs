@@ -1,17 +1,15 @@
 //! Signing in and out, the first account, accounts and API tokens.
 
-use std::net::SocketAddr;
-
 use askama::Template;
 use askama_web::WebTemplate;
 use axum::Router;
-use axum::extract::{ConnectInfo, State};
+use axum::extract::State;
 use axum::response::{IntoResponse, Redirect, Response};
 use axum::routing::{get, post};
 use axum_extra::extract::cookie::{Cookie, CookieJar};
 
 use super::operations::{self, NewAccount};
-use super::{Account, ApiToken, Role, Scope};
+use super::{Account, ApiToken, Place, Role, Scope};
 use crate::error::Error;
 use crate::id::{ApiTokenId, MemberId};
 use crate::input::Problems;
@@ -67,16 +65,13 @@ fn safe_next(next: &str) -> &str {
 
 async fn sign_in(
     State(app): State<App>,
-    ConnectInfo(peer): ConnectInfo<SocketAddr>,
+    place: Place,
     jar: CookieJar,
     typed: Form,
 ) -> Result<Response, Error> {
-    let login = typed.value("login");
-    let signed_in = async {
-        app.throttle.attempt(login, peer.ip())?;
-        operations::sign_in(&app.db, &app.passwords, login, typed.value("password")).await
-    };
-    match signed_in.await {
+    let (login, password) = (typed.value("login"), typed.value("password"));
+    let previous = jar.get(session::COOKIE).map(Cookie::value);
+    match operations::sign_in(&app.db, app.gate(&place), previous, login, password).await {
         Ok((_, secret)) => {
             let jar = jar.add(session::cookie(secret.0, app.door.secure_cookies));
             Ok((jar, Redirect::to(safe_next(typed.value("next")))).into_response())
@@ -143,6 +138,7 @@ async fn show_first(State(app): State<App>, typed: Form) -> Result<Response, Err
 
 async fn create_first(
     State(app): State<App>,
+    place: Place,
     jar: CookieJar,
     typed: Form,
 ) -> Result<Response, Error> {
@@ -152,7 +148,8 @@ async fn create_first(
         operations::create_first(&app.db, &app.passwords, new).await?;
         operations::sign_in(
             &app.db,
-            &app.passwords,
+            app.gate(&place),
+            jar.get(session::COOKIE).map(Cookie::value),
             typed.value("login"),
             typed.value("password"),
         )
@@ -395,12 +392,12 @@ async fn change_password(
     State(app): State<App>,
     framer: Framer,
     At(id): At<MemberId>,
+    place: Place,
     typed: Form,
 ) -> Result<Response, Error> {
     let (present, wanted) = (typed.value("present"), typed.value("password"));
-    match operations::change_password(&app.db, &framer.member, &app.passwords, id, present, wanted)
-        .await
-    {
+    let gate = app.gate(&place);
+    match operations::change_password(&app.db, &framer.member, gate, id, present, wanted).await {
         Ok(()) if framer.member.id == id => {
             Ok(Redirect::to("/sign-in?done=password").into_response())
         }

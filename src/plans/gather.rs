@@ -9,6 +9,7 @@ use chemistry::quantity::{
     PhShift,
 };
 use chemistry::report::{Analyte, LimitSet};
+use jiff::civil::Date;
 
 use super::bodies::MASH_VOLUME_RELATIVE_SD;
 use super::inputs::{Inputs, Learned, MaltLabel, ShelfLabel, SourceLabel};
@@ -33,12 +34,13 @@ pub struct Gathered {
     pub inputs: Inputs,
 }
 
-/// Gathers the inputs of a plan for a beer. No choice of sources means every source in
+/// Gathers the inputs of a plan for a beer brewed on a day. No choice of sources means every source in
 /// use that has a test.
 pub async fn inputs(
     db: &Db,
     by: &Member,
     beer_id: BeerId,
+    brewed_on: Date,
     choices: &[SourceChoice],
 ) -> Result<Gathered, Error> {
     let settings = brewery::operations::settings(db).await?;
@@ -49,7 +51,7 @@ pub async fn inputs(
         .map(|(water, choice)| source(water, choice))
         .unzip();
     let (grist, malts) = grist(db, by, &beer).await?;
-    let (shelf, shelf_labels) = shelf(db, by, beer.volumes.liquor()).await?;
+    let (shelf, shelf_labels) = shelf(db, by, brewed_on, beer.volumes.liquor()).await?;
     let mut limits = potable_limits(settings.potable_limits, &waters);
     let lower = |limit: &mut Option<MgPerL>, other: Option<MgPerL>| {
         *limit = match (*limit, other) {
@@ -224,6 +226,7 @@ async fn grist(
 async fn shelf(
     db: &Db,
     by: &Member,
+    brewed_on: Date,
     liquor: Litres,
 ) -> Result<(Vec<ShelfItem>, Vec<ShelfLabel>), Error> {
     let held = shelf::operations::list_in_use(db, by).await?;
@@ -233,7 +236,7 @@ async fn shelf(
             let lot = lot.as_ref();
             let item = ShelfItem {
                 name: material.name.clone(),
-                material: material.chemistry(lot),
+                material: material.chemistry(lot, brewed_on),
                 vessels: material.vessels.clone(),
                 step: material.scale_step,
                 price: CostPerUnit::clamped(

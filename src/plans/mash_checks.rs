@@ -1,11 +1,13 @@
 //! Reading the pH of a batch, and what to do about a mash that is not where it should be.
 
+use chemistry::mash::MashInputs;
 use chemistry::material::{DoseUnit, Role, Vessel};
 use chemistry::plan::Preference;
 use chemistry::put_right::{
     self, Advice, Corrected, Direction, LeaveIt, ReadAgain, Remedy, Situation, Stop, Verdict,
 };
-use chemistry::quantity::{Celsius, DoseAmount, Minutes, Ph, PhShift};
+use chemistry::quantity::{Celsius, DoseAmount, Meq, Minutes, Ph, PhShift};
+use chemistry::reading::cooled;
 use serde_json::json;
 
 use super::operations::{batch, title};
@@ -172,15 +174,16 @@ fn describe(check: &MashCheck) -> serde_json::Value {
 }
 
 fn advise(plan: &Plan, earlier: &[MashCheck], new: &NewMashCheck) -> Result<Advised, Error> {
+    let reading = cooled(new.ph, new.sample, new.meter_sd);
     let check = put_right::MashCheck {
-        ph: new.ph,
+        reading,
         sample: new.sample,
         minute: new.minute,
-        meter_sd: new.meter_sd,
+        calibrated: true,
+        agrees: true,
         meter_checked: new.meter_checked,
     };
     if new.stage != Stage::Mash {
-        let reading = put_right::cooled(new.ph, new.sample, new.meter_sd);
         return Ok(Advised {
             reading_ph: reading.value.get(),
             reading_sd: reading.sd,
@@ -197,7 +200,7 @@ fn advise(plan: &Plan, earlier: &[MashCheck], new: &NewMashCheck) -> Result<Advi
     }
     let outcome = compute::as_weighed(plan)?;
     let mash = compute::mash_as_weighed(plan);
-    let corrected = corrected(plan, earlier);
+    let corrected = corrected(plan, &mash, earlier);
     let used = corrected.as_ref().map(|(_, material)| *material);
     let acid = remedy(plan, Role::Acid, used);
     let base = remedy(plan, Role::Base, used);
@@ -341,8 +344,9 @@ fn on_step(amount: f64, step: f64) -> f64 {
     }
 }
 
-/// What was given as first steps so far, and of which material.
-fn corrected(plan: &Plan, earlier: &[MashCheck]) -> Option<(Corrected, usize)> {
+/// What was given as first steps so far, and the material of the first.
+fn corrected(plan: &Plan, mash: &MashInputs, earlier: &[MashCheck]) -> Option<(Corrected, usize)> {
+    let target = plan.inputs.problem.spec.mash_ph.target;
     let given: Vec<&Dose> = plan
         .doses
         .iter()
@@ -355,19 +359,23 @@ fn corrected(plan: &Plan, earlier: &[MashCheck]) -> Option<(Corrected, usize)> {
         .advised
         .step
         .as_ref()?;
-    let total: f64 = given
+    let meq = |material: usize, amount: DoseAmount| {
+        let item = plan.inputs.problem.shelf.get(material)?;
+        Some(put_right::strength(mash, target, &item.material.contribution(amount)).get())
+    };
+    let sum: f64 = given
         .iter()
-        .filter(|dose| dose.material == first.material)
-        .map(|dose| dose.amount().get())
+        .filter_map(|dose| meq(dose.material, dose.amount()))
         .sum();
+    let full = meq(step.material, DoseAmount::clamped(step.full_dose))?;
     let corrected = Corrected {
         direction: if step.direction == "lower" {
             Direction::Lower
         } else {
             Direction::Raise
         },
-        given: DoseAmount::clamped(total),
-        first_full_dose: DoseAmount::clamped(step.full_dose),
+        given: Meq::clamped(sum),
+        first_full: Meq::clamped(full),
     };
     Some((corrected, first.material))
 }
@@ -399,6 +407,9 @@ fn leave_words(why: LeaveIt) -> String {
             "The reading is so near the target that the meter's own error covers the difference."
                 .into()
         }
+        LeaveIt::NeverRaised => {
+            "It is below its window, and wort is not raised. Write it down and brew on.".into()
+        }
     }
 }
 
@@ -406,6 +417,8 @@ const fn read_again_title(why: ReadAgain) -> &'static str {
     match why {
         ReadAgain::TooEarly => "Too early: read again",
         ReadAgain::CoolTheSample => "Cool the sample and read again",
+        ReadAgain::Calibrate => "Calibrate the meter and read again",
+        ReadAgain::ReadingsDisagree => "Read once more",
         ReadAgain::CheckTheMeter => "Check the meter first",
     }
 }
@@ -416,6 +429,12 @@ fn read_again_words(why: ReadAgain) -> String {
         ReadAgain::CoolTheSample => {
             "The sample was hot, so its pH when cooled is only an estimate. Cool it to room temperature and read it again."
                 .into()
+        }
+        ReadAgain::Calibrate => "The meter was not calibrated within a day, or is not fit for use. The reading is kept; nothing is \
+             advised on it."
+            .into(),
+        ReadAgain::ReadingsDisagree => {
+            "It contradicts another reading taken within minutes. Take a third sample; the two that agree count.".into()
         }
         ReadAgain::CheckTheMeter => "The reading is further from the prediction than chance explains. Check the meter in \
              fresh buffer, take a new sample, and say so when you enter it."

@@ -35,6 +35,7 @@ pub mod store;
 pub mod weigh_out;
 pub mod words;
 
+pub use chemistry::stages::Stage;
 pub use inputs::Inputs;
 
 /// Where a plan stands.
@@ -285,74 +286,6 @@ pub struct Correction {
     pub corrected_by: String,
     /// Why.
     pub because: String,
-}
-
-/// When in the making of beer a pH is read.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Stage {
-    /// The treated liquor.
-    Liquor,
-    /// The mash.
-    Mash,
-    /// The first runnings.
-    FirstRunnings,
-    /// The last runnings.
-    LastRunnings,
-    /// The full kettle, before the boil.
-    KettleFull,
-    /// The end of the boil.
-    EndOfBoil,
-    /// The end of fermentation.
-    EndOfFermentation,
-    /// The package.
-    Package,
-}
-
-impl Stage {
-    /// Every stage, in order.
-    pub const ALL: [Self; 8] = [
-        Self::Liquor,
-        Self::Mash,
-        Self::FirstRunnings,
-        Self::LastRunnings,
-        Self::KettleFull,
-        Self::EndOfBoil,
-        Self::EndOfFermentation,
-        Self::Package,
-    ];
-
-    /// As stored and sent.
-    pub const fn key(self) -> &'static str {
-        match self {
-            Self::Liquor => "liquor",
-            Self::Mash => "mash",
-            Self::FirstRunnings => "first_runnings",
-            Self::LastRunnings => "last_runnings",
-            Self::KettleFull => "kettle_full",
-            Self::EndOfBoil => "end_of_boil",
-            Self::EndOfFermentation => "end_of_fermentation",
-            Self::Package => "package",
-        }
-    }
-
-    /// As shown.
-    pub const fn name(self) -> &'static str {
-        match self {
-            Self::Liquor => "Liquor",
-            Self::Mash => "Mash",
-            Self::FirstRunnings => "First runnings",
-            Self::LastRunnings => "Last runnings",
-            Self::KettleFull => "Kettle full",
-            Self::EndOfBoil => "End of boil",
-            Self::EndOfFermentation => "End of fermentation",
-            Self::Package => "Package",
-        }
-    }
-
-    /// The stage with this key.
-    pub fn from_key(key: &str) -> Option<Self> {
-        Self::ALL.into_iter().find(|stage| stage.key() == key)
-    }
 }
 
 /// A pH reading of a batch.

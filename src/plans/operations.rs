@@ -67,7 +67,7 @@ pub struct Shown {
 /// proposes a treatment.
 pub async fn draft(db: &Db, by: &Member, new: NewPlan) -> Result<Plan, Error> {
     by.may(Permission::DraftPlans)?;
-    let gathered = gather::inputs(db, by, new.beer_id, &new.sources).await?;
+    let gathered = gather::inputs(db, by, new.beer_id, new.brewed_on, &new.sources).await?;
     let (shares, doses) = proposed(&gathered.inputs, new.way)?;
     let now = UtcTime::now();
     let plan = Plan {
@@ -341,7 +341,7 @@ pub async fn refresh(
             })
         })
         .collect();
-    let gathered = gather::inputs(db, by, present.beer_id, &choices).await?;
+    let gathered = gather::inputs(db, by, present.beer_id, present.brewed_on, &choices).await?;
     let mut tx = db.begin().await?;
     let before = open_draft(&mut tx, id, version.or(Some(present.version))).await?;
     let mut after = Plan {

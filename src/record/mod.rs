@@ -14,6 +14,9 @@ use crate::id::{MemberId, UtcTime};
 use crate::people::Member;
 
 pub mod api;
+mod differences;
+pub mod export;
+pub mod filter;
 pub mod operations;
 pub mod pages;
 pub mod store;
@@ -136,6 +139,9 @@ pub struct Entry {
     pub after: Option<Value>,
     /// Why, if that was said.
     pub reason: Option<String>,
+    /// What it is about, its subject among it: kind and identifier of each. Lists read it
+    /// where they show it.
+    pub about: Vec<(String, String)>,
 }
 
 /// Writes a change down, in the transaction that makes it.

@@ -4,12 +4,14 @@ use axum::extract::State;
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::quantity::DoseAmount;
+use jiff::civil::Date;
 use serde::Serialize;
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
 use super::entered::{NewMaterialBody, NewMaterialLotBody, StrengthBody};
 use super::{Material, MaterialLot, operations};
+use crate::brewery;
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MaterialId, MaterialLotId};
@@ -40,8 +42,8 @@ pub struct MaterialBody {
 /// Strength and assay as calculations take them.
 #[derive(Debug, Serialize, utoipa::ToSchema)]
 pub struct InForceBody {
-    /// `label`, `certificate of the lot`, `opened pack, assumed` or `usual for it,
-    /// assumed`.
+    /// `label`, `certificate of the lot`, `own assay`, `own assay, then open, assumed`,
+    /// `opened pack, assumed` or `usual for it, assumed`.
     how_known: &'static str,
     /// How strong a liquid is.
     strength: StrengthBody,
@@ -65,8 +67,8 @@ pub struct BringsBody {
 }
 
 impl InForceBody {
-    fn of(material: &Material, lot: Option<&MaterialLot>) -> Self {
-        let substance = material.chemistry(lot);
+    fn of(material: &Material, lot: Option<&MaterialLot>, today: Date) -> Self {
+        let substance = material.chemistry(lot, today);
         let ten = DoseAmount::constant(10.0);
         Self {
             how_known: material.how_known(lot),
@@ -74,7 +76,7 @@ impl InForceBody {
             assay_percent: percent(substance.assay().value.get()),
             assay_sd_percent: percent(substance.assay().sd),
             ten_per_hl: material
-                .brings(lot, ten)
+                .brings(lot, today, ten)
                 .into_iter()
                 .map(|brings| BringsBody {
                     figure: brings.ion.map_or("alkalinity_as_caco3", |ion| ion.name()),
@@ -86,14 +88,14 @@ impl InForceBody {
     }
 }
 
-impl From<&Material> for MaterialBody {
-    fn from(material: &Material) -> Self {
+impl MaterialBody {
+    fn of(material: &Material, today: Date) -> Self {
         Self {
             id: material.id,
             version: material.version,
             entered: material.into(),
             unit: material.unit().symbol(),
-            in_force: InForceBody::of(material, None),
+            in_force: InForceBody::of(material, None, today),
             cautions: material.substance.cautions(),
         }
     }
@@ -116,13 +118,13 @@ pub struct MaterialLotBody {
 }
 
 impl MaterialLotBody {
-    fn of(material: &Material, lot: &MaterialLot) -> Self {
+    fn of(material: &Material, lot: &MaterialLot, today: Date) -> Self {
         Self {
             id: lot.id,
             material_id: lot.material_id,
             version: lot.version,
             entered: lot.into(),
-            in_force: InForceBody::of(material, Some(lot)),
+            in_force: InForceBody::of(material, Some(lot), today),
         }
     }
 }
@@ -148,9 +150,13 @@ async fn list(
     by: Member,
     Query(query): Query<ListQuery>,
 ) -> Result<axum::Json<Listed<MaterialBody>>, Error> {
+    let today = brewery::operations::today(&db).await?;
     let limit = query.limit()?;
     let found = operations::page(&db, &by, query.after()?, limit + 1).await?;
-    let bodies = found.iter().map(MaterialBody::from).collect();
+    let bodies = found
+        .iter()
+        .map(|material| MaterialBody::of(material, today))
+        .collect();
     Ok(axum::Json(Listed::cut(
         bodies,
         limit,
@@ -170,6 +176,7 @@ async fn create(
     by: Member,
     Json(body): Json<NewMaterialBody>,
 ) -> Result<impl IntoResponse, Error> {
+    let today = brewery::operations::today(&db).await?;
     by.may(Permission::KeepShelf)?;
     let material = operations::create(&db, &by, body.try_into()?).await?;
     let location = format!("/api/v1/materials/{}", material.id);
@@ -177,7 +184,7 @@ async fn create(
         StatusCode::CREATED,
         [(header::LOCATION, location)],
         etag(material.version),
-        axum::Json(MaterialBody::from(&material)),
+        axum::Json(MaterialBody::of(&material, today)),
     ))
 }
 
@@ -193,10 +200,11 @@ async fn show(
     by: Member,
     At(id): At<MaterialId>,
 ) -> Result<impl IntoResponse, Error> {
+    let today = brewery::operations::today(&db).await?;
     let material = operations::find(&db, &by, id).await?;
     Ok((
         etag(material.version),
-        axum::Json(MaterialBody::from(&material)),
+        axum::Json(MaterialBody::of(&material, today)),
     ))
 }
 
@@ -216,11 +224,12 @@ async fn revise(
     headers: HeaderMap,
     Json(body): Json<NewMaterialBody>,
 ) -> Result<impl IntoResponse, Error> {
+    let today = brewery::operations::today(&db).await?;
     by.may(Permission::KeepShelf)?;
     let material = operations::revise(&db, &by, id, body.try_into()?, if_match(&headers)?).await?;
     Ok((
         etag(material.version),
-        axum::Json(MaterialBody::from(&material)),
+        axum::Json(MaterialBody::of(&material, today)),
     ))
 }
 
@@ -238,12 +247,13 @@ async fn list_lots(
     At(id): At<MaterialId>,
     Query(query): Query<ListQuery>,
 ) -> Result<axum::Json<Listed<MaterialLotBody>>, Error> {
+    let today = brewery::operations::today(&db).await?;
     let limit = query.limit()?;
     let material = operations::find(&db, &by, id).await?;
     let lots = operations::page_of_lots(&db, &by, id, query.after()?, limit + 1).await?;
     let bodies = lots
         .iter()
-        .map(|lot| MaterialLotBody::of(&material, lot))
+        .map(|lot| MaterialLotBody::of(&material, lot, today))
         .collect();
     Ok(axum::Json(Listed::cut(
         bodies,
@@ -266,6 +276,7 @@ async fn create_lot(
     At(id): At<MaterialId>,
     Json(body): Json<NewMaterialLotBody>,
 ) -> Result<impl IntoResponse, Error> {
+    let today = brewery::operations::today(&db).await?;
     let material = operations::find(&db, &by, id).await?;
     let lot = operations::create_lot(&db, &by, id, body).await?;
     let location = format!("/api/v1/materials/{id}/lots/{}", lot.id);
@@ -273,7 +284,7 @@ async fn create_lot(
         StatusCode::CREATED,
         [(header::LOCATION, location)],
         etag(lot.version),
-        axum::Json(MaterialLotBody::of(&material, &lot)),
+        axum::Json(MaterialLotBody::of(&material, &lot, today)),
     ))
 }
 
@@ -289,10 +300,11 @@ async fn show_lot(
     by: Member,
     At((id, lot_id)): At<(MaterialId, MaterialLotId)>,
 ) -> Result<impl IntoResponse, Error> {
+    let today = brewery::operations::today(&db).await?;
     let (material, lot) = operations::find_lot_of(&db, &by, id, lot_id).await?;
     Ok((
         etag(lot.version),
-        axum::Json(MaterialLotBody::of(&material, &lot)),
+        axum::Json(MaterialLotBody::of(&material, &lot, today)),
     ))
 }
 
@@ -312,11 +324,12 @@ async fn revise_lot(
     headers: HeaderMap,
     Json(body): Json<NewMaterialLotBody>,
 ) -> Result<impl IntoResponse, Error> {
+    let today = brewery::operations::today(&db).await?;
     by.may(Permission::KeepLots)?;
     let (material, _) = operations::find_lot_of(&db, &by, id, lot_id).await?;
     let lot = operations::revise_lot(&db, &by, lot_id, body, if_match(&headers)?).await?;
     Ok((
         etag(lot.version),
-        axum::Json(MaterialLotBody::of(&material, &lot)),
+        axum::Json(MaterialLotBody::of(&material, &lot, today)),
     ))
 }

@@ -338,10 +338,12 @@ pub struct NewMaterialLotBody {
     pub use_by: String,
     /// The strength its certificate gives, for a liquid.
     pub strength: StrengthBody,
-    /// The assay its certificate gives, %.
+    /// The assay its certificate gives, or the brewery found, %.
     pub assay_percent: Number,
     /// Its standard deviation, percentage points. Blank: 1.
     pub assay_sd_percent: Number,
+    /// When the brewery found it, `2026-03-31`. Blank: the certificate gives it.
+    pub assayed_on: String,
     /// Whether it is the one being weighed from. The one before it no longer is.
     pub current: Flag,
     /// Anything else.
@@ -361,6 +363,7 @@ impl From<&MaterialLot> for NewMaterialLotBody {
             strength: lot.strength.into(),
             assay_percent: lot.assay.map(|assay| percent(assay.value.get())).into(),
             assay_sd_percent: lot.assay.map(|assay| percent(assay.sd)).into(),
+            assayed_on: date(lot.assayed_on),
             current: Flag(lot.current),
             notes: lot.notes.clone().unwrap_or_default(),
             in_use: Flag(lot.in_use),
@@ -411,6 +414,10 @@ fn lot(
         &body.assay_sd_percent,
         CERTIFIED_SD,
     );
+    let assayed_on = problems.past_date("assayed_on", &body.assayed_on, today);
+    if assayed_on.is_some() && body.assay_percent.is_missing() {
+        problems.add("assay_percent", "Enter the assay that was found that day.");
+    }
     if body.current.0 && !body.in_use.0 {
         problems.add(
             "current",
@@ -433,6 +440,7 @@ fn lot(
         use_by,
         strength,
         assay,
+        assayed_on,
         current: body.current.0,
         notes,
         in_use: body.in_use.0,

@@ -8,7 +8,7 @@
 
 use chemistry::ion::Ion;
 use chemistry::material::{self, DoseUnit, Form, MaterialError, Strength, Substance, Vessel};
-use chemistry::quantity::{DoseAmount, Estimate, Fraction, Litres, OutOfRange};
+use chemistry::quantity::{Days, DoseAmount, Estimate, Fraction, Litres, OutOfRange};
 use chemistry::water::Water;
 use jiff::civil::Date;
 
@@ -107,8 +107,10 @@ pub struct MaterialLot {
     pub use_by: Option<Date>,
     /// The strength its certificate gives, for a liquid.
     pub strength: Option<Strength>,
-    /// The assay its certificate gives.
+    /// The assay its certificate gives, or the brewery found.
     pub assay: Option<Estimate<Fraction>>,
+    /// When the brewery found it; `None`: the certificate gives it.
+    pub assayed_on: Option<Date>,
     /// Whether it is the one being weighed from.
     pub current: bool,
     /// Anything else.
@@ -117,6 +119,17 @@ pub struct MaterialLot {
     pub in_use: bool,
     /// Counts changes.
     pub version: i64,
+}
+
+impl MaterialLot {
+    /// How long it has stood open on a day since it was opened, or last assayed by the
+    /// brewery; `None` where it is sealed.
+    pub fn open_for(&self, on: Date) -> Option<Days> {
+        let opened = self.opened_on?;
+        let since = self.assayed_on.map_or(opened, |day| day.max(opened));
+        let days = (on - since).get_days();
+        Some(Days::clamped(f64::from(days)))
+    }
 }
 
 /// What an addition does to one figure of a liquor.
@@ -189,51 +202,55 @@ impl Material {
         })
     }
 
-    /// Its substance, strength and assay as far as they are known, from this lot when
-    /// there is one. A pack that stood open and draws water is taken as such.
+    /// Its substance, strength and assay on a day as far as they are known, from this lot
+    /// when there is one. A pack that stands open and draws water holds less every day,
+    /// and how much is ever less sure.
     ///
     /// A lot is checked against its material when it is entered, so that a strength
     /// that does not fit cannot get here; were it to, the label would count.
-    pub fn chemistry(&self, lot: Option<&MaterialLot>) -> material::Material {
+    pub fn chemistry(&self, lot: Option<&MaterialLot>, on: Date) -> material::Material {
         let Some(lot) = lot else {
             return self.as_labelled;
         };
         let strength = lot.strength.or(self.strength);
-        labelled(self.substance, strength, Some(self.assay_of(lot))).unwrap_or(self.as_labelled)
+        let assay = Some(self.assay_of(lot, on));
+        labelled(self.substance, strength, assay).unwrap_or(self.as_labelled)
     }
 
-    fn assay_of(&self, lot: &MaterialLot) -> Estimate<Fraction> {
+    fn assay_of(&self, lot: &MaterialLot, on: Date) -> Estimate<Fraction> {
         let certified = lot.strength.map(|_| {
             let exact = Fraction::constant(1.0);
             Estimate::new(exact, CERTIFIED_SD)
         });
         let sealed = lot.assay.or(certified).unwrap_or(self.as_labelled.assay());
-        match self.substance.opened_assay() {
-            Some(opened) if lot.opened_on.is_some() => {
-                // It cannot hold more than it did when it was sealed.
-                let share = opened.value.get().min(sealed.value.get());
-                Estimate::new(Fraction::clamped(share), opened.sd)
-            }
-            _ => sealed,
+        match lot.open_for(on) {
+            Some(days) => self.substance.assay_after_opening(sealed, days),
+            None => sealed,
         }
+    }
+
+    /// The label alone, whatever the lots say.
+    pub const fn label(&self) -> material::Material {
+        self.as_labelled
     }
 
     /// Where its assay or strength comes from.
     pub fn how_known(&self, lot: Option<&MaterialLot>) -> &'static str {
         let opened = lot.is_some_and(|lot| lot.opened_on.is_some());
+        let drifts = opened && self.substance.opened_assay().is_some();
+        let assayed = lot.is_some_and(|lot| lot.assayed_on.is_some());
         let certified = lot.is_some_and(|lot| lot.assay.is_some() || lot.strength.is_some());
         let silent = match self.substance.form() {
             Form::Solid => self.assay.is_none(),
             Form::Liquid => self.strength.is_none(),
         };
-        if opened && self.substance.opened_assay().is_some() {
-            "opened pack, assumed"
-        } else if certified {
-            "certificate of the lot"
-        } else if silent {
-            "usual for it, assumed"
-        } else {
-            "label"
+        match (drifts, assayed) {
+            (true, true) => "own assay, then open, assumed",
+            (true, false) => "opened pack, assumed",
+            (false, true) => "own assay",
+            (false, false) if certified => "certificate of the lot",
+            (false, false) if silent => "usual for it, assumed",
+            (false, false) => "label",
         }
     }
 
@@ -251,8 +268,8 @@ impl Material {
     }
 
     /// What this much in one hectolitre of liquor does to each figure it changes.
-    pub fn brings(&self, lot: Option<&MaterialLot>, per_hl: DoseAmount) -> Vec<Brings> {
-        let substance = self.chemistry(lot);
+    pub fn brings(&self, lot: Option<&MaterialLot>, on: Date, per_hl: DoseAmount) -> Vec<Brings> {
+        let substance = self.chemistry(lot, on);
         let added = substance
             .contribution(per_hl)
             .added_to(&Water::pure(), Litres::constant(100.0));

@@ -229,6 +229,7 @@ fn lot(row: &SqliteRow) -> Result<MaterialLot, Error> {
         use_by: date(row, "use_by")?,
         strength: strength(row)?,
         assay: assay(row)?,
+        assayed_on: date(row, "assayed_on")?,
         current: row.try_get("current")?,
         notes: row.try_get("notes")?,
         in_use: row.try_get("in_use")?,
@@ -254,8 +255,8 @@ pub(super) async fn save_lot(
         "INSERT INTO material_lots
              (id, material_id, code, received_on, opened_on, use_by, strength_percent,
               density_g_per_ml, strength_g_per_l, strength_meq_per_ml, chloride_percent,
-              assay_percent, assay_sd_percent, current, notes, in_use, version)
-         VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)
+              assay_percent, assay_sd_percent, assayed_on, current, notes, in_use, version)
+         VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)
          ON CONFLICT (id) DO UPDATE SET
              code = excluded.code, received_on = excluded.received_on,
              opened_on = excluded.opened_on, use_by = excluded.use_by,
@@ -265,7 +266,7 @@ pub(super) async fn save_lot(
              strength_meq_per_ml = excluded.strength_meq_per_ml,
              chloride_percent = excluded.chloride_percent,
              assay_percent = excluded.assay_percent, assay_sd_percent = excluded.assay_sd_percent,
-             current = excluded.current, notes = excluded.notes, in_use = excluded.in_use,
+             assayed_on = excluded.assayed_on, current = excluded.current, notes = excluded.notes, in_use = excluded.in_use,
              version = excluded.version",
     )
     .bind(lot.id)
@@ -281,6 +282,7 @@ pub(super) async fn save_lot(
     .bind(chloride)
     .bind(assay)
     .bind(assay_sd)
+    .bind(lot.assayed_on.map(|date| date.to_string()))
     .bind(lot.current)
     .bind(&lot.notes)
     .bind(lot.in_use)
@@ -296,7 +298,7 @@ macro_rules! select_lots {
         concat!(
             "SELECT id, material_id, code, received_on, opened_on, use_by, strength_percent,
                     density_g_per_ml, strength_g_per_l, strength_meq_per_ml, chloride_percent,
-                    assay_percent, assay_sd_percent, current, notes, in_use, version
+                    assay_percent, assay_sd_percent, assayed_on, current, notes, in_use, version
              FROM material_lots ",
             $rest
         )

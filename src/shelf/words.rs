@@ -171,6 +171,23 @@ pub fn vessels(vessels: &[Vessel]) -> String {
     names.join(", ")
 }
 
+/// How a brewery finds the assay of an opened pack itself, where there is a simple way.
+///
+/// Source: a solution of 10 % calcium chloride by weight has a specific gravity of about
+/// 1.086 at 15 °C (an old beverage manual); molar masses 110.98 and 147.01 g/mol, so that
+/// 10.0 g of the anhydrous salt or 13.2 g of the dihydrate make 100 g of it; that what is
+/// above 1 is in proportion to the strength near there: from memory.
+pub fn how_to_assay(substance: Substance) -> Option<String> {
+    let grams = match substance {
+        Substance::CalciumChlorideDihydrate => "13.2",
+        Substance::CalciumChlorideAnhydrous => "10.0",
+        _ => return None,
+    };
+    Some(format!(
+        "To assay it: fill {grams} g up to 100 g with pure water, let it cool to 15 °C and read a hydrometer. Pure salt reads about SG 1.086; the share is the reading less 1, divided by 0.086. A reading 0.001 off is 1.2 % off."
+    ))
+}
+
 /// What share of it acts in time, where that is not simply all of it.
 pub fn efficiency(substance: Substance) -> Option<String> {
     let efficiency = substance.efficiency();

@@ -22,6 +22,8 @@ use tower_http::trace::TraceLayer;
 use utoipa_axum::router::OpenApiRouter;
 
 use crate::db::Db;
+use crate::people::Place;
+use crate::people::operations::Gate;
 use crate::people::passwords::Passwords;
 
 pub mod api;
@@ -63,6 +65,17 @@ pub struct Door {
     pub secure_cookies: bool,
     /// The one-time token that makes the first account, printed at the start.
     pub first_token: String,
+}
+
+impl App {
+    /// What stands between a secret typed at this place and what it opens.
+    pub fn gate<'a>(&'a self, place: &'a Place) -> Gate<'a> {
+        Gate {
+            passwords: &self.passwords,
+            throttle: &self.throttle,
+            place,
+        }
+    }
 }
 
 impl FromRef<App> for Db {

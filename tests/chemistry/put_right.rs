@@ -2,16 +2,19 @@
 
 mod common;
 
-use chemistry::mash::{Addition, GristItem, LiquorDoubt, Malt, MaltClass, MashInputs, Settings};
+use chemistry::mash::{
+    Addition, Behaviour, GristItem, Groups, LiquorDoubt, Malt, MaltClass, MashInputs, Settings,
+};
 use chemistry::material::{DoseUnit, Material, Strength, Substance};
 use chemistry::put_right::{
     Advice, Aim, Corrected, Direction, FirstStep, LeaveIt, MashCheck, ReadAgain, Remedy, Situation,
-    Stop, Verdict, assess, cooled,
+    Stop, Verdict, as_read, assess, curve, expected_after, strength,
 };
 use chemistry::quantity::{
-    Celsius, DoseAmount, Estimate, Fraction, GramsPerMl, Kilograms, Litres, MeqPerL, MgPerL,
-    Minutes, Ph, PhShift,
+    Celsius, DoseAmount, Estimate, Fraction, GramsPerMl, Kilograms, Litres, Meq, MeqPerL, MgPerL,
+    Minutes, Ph, PhShift, RelativeBuffering,
 };
+use chemistry::reading::cooled;
 use common::natural;
 
 /// 200 kg of pale malt in 600 L of fairly soft water: predicted 5.71.
@@ -59,10 +62,11 @@ const AIM: Aim = Aim {
 /// A cooled sample at minute 20 on a meter good to 0.03.
 fn read(ph: f64) -> MashCheck {
     MashCheck {
-        ph: Ph::new(ph).expect("a pH"),
+        reading: Estimate::new(Ph::new(ph).expect("a pH"), 0.03),
         sample: Celsius::constant(21.1),
         minute: Minutes::constant(20.0),
-        meter_sd: PhShift::constant(0.03),
+        calibrated: true,
+        agrees: true,
         meter_checked: false,
     }
 }
@@ -136,7 +140,7 @@ fn a_reading_on_target_or_inside_the_window_is_left_alone() {
     );
     // On a poor meter 5.52 cannot be told from 5.40 though it lies outside the window.
     let mut poor = read(5.52);
-    poor.meter_sd = PhShift::constant(0.08);
+    poor.reading.sd = 0.08;
     with(&mash(), |situation| {
         let assessment = assess(&poor, &situation);
         assert_eq!(assessment.verdict, Verdict::CannotBeTold);
@@ -219,8 +223,8 @@ fn the_rest_of_the_step_reaches_the_target_when_the_mash_answers_as_expected() {
     let second = with(&corrected_mash, |mut situation| {
         situation.corrected = Some(Corrected {
             direction: Direction::Lower,
-            given: step.dose,
-            first_full_dose: step.full_dose,
+            given: strength(&mash(), AIM.target, &acid().contribution(step.dose)),
+            first_full: step.full,
         });
         assess(&read(step.expected_ph.value.get()), &situation).advice
     });
@@ -231,12 +235,15 @@ fn the_rest_of_the_step_reaches_the_target_when_the_mash_answers_as_expected() {
 
 #[test]
 fn corrections_stop_at_the_cap_at_the_first_full_dose_and_at_a_change_of_direction() {
-    let corrected = |direction, given, first_full_dose| {
+    let corrected = |direction, given: f64, first_full: f64, cap: f64| {
         with(&mash(), |mut situation| {
+            if let Some(acid) = &mut situation.acid {
+                acid.cap = DoseAmount::clamped(cap);
+            }
             situation.corrected = Some(Corrected {
                 direction,
-                given: DoseAmount::constant(given),
-                first_full_dose: DoseAmount::constant(first_full_dose),
+                given: Meq::clamped(given),
+                first_full: Meq::clamped(first_full),
             });
             assess(&read(5.65), &situation).advice
         })
@@ -244,17 +251,19 @@ fn corrections_stop_at_the_cap_at_the_first_full_dose_and_at_a_change_of_directi
     let reached = Advice::Stop {
         why: Stop::CapReached,
     };
-    assert_eq!(corrected(Direction::Lower, 500.0, 900.0), reached);
-    assert_eq!(corrected(Direction::Lower, 100.0, 100.0), reached);
+    assert_eq!(corrected(Direction::Lower, 500.0, 9000.0, 0.0), reached);
+    assert_eq!(corrected(Direction::Lower, 1000.0, 1000.0, 500.0), reached);
     assert_eq!(
-        corrected(Direction::Raise, 10.0, 100.0),
+        corrected(Direction::Raise, 10.0, 1000.0, 500.0),
         Advice::Stop {
             why: Stop::AlreadyCorrectedTheOtherWay
         }
     );
-    let capped = first_step(corrected(Direction::Lower, 480.0, 900.0));
+    let capped = first_step(corrected(Direction::Lower, 500.0, 9000.0, 30.0));
     assert!(capped.capped);
-    assert!((capped.dose.get() - 20.0).abs() < 1e-9);
+    assert!((capped.dose.get() - 30.0).abs() < 1e-9);
+    // So near the cap that the step would hardly show: half of the full dose is about 75 mL.
+    assert_eq!(corrected(Direction::Lower, 500.0, 9000.0, 5.0), reached);
 }
 
 #[test]
@@ -273,6 +282,26 @@ fn nothing_is_advised_before_minute_ten_or_on_a_hot_sample() {
         advice(hot),
         Advice::ReadAgain {
             why: ReadAgain::CoolTheSample
+        }
+    );
+}
+
+#[test]
+fn nothing_is_advised_on_a_meter_that_was_not_calibrated_or_readings_that_contradict() {
+    let mut strange = read(5.65);
+    strange.calibrated = false;
+    assert_eq!(
+        advice(strange),
+        Advice::ReadAgain {
+            why: ReadAgain::Calibrate
+        }
+    );
+    let mut alone = read(5.65);
+    alone.agrees = false;
+    assert_eq!(
+        advice(alone),
+        Advice::ReadAgain {
+            why: ReadAgain::ReadingsDisagree
         }
     );
 }
@@ -305,7 +334,7 @@ fn no_reading_and_no_mash_leads_to_a_step_beyond_the_full_dose_or_the_cap() {
             {
                 assert!(step.dose.get() <= 0.5 * step.full_dose.get() + 1e-9);
                 assert!(step.dose.get() <= 1000.0);
-                let (read, target) = (check.ph.get(), AIM.target.get());
+                let (read, target) = (check.reading.value.get(), AIM.target.get());
                 let after = step.expected_ph.value.get();
                 assert!(
                     (after - target).abs() < (read - target).abs(),
@@ -324,4 +353,121 @@ fn no_reading_and_no_mash_leads_to_a_step_beyond_the_full_dose_or_the_cap() {
             why: Stop::NoPrediction(_)
         }
     ));
+}
+
+/// J.-P. Hosom's mash: 0.420 kg of one US 2-row malt in 1.372 L of water with 32 to 41 mg/L
+/// of alkalinity, 67 °C, 60 minutes: pH 5.62. The pH in distilled water that fits is 5.56;
+/// its buffering is that of the average malt.
+fn measured_mash() -> MashInputs {
+    let malt = Behaviour::Groups(Groups::new(
+        Estimate::new(Ph::constant(5.56), 0.02),
+        Estimate::new(RelativeBuffering::constant(1.0), 0.25),
+    ));
+    MashInputs {
+        grist: vec![GristItem {
+            malt: Malt {
+                name: "2-row".into(),
+                behaviour: malt,
+            },
+            mass: Kilograms::constant(0.420),
+        }],
+        liquor: natural(36.5, 7.6, 10.0, 2.0),
+        volume: Estimate::new(Litres::constant(1.372), 0.01),
+        ..mash()
+    }
+}
+
+/// Phosphoric acid, 10 % by weight, 1.053 g/mL: 1.075 mol/L.
+fn phosphoric() -> Material {
+    Material::liquid(
+        Substance::PhosphoricAcid,
+        Strength::WeightPercent {
+            share: Fraction::constant(0.10),
+            density: GramsPerMl::constant(1.053),
+        },
+        Estimate::new(Fraction::constant(1.0), 0.0),
+    )
+    .expect("an acid")
+}
+
+#[test]
+fn acid_into_a_measured_mash_moves_it_as_was_measured() {
+    // The same mash with 3.4 mL of 10 % phosphoric acid (8.8 meq/kg): 5.39 to 5.40, read
+    // 5.62 without. Readings of ±0.01 either side.
+    let dose = DoseAmount::constant(3.4);
+    let mash = measured_mash();
+    let target = Ph::constant(5.40);
+    let meq = strength(&mash, target, &phosphoric().contribution(dose)).get();
+    assert!((meq / 0.420 - 8.8).abs() < 0.1, "{}", meq / 0.420);
+    let addition = Addition::of("acid", &phosphoric(), dose);
+    let before = Estimate::new(Ph::constant(5.62), 0.01);
+    let after = expected_after(&mash, before, &[addition]).expect("a pH");
+    assert!(
+        (5.37..=5.42).contains(&after.value.get()),
+        "{}",
+        after.value
+    );
+    // And the doubt it is given holds the figure that was measured.
+    assert!(after.sd > 0.05 && after.sd < 0.07, "{}", after.sd);
+}
+
+#[test]
+fn two_half_steps_into_a_measured_mash_come_to_the_acid_that_was_measured() {
+    // Asked for 5.395 from 5.62, the full dose is the 3.4 mL that did it, to a tenth.
+    let mash = as_read(&measured_mash(), Ph::constant(5.62)).expect("a mash");
+    let full = mash
+        .dose_for(Ph::constant(5.395), &phosphoric())
+        .expect("a dose");
+    assert!((full.get() / 3.4 - 1.0).abs() < 0.1, "{full}");
+}
+
+#[test]
+fn a_step_of_another_acid_counts_against_the_same_first_full_dose() {
+    // 11.4 meq/mL of 88 % lactic acid and 1.09 meq/mL of 10 % phosphoric at 5.4 (tables of
+    // strength): ten times as many millilitres do the same.
+    let of = |material: &Material, amount: f64| {
+        strength(
+            &mash(),
+            AIM.target,
+            &material.contribution(DoseAmount::constant(amount)),
+        )
+        .get()
+    };
+    assert!((of(&acid(), 1.0) - 11.45).abs() < 0.05);
+    assert!((of(&phosphoric(), 1.0) - 1.091).abs() < 0.01);
+    assert!((of(&acid(), 10.0) / of(&phosphoric(), 104.9) - 1.0).abs() < 0.01);
+}
+
+#[test]
+fn the_chance_to_land_in_the_window_is_that_of_the_normal_distribution() {
+    // Any table of the normal distribution: 68.27 % within one standard deviation, 95.0 %
+    // within 1.96, 15.87 % above one.
+    for (mean, sd, chance) in [
+        (5.40, 0.10, 0.6827),
+        (5.40, 0.10 / 1.959_964, 0.95),
+        (5.50, 0.10, 0.4772),
+        (5.60, 0.10, 0.1573),
+        (6.60, 0.05, 0.0),
+    ] {
+        let found = AIM.chance(Estimate::new(Ph::constant(mean), sd)).get();
+        assert!((found - chance).abs() < 2e-4, "{mean} {sd}: {found}");
+    }
+    assert_eq!(AIM.chance(Estimate::new(Ph::constant(5.5), 0.0)).get(), 1.0);
+    assert_eq!(
+        AIM.chance(Estimate::new(Ph::constant(5.51), 0.0)).get(),
+        0.0
+    );
+}
+
+#[test]
+fn the_curve_falls_with_acid_and_passes_where_the_step_leads() {
+    let step = first_step(advice(read(5.65)));
+    let mash = as_read(&mash(), Ph::constant(5.65)).expect("a mash");
+    let points = curve(&mash, &acid(), step.full_dose);
+    assert_eq!(points.len(), 25);
+    assert!((points[0].1.get() - 5.65).abs() < 1e-6);
+    assert!((points[24].1.get() - AIM.target.get()).abs() < 1e-6);
+    assert!(points.windows(2).all(|pair| pair[1].1 < pair[0].1));
+    let halfway = points[12].1.get();
+    assert!((halfway - step.expected_ph.value.get()).abs() < 1e-6);
 }

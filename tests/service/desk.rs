@@ -3,11 +3,14 @@
 use std::path::PathBuf;
 
 use leat::config::Config;
+use leat::db::Db;
 use leat::input::Problems;
-use leat::people::operations::{self, NewAccount};
-use leat::people::{Member, Scope};
+use leat::people::operations::{self, Gate, NewAccount};
+use leat::people::passwords::Passwords;
+use leat::people::{Member, Place, Scope};
 use leat::server::Server;
 use leat::web::App;
+use leat::web::throttle::Throttle;
 use reqwest::{Client, Response, StatusCode};
 use scraper::{Html, Selector};
 use serde_json::Value;
@@ -58,10 +61,8 @@ impl Desk {
 
     /// Somebody as operations see them.
     pub async fn member(&self, login: &str) -> Member {
-        let signed_in =
-            operations::sign_in(&self.app.db, &self.app.passwords, login, PASSWORD).await;
-        let (_, secret) = signed_in.unwrap();
-        operations::by_session(&self.app.db, &secret.0)
+        let secret = sign_in(&self.app.db, &self.app.passwords, login).await;
+        operations::by_session(&self.app.db, &secret, None)
             .await
             .unwrap()
             .unwrap()
@@ -112,6 +113,17 @@ impl Desk {
     pub async fn full_program(&self, login: &str) -> Program {
         self.program(login, &Scope::ALL).await
     }
+}
+
+/// Signs somebody in past the limits on guessing, which a test full of people would meet.
+pub async fn sign_in(db: &Db, passwords: &Passwords, login: &str) -> String {
+    let gate = Gate {
+        passwords,
+        throttle: &Throttle::new().unwrap(),
+        place: &Place::at([127, 0, 0, 1].into()),
+    };
+    let signed_in = operations::sign_in(db, gate, None, login, PASSWORD).await;
+    signed_in.unwrap().1.0
 }
 
 /// The settings a test server runs with.

@@ -20,6 +20,7 @@ mod plans;
 mod program;
 mod queued;
 mod readiness;
+mod record;
 mod shelf;
 mod source_pages;
 mod sources;

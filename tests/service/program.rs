@@ -15,7 +15,7 @@ use leat::people::{Member, Role, Scope};
 use reqwest::Client;
 use serde_json::json;
 
-use crate::desk::{Desk, PASSWORD};
+use crate::desk::{Desk, PASSWORD, sign_in};
 
 fn leat(file: &Path) -> Command {
     let mut command = Command::new(env!("CARGO_BIN_EXE_leat"));
@@ -38,10 +38,9 @@ async fn a_back_up_taken_while_leat_answers_can_be_opened_in_its_place() {
 
     let db = Db::open(&copy).await.unwrap();
     let passwords = Passwords::start().unwrap();
-    let (member, _) = operations::sign_in(&db, &passwords, "qa", PASSWORD)
-        .await
-        .unwrap();
-    assert_eq!(member.name, "Quin Assay");
+    let secret = sign_in(&db, &passwords, "qa").await;
+    let member = operations::by_session(&db, &secret, None).await.unwrap();
+    assert_eq!(member.unwrap().name, "Quin Assay");
     assert_eq!(manager.open("/people").await.status, 200);
 }
 
@@ -134,6 +133,7 @@ async fn killed_again_and_again_while_it_writes_it_loses_nothing_it_answered() {
             name: "Mara".into(),
             role: Role::Manager,
             scopes: None,
+            by_pin: false,
         };
         let scopes = Scope::ALL.to_vec();
         let made = operations::create_token(&db, &by, "probe".into(), scopes, 1).await;

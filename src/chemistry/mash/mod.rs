@@ -154,6 +154,13 @@ impl MashInputs {
         Ok(Meq::clamped(self.total(self.balanced_for(target))))
     }
 
+    /// Acid that an addition gives this mash at `target`; negative for a base.
+    #[must_use]
+    pub fn acid_given(&self, target: Ph, brings: &Contribution) -> Meq {
+        let demand = self.asks(self.balanced_for(target));
+        Meq::clamped(-demand.contribution(brings).get())
+    }
+
     /// How much of a material brings the mash to `target`. It is exact, not
     /// iterated, because the balance is linear at a fixed pH.
     pub fn dose_for(&self, target: Ph, material: &Material) -> Result<DoseAmount, MashError> {

@@ -50,7 +50,7 @@ impl LotNamed {
     }
 }
 
-/// The lot of a dose, with what its label and certificate say today. A code that the
+/// The lot of a dose, with what it is on the day of the brew. A code that the
 /// shelf does not know is kept as it is told.
 pub(super) async fn find(
     conn: &mut SqliteConnection,
@@ -98,7 +98,7 @@ pub(super) async fn find(
         ));
     }
     Ok(Lot {
-        material: Some(material.chemistry(Some(&lot))),
+        material: Some(material.chemistry(Some(&lot), plan.brewed_on)),
         id: Some(lot.id),
         code: lot.code,
     })

@@ -5,6 +5,7 @@ use askama_web::WebTemplate;
 use axum::extract::State;
 use axum::response::{IntoResponse, Redirect, Response};
 use chemistry::material::{Role, Substance};
+use jiff::civil::Date;
 
 use super::PAGE;
 use crate::db::Db;
@@ -13,6 +14,7 @@ use crate::id::MaterialId;
 use crate::people::Permission;
 use crate::shelf::{Material, MaterialLot, Price, operations, words};
 use crate::web::form::Form;
+use crate::web::format;
 use crate::web::layout::{Framer, Page};
 use crate::web::list::{Column, Pager, Sorted};
 
@@ -87,11 +89,12 @@ async fn list_page(db: &Db, framer: &Framer, typed: Form) -> Result<ListPage, Er
     };
     let (shelf, pager) = Pager::cut(shelf, PAGE, &typed, &sorted.address(address));
     let page = framer.page("Shelf", "shelf").await;
+    let today = format::today(&page.settings.time_zone);
     Ok(ListPage {
         columns: sorted.columns(address, &COLUMNS),
         materials: shelf
             .iter()
-            .map(|(material, lot)| material_row(material, lot.as_ref(), &page))
+            .map(|(material, lot)| material_row(material, lot.as_ref(), &page, today))
             .collect(),
         pager,
         retired,
@@ -102,14 +105,19 @@ async fn list_page(db: &Db, framer: &Framer, typed: Form) -> Result<ListPage, Er
     })
 }
 
-fn material_row(material: &Material, lot: Option<&MaterialLot>, page: &Page) -> MaterialRow {
+fn material_row(
+    material: &Material,
+    lot: Option<&MaterialLot>,
+    page: &Page,
+    today: Date,
+) -> MaterialRow {
     MaterialRow {
         id: material.id,
         name: material.name.clone(),
         what: words::beside_name(material),
         role: words::role(material.substance),
         lot: lot.map(|lot| lot.code.clone()),
-        strength: words::strength(&material.chemistry(lot)),
+        strength: words::strength(&material.chemistry(lot, today)),
         how_known: material.how_known(lot),
         price: words::price(material, &page.settings),
         vessels: words::vessels(&material.vessels),
@@ -148,7 +156,7 @@ fn usual(typed: &Form) -> Vec<UsualRow> {
                     substance.name(),
                     substance.formula(),
                     words::role(substance),
-                    words::strength(&material.chemistry(None)),
+                    words::strength(&material.label()),
                 ),
                 name,
             }

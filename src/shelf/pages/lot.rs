@@ -48,7 +48,7 @@ async fn lot_page(
         },
         new: lot.is_none(),
         substance: SubstanceWords::of(material.substance),
-        label: words::strength(&material.chemistry(None)),
+        label: words::strength(&material.label()),
         opened_assay: material.substance.opened_assay().map(words::share),
         material,
         typed,

@@ -51,7 +51,7 @@ struct SubstanceWords {
 
 impl SubstanceWords {
     fn of(substance: Substance) -> Self {
-        let usual = Material::usual(substance).map(|usual| usual.chemistry(None));
+        let usual = Material::usual(substance).map(|usual| usual.label());
         let usual = usual.or_else(|| chemistry::material::Material::usual(substance));
         Self {
             what: words::what(substance),

@@ -1,23 +1,44 @@
-//! Signing in and out, accounts, API tokens.
+//! Accounts; signing in and out, tablets and PINs, invitations and API tokens in files of
+//! their own.
 
 use base64ct::{Base64UrlUnpadded, Encoding};
 use sha2::{Digest, Sha256};
 
 use super::passwords::Passwords;
-use super::{Account, ApiToken, Member, Permission, Role, Scope, store};
+use super::{Account, Member, Permission, Place, Role, store};
 use crate::db::Db;
 use crate::error::{Error, taken};
-use crate::id::{ApiTokenId, MemberId, UtcTime};
+use crate::id::{MemberId, UtcTime};
 use crate::input::Problems;
 use crate::record;
-use crate::web::repeat;
+use crate::web::throttle::Throttle;
 
-/// A session ends after this long without a request, s: twelve hours, a long brew day.
-const IDLE_SECONDS: i64 = 12 * 3600;
-/// A session ends after this long in any case, s: fourteen days.
-const SESSION_SECONDS: i64 = 14 * 24 * 3600;
-/// Longest life of an API token, days.
-pub const TOKEN_DAYS: i64 = 365;
+mod invitations;
+mod sessions;
+mod tablets;
+mod tokens;
+
+pub use invitations::{
+    INVITATION_DAYS, accept, invitation, invitations, invite, revoke_invitation,
+};
+pub use sessions::{by_session, open_sessions, sign_in, sign_out, sign_out_everywhere};
+pub use tablets::{
+    by_cookie, enrol, has_pin, names, remove_pin, revoke_tablet, second_people, set_pin,
+    sign_in_with_pin, tablet_idle, tablets, vouch,
+};
+pub use tokens::{TOKEN_DAYS, by_token, create_token, revoke_token, tokens};
+
+/// What stands between a secret that is typed and what it opens.
+#[derive(Clone, Copy, Debug)]
+pub struct Gate<'a> {
+    /// The hashing thread.
+    pub passwords: &'a Passwords,
+    /// The limits on guessing.
+    pub throttle: &'a Throttle,
+    /// Where the secret was typed.
+    pub place: &'a Place,
+}
+
 /// Shortest password, characters.
 pub const PASSWORD_LEAST: usize = 10;
 
@@ -25,7 +46,7 @@ pub const PASSWORD_LEAST: usize = 10;
 pub struct Secret(pub String);
 
 impl Secret {
-    fn new() -> Result<Self, Error> {
+    pub(super) fn new() -> Result<Self, Error> {
         let mut bytes = [0_u8; 32];
         getrandom::fill(&mut bytes)
             .map_err(|error| Error::internal("No random numbers could be had", error))?;
@@ -131,6 +152,7 @@ pub async fn create_first(
         name: account.name.clone(),
         role: account.role,
         scopes: None,
+        by_pin: false,
     };
     record::append(
         &mut tx,
@@ -211,7 +233,7 @@ pub async fn revise(
         ));
     }
     if !open {
-        store::delete_sessions_of(&mut tx, id).await?;
+        store::sessions::delete_of_member(&mut tx, id).await?;
     }
     record::append(
         &mut tx,
@@ -234,7 +256,7 @@ pub async fn revise(
 pub async fn change_password(
     db: &Db,
     by: &Member,
-    passwords: &Passwords,
+    gate: Gate<'_>,
     id: MemberId,
     present: &str,
     wanted: &str,
@@ -243,26 +265,14 @@ pub async fn change_password(
     let wanted = check_password(wanted, &mut problems);
     problems.finish()?;
     let wanted = wanted.unwrap_or_default();
-    if by.id == id && by.scopes.is_none() {
-        let account = find(db, by, id).await?;
-        let known = store::by_login(&mut *db.reader().await?, &account.login).await?;
-        let hash = known.map(|(_, hash)| hash).unwrap_or_default();
-        if !passwords.verify(present, &hash).await? {
-            return Err(Error::field(
-                "present",
-                "This is not your present password.",
-            ));
-        }
-    } else {
-        by.may(Permission::KeepPeople)?;
-    }
-    let hash = passwords.hash(&wanted).await?;
+    own_or_keeper(db, by, gate, id, present).await?;
+    let hash = gate.passwords.hash(&wanted).await?;
     let mut tx = db.begin().await?;
     let account = store::find(&mut tx, id)
         .await?
         .ok_or(Error::NotFound("account"))?;
     store::set_hash(&mut tx, id, &hash).await?;
-    store::delete_sessions_of(&mut tx, id).await?;
+    store::sessions::delete_of_member(&mut tx, id).await?;
     record::append(
         &mut tx,
         by,
@@ -271,6 +281,32 @@ pub async fn change_password(
     .await?;
     tx.commit().await?;
     Ok(())
+}
+
+/// Lets through the owner of an account who types the present password, and whoever keeps
+/// the accounts.
+async fn own_or_keeper(
+    db: &Db,
+    by: &Member,
+    gate: Gate<'_>,
+    id: MemberId,
+    present: &str,
+) -> Result<(), Error> {
+    if by.id != id || by.scopes.is_some() {
+        return by.may(Permission::KeepPeople);
+    }
+    let account = find(db, by, id).await?;
+    gate.throttle.password(&account.login, gate.place.address)?;
+    let known = store::by_login(&mut *db.reader().await?, &account.login).await?;
+    let hash = known.map(|(_, hash)| hash).unwrap_or_default();
+    if gate.passwords.verify(present, &hash).await? {
+        Ok(())
+    } else {
+        Err(Error::field(
+            "present",
+            "This is not your present password.",
+        ))
+    }
 }
 
 /// Every account.
@@ -289,162 +325,11 @@ pub async fn find(db: &Db, by: &Member, id: MemberId) -> Result<Account, Error> 
         .ok_or(Error::NotFound("account"))
 }
 
-/// Checks a password and begins a session. The same answer, after the same work,
-/// for an unknown login and a wrong password.
-pub async fn sign_in(
-    db: &Db,
-    passwords: &Passwords,
-    login: &str,
-    password: &str,
-) -> Result<(Account, Secret), Error> {
-    const NOBODY: &str = "$argon2id$v=19$m=19456,t=2,p=1$bGVhdC1sZWF0LWxlYXQ$q3JwvHfVYJ1YbA4Yb3gqk3o8kq2l5k9yq3Zb0V5fQ8E";
-    let known = store::by_login(&mut *db.reader().await?, &login.trim().to_lowercase()).await?;
-    let hash = known.as_ref().map_or(NOBODY, |(_, hash)| hash.as_str());
-    let fits = passwords.verify(password, hash).await?;
-    let account = known
-        .map(|(account, _)| account)
-        .filter(|account| fits && account.disabled_at.is_none());
-    let Some(account) = account else {
-        return Err(Error::field(
-            "password",
-            "This name and password do not belong together.",
-        ));
-    };
-    let secret = Secret::new()?;
-    let now = UtcTime::now();
-    let mut tx = db.begin().await?;
-    store::delete_expired_sessions(&mut tx, now).await?;
-    repeat::forget_old(&mut tx).await?;
-    store::insert_session(
-        &mut tx,
-        &secret.hash(),
-        account.id,
-        now,
-        now.plus_seconds(SESSION_SECONDS),
-    )
-    .await?;
-    tx.commit().await?;
-    Ok((account, secret))
-}
-
-/// Ends a session.
-pub async fn sign_out(db: &Db, secret: &str) -> Result<(), Error> {
-    let mut tx = db.begin().await?;
-    store::delete_session(&mut tx, &hash_secret(secret)).await?;
-    tx.commit().await?;
-    Ok(())
-}
-
-/// Who holds this session, if it is still good.
-pub async fn by_session(db: &Db, secret: &str) -> Result<Option<Member>, Error> {
-    let now = UtcTime::now();
-    let hash = hash_secret(secret);
-    let found = store::session(
-        &mut *db.reader().await?,
-        &hash,
-        now,
-        now.plus_seconds(-IDLE_SECONDS),
-    )
-    .await?;
-    let Some((member, last_seen)) = found else {
-        return Ok(None);
-    };
-    // Written at most once in five minutes, so that reading pages does not write.
-    if now.seconds_since(last_seen) > 300 {
-        let mut tx = db.begin_unkeyed().await?;
-        store::touch_session(&mut tx, &hash, now).await?;
-        tx.commit().await?;
-    }
-    Ok(Some(member))
-}
-
-/// Who holds this API token, if it is still good.
-pub async fn by_token(db: &Db, secret: &str) -> Result<Option<Member>, Error> {
-    let now = UtcTime::now();
-    let found = store::token_holder(&mut *db.reader().await?, &hash_secret(secret), now).await?;
-    let Some((id, member, last_used)) = found else {
-        return Ok(None);
-    };
-    if last_used.is_none_or(|last| now.seconds_since(last) > 60) {
-        let mut tx = db.begin_unkeyed().await?;
-        store::touch_token(&mut tx, id, now).await?;
-        tx.commit().await?;
-    }
-    Ok(Some(member))
-}
-
-/// Makes an API token for oneself. The secret is returned once.
-pub async fn create_token(
-    db: &Db,
-    by: &Member,
-    name: String,
-    scopes: Vec<Scope>,
-    days: i64,
-) -> Result<(ApiToken, Secret), Error> {
-    by.may(Permission::KeepPeople)?;
-    let now = UtcTime::now();
-    let token = ApiToken {
-        id: ApiTokenId::new(),
-        member_id: by.id,
-        member_name: by.name.clone(),
-        name,
-        scopes,
-        created_at: now,
-        expires_at: now.plus_seconds(days.clamp(1, TOKEN_DAYS) * 24 * 3600),
-        last_used_at: None,
-        revoked_at: None,
-    };
-    let secret = Secret::new()?;
-    let mut tx = db.begin().await?;
-    store::insert_token(&mut tx, &token, &secret.hash()).await?;
-    record::append(
-        &mut tx,
-        by,
-        record::Change::created("API token", token.id, &token.name, &describe_token(&token))
-            .about("account", by.id),
-    )
-    .await?;
-    tx.commit().await?;
-    Ok((token, secret))
-}
-
-/// Every API token.
-pub async fn tokens(db: &Db, by: &Member) -> Result<Vec<ApiToken>, Error> {
-    by.may(Permission::KeepPeople)?;
-    store::tokens(&mut *db.reader().await?).await
-}
-
-/// Ends an API token at once.
-pub async fn revoke_token(db: &Db, by: &Member, id: ApiTokenId) -> Result<(), Error> {
-    by.may(Permission::KeepPeople)?;
-    let mut tx = db.begin().await?;
-    let token = store::find_token(&mut tx, id)
-        .await?
-        .ok_or(Error::NotFound("API token"))?;
-    store::revoke_token(&mut tx, id, UtcTime::now()).await?;
-    record::append(
-        &mut tx,
-        by,
-        record::Change::event("revoked", "API token", id, &token.name),
-    )
-    .await?;
-    tx.commit().await?;
-    Ok(())
-}
-
 fn describe(account: &Account) -> serde_json::Value {
     serde_json::json!({
         "login": account.login,
         "name": account.name,
         "role": account.role.key(),
         "disabled_at": account.disabled_at,
-    })
-}
-
-fn describe_token(token: &ApiToken) -> serde_json::Value {
-    serde_json::json!({
-        "name": token.name,
-        "scopes": token.scopes.iter().map(|s| s.key()).collect::<Vec<_>>(),
-        "expires_at": token.expires_at,
     })
 }

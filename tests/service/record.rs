@@ -1,0 +1,261 @@
+//! The record book: searched, taken along, and closed batches that explain themselves.
+
+use reqwest::StatusCode;
+use serde_json::json;
+
+use crate::brewhouse::Brewhouse;
+use crate::desk::{Desk, Program};
+
+/// The entries that fit a query of the API, as “action kind”.
+async fn entries(program: &Program, query: &str) -> Vec<String> {
+    let answer = program.get(&format!("/record?limit=200&{query}")).await;
+    assert_eq!(answer.status, 200, "{query}: {:?}", answer.body);
+    let items = answer.body["items"].as_array().unwrap();
+    let words = items.iter().map(|item| {
+        let word = |name: &str| item[name].as_str().unwrap().to_owned();
+        format!("{} {}", word("action"), word("subject_kind"))
+    });
+    words.collect()
+}
+
+#[tokio::test]
+async fn the_book_is_searched_by_batch_source_person_lot_day_kind_and_words_and_all_at_once() {
+    let house = Brewhouse::build().await;
+    let id = house.dosed("26-301").await;
+    house.draft("26-30").await;
+    let manager = &house.manager;
+    let of_batch = entries(manager, "batch=26-301").await;
+    let weighed = house.doses(&id).await.len();
+    // Whole numbers: batch 26-30 is another.
+    assert_eq!(of_batch.len(), 2 + weighed, "{of_batch:?}");
+    assert_eq!(of_batch.last().unwrap(), "created plan");
+    let of_source = entries(manager, &format!("source_id={}", house.source)).await;
+    for expected in [
+        "created source",
+        "created water test",
+        "created plan",
+        "approved plan",
+    ] {
+        assert!(
+            of_source.iter().any(|entry| entry == expected),
+            "{of_source:?}"
+        );
+    }
+    assert!(
+        !of_source.iter().any(|entry| entry.contains("beer")),
+        "{of_source:?}"
+    );
+    let accounts = manager.get("/record?kind=account").await.body;
+    let account = |name: &str| {
+        let mut found = accounts["items"].as_array().unwrap().iter();
+        let found = found.find(|entry| entry["subject_name"] == name).unwrap();
+        found["subject_id"].as_str().unwrap().to_owned()
+    };
+    let of_qa = entries(manager, &format!("member_id={}", account("Quin Assay"))).await;
+    assert_eq!(of_qa, ["created account"]);
+    assert_eq!(entries(manager, "kind=beer").await, ["created beer"]);
+    assert_eq!(
+        entries(manager, "text=sluice%20PALE&kind=beer").await,
+        ["created beer"]
+    );
+    assert!(entries(manager, "text=no%20such%20words").await.is_empty());
+    let today = leat::web::format::today("Etc/UTC");
+    let (tomorrow, yesterday) = (today.tomorrow().unwrap(), today.yesterday().unwrap());
+    let every = entries(manager, "").await.len();
+    assert_eq!(
+        entries(manager, &format!("from={yesterday}&to={tomorrow}"))
+            .await
+            .len(),
+        every
+    );
+    assert!(
+        entries(manager, &format!("from={tomorrow}"))
+            .await
+            .is_empty()
+    );
+    assert!(entries(manager, &format!("to={yesterday}")).await.len() <= every);
+    let all = format!(
+        "batch=26-301&source_id={}&member_id={}&from={yesterday}&to={tomorrow}&kind=plan&text=sluice",
+        house.source,
+        account("Mara Manager")
+    );
+    assert_eq!(
+        entries(manager, &all).await,
+        ["approved plan", "created plan"]
+    );
+    for wrong in [
+        "from=soon",
+        "source_id=x",
+        "member_id=x",
+        "from=2026-12-02&to=2026-12-01",
+    ] {
+        let answer = manager.get(&format!("/record?{wrong}")).await;
+        assert_eq!(answer.status, 422, "{wrong}");
+    }
+}
+
+#[tokio::test]
+async fn a_search_is_an_address_that_keeps_what_was_asked_on_every_page_of_the_answer() {
+    let house = Brewhouse::build().await;
+    for _ in 0..30 {
+        let body = json!({"name": "Town mains", "kind": "mains", "days_between_tests": 90});
+        let path = format!("/sources/{}", house.source);
+        for price in [2.5, 2.6] {
+            let mut body = body.clone();
+            body["price_per_m3"] = json!(price);
+            assert_eq!(house.manager.put(&path, &body).await.status, 200);
+        }
+    }
+    let browser = house.desk.browser("brewer").await;
+    let address = format!("/record?source_id={}&kind=source", house.source);
+    let page = browser.open(&address).await;
+    assert!(
+        page.words().contains("1 to 40 of 61 entries"),
+        "{}",
+        page.words()
+    );
+    assert_eq!(page.field("kind"), "source");
+    assert_eq!(page.field("source_id"), house.source);
+    let link = |page: &crate::desk::Seen, selector: &str| {
+        let selector = scraper::Selector::parse(selector).unwrap();
+        let html = page.html();
+        let found = html.select(&selector).next().unwrap();
+        found.value().attr("href").unwrap().to_owned()
+    };
+    let older = browser.open(&link(&page, ".pager a[rel=next]")).await;
+    assert!(
+        older.words().contains("41 to 61 of 61 entries"),
+        "{}",
+        older.words()
+    );
+    assert_eq!(older.texts(".moment").len(), 21);
+    assert_eq!(older.field("kind"), "source");
+    assert_eq!(link(&older, ".pager a"), address);
+    let nothing = browser.open("/record?batch=none").await;
+    assert!(
+        nothing.words().contains("No entry fits"),
+        "{}",
+        nothing.words()
+    );
+    let refused = browser.open("/record?from=soon&batch=26-1").await;
+    assert_eq!(refused.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert_eq!(
+        (refused.field("from"), refused.field("batch")),
+        ("soon".into(), "26-1".into())
+    );
+    assert!(refused.error("from").unwrap().contains("2026-03-31"));
+}
+
+#[tokio::test]
+async fn the_book_leaves_as_a_table_that_no_spreadsheet_runs() {
+    let desk = Desk::start().await;
+    let program = desk.full_program("manager").await;
+    let name = "=HYPERLINK(\"http://x\",\"a\")";
+    let source = json!({"name": name, "kind": "borehole", "days_between_tests": 90, "notes": "Ä; à la carte\nsecond line"});
+    assert_eq!(program.post("/sources", &source).await.status, 201);
+    let browser = desk.browser("brewer").await;
+    let response = browser
+        .request("GET", "/record.csv?kind=source")
+        .send()
+        .await
+        .unwrap();
+    let header = |name: &str| response.headers()[name].to_str().unwrap().to_owned();
+    assert_eq!(header("content-type"), "text/csv; charset=utf-8");
+    assert!(header("content-disposition").starts_with("attachment; filename=\"record-book-20"));
+    let bytes = response.bytes().await.unwrap();
+    assert_eq!(&bytes[..3], b"\xef\xbb\xbf");
+    let text = std::str::from_utf8(&bytes[3..]).unwrap();
+    assert!(
+        text.starts_with("\"entry\",\"at\",\"local_time\","),
+        "{text}"
+    );
+    assert!(text.contains("\r\n"), "{text}");
+    let mut table = csv::Reader::from_reader(&bytes[3..]);
+    let heads = table.headers().unwrap().clone();
+    let place = |name: &str| heads.iter().position(|head| head == name).unwrap();
+    let rows: Vec<csv::StringRecord> = table.records().map(Result::unwrap).collect();
+    assert!(
+        rows.iter()
+            .all(|row| row[place("subject_name")] == format!("'{name}"))
+    );
+    let value = |name: &str| {
+        let found = rows.iter().find(|row| &row[place("value")] == name);
+        found.map(|row| row[place("after")].to_owned()).unwrap()
+    };
+    assert_eq!(value("name"), format!("'{name}"));
+    assert_eq!(value("notes"), "Ä; à la carte\nsecond line");
+    // The API sends the same table without the mark of spreadsheets.
+    let request = program
+        .request("GET", "/record?kind=source")
+        .header("accept", "text/csv");
+    let sent = request.send().await.unwrap().bytes().await.unwrap();
+    assert_eq!(sent, bytes[3..]);
+    let stranger = desk.stranger().open("/record.csv").await;
+    assert_eq!(stranger.path, "/sign-in");
+}
+
+#[tokio::test]
+async fn a_table_of_more_entries_than_it_takes_says_so_and_where_the_next_begins() {
+    let desk = Desk::start().await;
+    fill(&desk, 12_000).await;
+    let browser = desk.browser("qa").await;
+    let page = browser.open("/record?kind=probe").await;
+    assert!(
+        page.words()
+            .contains("the newest 10000 of these 12000 entries"),
+        "{}",
+        page.words()
+    );
+    let response = browser
+        .request("GET", "/record.csv?kind=probe")
+        .send()
+        .await
+        .unwrap();
+    let name = response.headers()["content-disposition"]
+        .to_str()
+        .unwrap()
+        .to_owned();
+    assert!(name.contains("newest-10000-of-12000.csv"), "{name}");
+    let program = desk.full_program("qa").await;
+    let rows = async |path: &str| {
+        let request = program.request("GET", path).header("accept", "text/csv");
+        let response = request.send().await.unwrap();
+        let link = response
+            .headers()
+            .get("link")
+            .map(|it| it.to_str().unwrap().to_owned());
+        (response.text().await.unwrap().lines().count() - 1, link)
+    };
+    let (first, link) = rows("/record?kind=probe").await;
+    let link = link.unwrap();
+    let next = link
+        .trim_start_matches("</api/v1")
+        .split('>')
+        .next()
+        .unwrap();
+    let (second, end) = rows(next).await;
+    assert_eq!((first, second, end), (10_000, 2_000, None));
+}
+
+/// Writes entries straight into the book, about a hundred batches.
+async fn fill(desk: &Desk, count: i64) {
+    let mut tx = desk.app.db.begin_unkeyed().await.unwrap();
+    for number in 0..count {
+        let seq = sqlx::query(
+            "INSERT INTO record_entries (at, member_name, action, subject_kind, subject_id, subject_name, before, after)
+             VALUES ('2026-01-01T00:00:00.000Z', 'Probe', 'changed', 'probe', ?, 'probe', '{\"a\": 1}', '{\"a\": -0.5}')",
+        )
+        .bind(number.to_string())
+        .execute(&mut *tx)
+        .await
+        .unwrap()
+        .last_insert_rowid();
+        sqlx::query("INSERT INTO record_links (kind, id, seq) VALUES ('batch', ?, ?)")
+            .bind(format!("probe {}", number % 100))
+            .bind(seq)
+            .execute(&mut *tx)
+            .await
+            .unwrap();
+    }
+    tx.commit().await.unwrap();
+}
