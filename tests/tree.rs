@@ -97,7 +97,10 @@ fn every_template_and_asset_is_used() {
             code.contains(&format!("\"{name}\""))
         } else {
             // The notices beside the vendored reader of the API are there to be read.
-            name.starts_with("assets/api-reader/") || code.contains(&format!("/{name}"))
+            // The worker is served at the root.
+            name.starts_with("assets/api-reader/")
+                || code.contains(&format!("/{name}"))
+                || name == "assets/service-worker.js"
         };
         assert!(used, "nothing uses {file}");
     }

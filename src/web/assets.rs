@@ -2,7 +2,7 @@
 
 use axum::Router;
 use axum::extract::Path;
-use axum::http::{StatusCode, header};
+use axum::http::{HeaderValue, StatusCode, header};
 use axum::response::{IntoResponse, Response};
 use axum::routing::get;
 use rust_embed::RustEmbed;
@@ -13,9 +13,21 @@ use super::App;
 #[folder = "templates/assets/"]
 struct Assets;
 
-/// Everything under `/assets`.
+/// Everything under `/assets`, and the service worker, which has a say only in what lies
+/// below its own address.
 pub fn routes() -> Router<App> {
-    Router::new().route("/assets/{*path}", get(asset))
+    Router::new()
+        .route("/assets/{*path}", get(asset))
+        .route("/service-worker.js", get(service_worker))
+}
+
+/// Asked for anew each time, so that no tablet is held by an old one.
+async fn service_worker() -> Response {
+    let mut response = asset(Path("service-worker.js".into())).await;
+    response
+        .headers_mut()
+        .insert(header::CACHE_CONTROL, HeaderValue::from_static("no-cache"));
+    response
 }
 
 async fn asset(Path(path): Path<String>) -> Response {

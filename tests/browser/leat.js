@@ -21,7 +21,33 @@ export const PASSWORD = "open the sluice";
 /** Starts the program. `demo` fills it with the invented brewery. */
 export async function startLeat({ demo = false } = {}) {
   const folder = mkdtempSync(path.join(tmpdir(), "leat-browser-"));
-  const asked = ["--database", path.join(folder, "leat.sqlite"), "--listen", "127.0.0.1:0", "--log", "info"];
+  const database = path.join(folder, "leat.sqlite");
+  let running = await run(database, "127.0.0.1:0", demo);
+  const { address } = running;
+  return {
+    address,
+    /** The address that makes the first account, as the program printed it. */
+    async firstAccount() {
+      for (let tries = 0; tries < 100; tries += 1) {
+        const found = running.said().match(/http:\/\/\S+\/first-account\?token=[\w-]+/);
+        if (found) return found[0];
+        await new Promise((later) => setTimeout(later, 50));
+      }
+      throw new Error(`No address for the first account was printed:\n${running.said()}`);
+    },
+    /** Ends the program in the middle of whatever it does. */
+    kill: () => running.end("SIGKILL"),
+    /** Starts it again on the same database and port. */
+    async startAgain() { running = await run(database, new URL(address).host, demo); },
+    async stop() {
+      await running.end("SIGTERM");
+      rmSync(folder, { recursive: true, force: true });
+    },
+  };
+}
+
+async function run(database, listen, demo) {
+  const asked = ["--database", database, "--listen", listen, "--log", "info"];
   if (demo) asked.push("--demo");
   const leat = spawn(program, asked, { stdio: ["ignore", "ignore", "pipe"], env: { ...process.env, NO_COLOR: "1" } });
   let said = "";
@@ -39,34 +65,35 @@ export async function startLeat({ demo = false } = {}) {
   });
   return {
     address,
-    /** The address that makes the first account, as the program printed it. */
-    async firstAccount() {
-      for (let tries = 0; tries < 100; tries += 1) {
-        const found = said.match(/http:\/\/\S+\/first-account\?token=[\w-]+/);
-        if (found) return found[0];
-        await new Promise((later) => setTimeout(later, 50));
-      }
-      throw new Error(`No address for the first account was printed:\n${said}`);
-    },
-    async stop() {
+    said: () => said,
+    async end(signal) {
+      if (leat.exitCode !== null || leat.signalCode) return;
       leat.removeAllListeners("exit");
       const ended = new Promise((done) => leat.once("exit", done));
-      leat.kill("SIGTERM");
+      leat.kill(signal);
       await ended;
-      rmSync(folder, { recursive: true, force: true });
     },
   };
 }
 
 /** Debian's Chromium, or whichever is on the path; CHROMIUM names another. */
-export async function startBrowser() {
+function chromiumProgram() {
   const names = ["chromium", "chromium-browser", "google-chrome"];
   const places = (process.env.PATH || "").split(path.delimiter).flatMap((place) => names.map((name) => path.join(place, name)));
   const executablePath = process.env.CHROMIUM || places.find((place) => {
     try { accessSync(place, constants.X_OK); return true; } catch { return false; }
   });
   assert.ok(executablePath, "No Chromium was found; set CHROMIUM to its path");
-  return chromium.launch({ executablePath, args: FLAGS });
+  return executablePath;
+}
+
+export function startBrowser() {
+  return chromium.launch({ executablePath: chromiumProgram(), args: FLAGS });
+}
+
+/** A browser that keeps what it knows in this folder, as one on a tablet does. */
+export function startTablet(folder, options) {
+  return chromium.launchPersistentContext(folder, { executablePath: chromiumProgram(), args: FLAGS, ...options });
 }
 
 /**
@@ -74,7 +101,7 @@ export async function startBrowser() {
  * `complaints` is for tests that expect some.
  */
 export async function openWindow(browser, leat, options = {}) {
-  const context = await browser.newContext({ baseURL: leat.address, viewport: { width: 1280, height: 800 }, reducedMotion: "reduce", ...options });
+  const context = await browser.newContext({ baseURL: leat.address, viewport: { width: 1280, height: 800 }, reducedMotion: "reduce", serviceWorkers: "block", ...options });
   context.setDefaultTimeout(15_000);
   const complaints = [];
   context.on("request", (request) => {

@@ -123,7 +123,7 @@ async fn a_refused_tick_is_told_why_and_may_be_mended_under_its_own_key() {
 }
 
 #[tokio::test]
-async fn only_the_weigh_out_may_be_kept_by_a_tablet() {
+async fn only_the_weigh_out_may_be_kept_by_a_tablet_and_its_worker_comes_from_the_root() {
     let house = Brewhouse::build().await;
     let id = house.approved("26-604").await;
     let brewer = house.desk.browser("brewer").await;
@@ -138,6 +138,38 @@ async fn only_the_weigh_out_may_be_kept_by_a_tablet() {
         assert_eq!(headers.contains_key("x-leat-keep"), kept, "{path}");
         assert_eq!(headers[header::CACHE_CONTROL], "no-store", "{path}");
     }
+    let stranger = house.desk.stranger();
+    let worker = stranger.request("GET", "/service-worker.js").send().await;
+    let worker = worker.unwrap();
+    assert_eq!(worker.status(), StatusCode::OK);
+    assert_eq!(worker.headers()[header::CACHE_CONTROL], "no-cache");
+    let kind = worker.headers()[header::CONTENT_TYPE].to_str().unwrap();
+    assert!(kind.starts_with("text/javascript"), "{kind}");
+    // What it keeps for pages without network is there to be kept.
+    let script = worker.text().await.unwrap();
+    let named: Vec<&str> = script
+        .split('"')
+        .filter(|text| text.starts_with("/assets/") && text.contains('.'))
+        .collect();
+    assert!(named.len() > 3, "{named:?}");
+    let of_pages = assets_of(&brewer.open("/").await);
+    for asset in named.iter().map(|name| (*name).to_owned()).chain(of_pages) {
+        let answer = stranger.request("GET", &asset).send().await.unwrap();
+        assert_eq!(answer.status(), StatusCode::OK, "{asset}");
+        let kept = named.contains(&asset.as_str());
+        assert!(kept, "the worker does not keep {asset}");
+    }
+}
+
+/// Scripts and style sheets of a page.
+fn assets_of(page: &Seen) -> Vec<String> {
+    let html = page.html();
+    let links = scraper::Selector::parse("script[src], link[rel=stylesheet]").unwrap();
+    let address = |element: scraper::ElementRef<'_>| {
+        let value = element.value();
+        value.attr("src").or(value.attr("href")).map(str::to_owned)
+    };
+    html.select(&links).filter_map(address).collect()
 }
 
 #[tokio::test]
