@@ -15,6 +15,8 @@ pub mod entered;
 pub mod operations;
 pub mod pages;
 pub mod store;
+mod trend;
+pub mod words;
 
 /// The pH at which the doubt of a reading is told: that of a mash.
 pub const QUOTED_PH: Ph = Ph::constant(5.4);

@@ -65,11 +65,22 @@ pub async fn now(db: &Db, by: &Member, id: MeterId) -> Result<(Meter, Standing),
 
 /// The meters in use by name, and what a reading of each taken at `at` is worth.
 pub async fn standings(db: &Db, by: &Member, at: UtcTime) -> Result<Vec<(Meter, Standing)>, Error> {
+    let mut standings = all_standings(db, by, at).await?;
+    standings.retain(|(meter, _)| meter.in_use);
+    Ok(standings)
+}
+
+/// The same with the meters that are out of use.
+pub async fn all_standings(
+    db: &Db,
+    by: &Member,
+    at: UtcTime,
+) -> Result<Vec<(Meter, Standing)>, Error> {
     by.may(Permission::Read)?;
     let mut snapshot = db.snapshot().await?;
     let meters = store::list(&mut snapshot).await?;
     let mut standings = Vec::with_capacity(meters.len());
-    for meter in meters.into_iter().filter(|meter| meter.in_use) {
+    for meter in meters {
         let last = store::last(&mut snapshot, meter.id, at).await?;
         let standing = Standing::of(&meter, last.as_ref(), at);
         standings.push((meter, standing));

@@ -10,7 +10,7 @@ use axum::routing::{get, post};
 use chemistry::report::{Analyte, Verdict, WaterKind};
 
 use super::api::SourceBody;
-use super::trend::{self, Trend, bare, capital, doubt};
+use super::trend::{self, bare, capital, doubt};
 use super::water_tests::pages::{TestRow, verdict_badge};
 use super::water_tests::{WaterTest, operations as tests};
 use super::{
@@ -25,6 +25,7 @@ use crate::people::Permission;
 use crate::record;
 use crate::record::pages::Line;
 use crate::web::App;
+use crate::web::chart::Trend;
 use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
 use crate::web::format;

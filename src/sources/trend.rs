@@ -7,39 +7,8 @@ use super::todays_water::{self, Seen};
 use super::water_tests::WaterTest;
 use super::{TodaysFigure, days_between};
 use crate::error::Error;
+use crate::web::chart::{Level, Mark, Trend, TrendPoint};
 use crate::web::format;
-
-/// A text at a place across the drawing, percent of its width.
-pub(super) struct Mark {
-    pub(super) x: f64,
-    pub(super) text: String,
-}
-
-/// A line across the drawing, percent of its height from the top.
-pub(super) struct Level {
-    pub(super) y: f64,
-    pub(super) text: String,
-}
-
-/// One test.
-pub(super) struct TrendPoint {
-    pub(super) x: f64,
-    pub(super) y: f64,
-    pub(super) top: f64,
-    pub(super) height: f64,
-    pub(super) state: &'static str,
-    pub(super) text: String,
-}
-
-/// What `parts/chart.html` draws.
-pub(super) struct Trend {
-    pub(super) path: String,
-    pub(super) centre: Option<Level>,
-    pub(super) limits: Vec<Level>,
-    pub(super) points: Vec<TrendPoint>,
-    pub(super) dates: Vec<Mark>,
-    pub(super) text: String,
-}
 
 /// A figure with its unit, rounded for reading.
 pub(super) fn amount(analyte: Analyte, value: f64) -> String {

@@ -151,6 +151,49 @@ pub struct IntervalBar {
     pub text: String,
 }
 
+/// A line across a drawing.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Level {
+    /// Where, per cent from the top.
+    pub y: f64,
+    /// What stands beside it.
+    pub text: String,
+}
+
+/// One moment of a trend.
+#[derive(Clone, Debug, PartialEq)]
+pub struct TrendPoint {
+    /// Where, per cent from the left.
+    pub x: f64,
+    /// Where, per cent from the top.
+    pub y: f64,
+    /// The upper end of its doubt, per cent from the top.
+    pub top: f64,
+    /// How tall its doubt is, per cent.
+    pub height: f64,
+    /// `plain`, `signal` or `left-out`.
+    pub state: &'static str,
+    /// When and how much.
+    pub text: String,
+}
+
+/// One figure through time.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Trend {
+    /// The line through the points that count, as SVG takes it.
+    pub path: String,
+    /// The level it is taken to be at.
+    pub centre: Option<Level>,
+    /// Other levels worth a line.
+    pub limits: Vec<Level>,
+    /// The points.
+    pub points: Vec<TrendPoint>,
+    /// The scale below.
+    pub dates: Vec<Mark>,
+    /// All of it in a sentence.
+    pub text: String,
+}
+
 /// One part of a doubt.
 #[derive(Clone, Debug, PartialEq)]
 pub struct DoubtShare {

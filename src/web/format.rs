@@ -110,6 +110,7 @@ pub fn done_sentence(key: &str) -> Option<&'static str> {
         "taken_back" => "Taken back: that line is not in.",
         "dosed" => "Saved: that dose is in.",
         "measured" => "The reading is saved.",
+        "calibrated" => "The calibration is saved.",
         "closed" => "The batch is closed.",
         "password" => "The password is changed. Sign in with it from now on.",
         "revoked" => "Revoked. It no longer opens anything.",
