@@ -29,6 +29,8 @@ pub struct LivedIn {
     pub dose: String,
     pub dosed: String,
     pub check: String,
+    pub meter: String,
+    pub calibration: String,
 }
 
 fn first(list: &Value) -> String {
@@ -75,6 +77,11 @@ impl LivedIn {
             .post(&format!("/plans/{closed}/closing"), &json!({}))
             .await;
         assert_eq!(closing.status, 201, "{:?}", closing.body);
+        let meter =
+            json!({"name": "Bench meter", "kind": "bench", "compensated": true, "in_use": true});
+        let meter = made(&program.post("/meters", &meter).await);
+        let calibrations = format!("/meters/{meter}/calibrations");
+        let calibration = made(&program.post(&calibrations, &calibration()).await);
         Self {
             house,
             material,
@@ -88,6 +95,8 @@ impl LivedIn {
             dose,
             dosed,
             check,
+            meter,
+            calibration,
         }
     }
 
@@ -121,6 +130,17 @@ pub fn titration() -> Value {
         "jars": [
             {"acid_ml": 0, "ph": 5.80}, {"acid_ml": 3.7, "ph": 5.60}, {"acid_ml": 7.5, "ph": 5.40},
             {"acid_ml": 11.6, "ph": 5.20}, {"base_ml": 3.7, "ph": 6.00},
+        ],
+    })
+}
+
+/// Two fresh buffers in a good electrode; made up.
+pub fn calibration() -> Value {
+    json!({
+        "method": "millivolts", "temperature_c": 20,
+        "buffers": [
+            {"buffer": "technical_7", "lot": "B-7", "reading_mv": -5},
+            {"buffer": "technical_4", "lot": "B-4", "use_by": "2030-01-01", "reading_mv": 165},
         ],
     })
 }

@@ -15,6 +15,7 @@ mod desk;
 mod help;
 mod hostile;
 mod malts;
+mod meters;
 mod people;
 mod plans;
 mod program;

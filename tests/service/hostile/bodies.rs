@@ -5,7 +5,7 @@ use std::collections::BTreeSet;
 use serde_json::{Value, json};
 
 use super::description::{Description, Operation};
-use super::{LivedIn, long, titration};
+use super::{LivedIn, calibration, long, titration};
 use crate::brewhouse::hard_water;
 use crate::desk::Answer;
 
@@ -17,6 +17,7 @@ pub fn address(lived: &LivedIn, operation: &Operation) -> String {
         "beers" => &lived.house.beer,
         "malts" => &lived.malt,
         "materials" => &lived.material,
+        "meters" => &lived.meter,
         "sources" => &lived.house.source,
         "water-tests" => &lived.water_test,
         _ if path.ends_with("/approval") && !post => &lived.approved,
@@ -32,6 +33,7 @@ pub fn address(lived: &LivedIn, operation: &Operation) -> String {
     path.replace("{id}", id)
         .replace("{lot_id}", lot)
         .replace("{titration_id}", &lived.titration)
+        .replace("{calibration_id}", &lived.calibration)
         .replace("{check_id}", &lived.check)
         .replace("{dose_id}", &lived.dose)
 }
@@ -45,6 +47,8 @@ pub async fn good(lived: &LivedIn, operation: &Operation) -> Value {
         "/beers" => kept(&format!("/beers/{}", lived.house.beer)).await,
         "/malts" => kept(&format!("/malts/{}", lived.malt)).await,
         "/materials" => kept(&format!("/materials/{}", lived.material)).await,
+        "/meters" => kept(&format!("/meters/{}", lived.meter)).await,
+        "/meters/{id}/calibrations" => calibration(),
         "/sources" => kept(&format!("/sources/{}", lived.house.source)).await,
         "/malts/{id}/lots" => kept(&format!("{here}/{}", lived.malt_lot)).await,
         "/materials/{id}/lots" => kept(&format!("{here}/{}", lived.material_lot)).await,

@@ -9,8 +9,8 @@ use super::description::Description;
 use super::{LivedIn, forms};
 
 /// The least role and the scope that each operation of the API asks for, as README and
-/// help tell them: a brewer plans, weighs and reads; QA also enters tests, keeps sources
-/// and lots and approves; a manager also keeps beers, malts and the shelf. No token
+/// help tell them: a brewer plans, weighs and reads; QA also enters tests, keeps sources,
+/// meters and lots and approves; a manager also keeps beers, malts and the shelf. No token
 /// changes settings.
 fn needed(method: &str, path: &str) -> Option<(usize, Vec<Scope>)> {
     const BREWER: usize = 0;
@@ -23,6 +23,8 @@ fn needed(method: &str, path: &str) -> Option<(usize, Vec<Scope>)> {
     let (role, scope) = match first {
         "settings" => return None,
         "sources" | "water-tests" => (QA, Scope::Tests),
+        "meters" if path.contains("/calibrations") => (BREWER, Scope::Readings),
+        "meters" => (QA, Scope::Readings),
         "malts" | "materials" if path.contains("/lots") => (QA, Scope::Plans),
         "malts" | "materials" | "beers" => (MANAGER, Scope::Plans),
         _ if path.contains("/doses/") || path.contains("/mash-checks") => (BREWER, Scope::Readings),
@@ -108,6 +110,7 @@ fn least(action: &str) -> usize {
         path if path.starts_with("/malts") || path.starts_with("/shelf") => {
             if path.contains("/lots") { 1 } else { 2 }
         }
+        path if path.starts_with("/meters") => usize::from(!path.contains("/calibrations")),
         path if path.starts_with("/sources") || path.starts_with("/water-tests") => 1,
         path if path.contains("/approval") => 1,
         _ => 0,
