@@ -80,7 +80,9 @@ impl From<Entry> for EntryBody {
 
 /// The endpoints.
 pub fn routes() -> OpenApiRouter<App> {
-    OpenApiRouter::new().routes(routes!(list))
+    OpenApiRouter::new()
+        .routes(routes!(list))
+        .merge(super::trace::api::routes())
 }
 
 /// The record book, newest first. With `Accept: text/csv` as a table, one line for each

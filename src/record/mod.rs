@@ -20,6 +20,7 @@ pub mod filter;
 pub mod operations;
 pub mod pages;
 pub mod store;
+pub mod trace;
 
 /// What an operation did, ready to be written down.
 #[derive(Clone, Debug)]

@@ -28,6 +28,7 @@ pub fn routes() -> Router<App> {
     Router::new()
         .route("/record", get(show))
         .route("/record.csv", get(download))
+        .merge(super::trace::pages::routes())
 }
 
 #[derive(Template, WebTemplate)]

@@ -3,7 +3,7 @@
 use reqwest::StatusCode;
 use serde_json::json;
 
-use crate::brewhouse::Brewhouse;
+use crate::brewhouse::{Brewhouse, made};
 use crate::desk::{Desk, Program};
 
 /// The entries that fit a query of the API, as “action kind”.
@@ -258,4 +258,138 @@ async fn fill(desk: &Desk, count: i64) {
             .unwrap();
     }
     tx.commit().await.unwrap();
+}
+
+/// A lot of the named material, entered through the API: the material and the lot.
+async fn lot_of(house: &Brewhouse, name: &str, code: &str) -> (String, String) {
+    let materials = house.manager.get("/materials").await.body;
+    let mut items = materials["items"].as_array().unwrap().iter();
+    let material = items.find(|item| item["name"] == name).unwrap();
+    let material = material["id"].as_str().unwrap().to_owned();
+    let lot = json!({"code": code, "received_on": "2026-11-01", "in_use": true});
+    let path = format!("/materials/{material}/lots");
+    let lot = made(&house.manager.post(&path, &lot).await);
+    (material, lot)
+}
+
+#[tokio::test]
+async fn a_lot_leads_to_every_batch_and_a_batch_to_every_lot_test_and_person() {
+    let house = Brewhouse::build().await;
+    let manager = &house.manager;
+    let (acid, lot) = lot_of(&house, "Lactic acid", "LA-2231").await;
+    let malts = manager.get("/malts").await.body;
+    let malt = malts["items"][0]["id"].as_str().unwrap();
+    let malt_lot = json!({"code": "PM-77", "current": true, "in_use": true});
+    let malt_lot = made(
+        &manager
+            .post(&format!("/malts/{malt}/lots"), &malt_lot)
+            .await,
+    );
+    let (first, second) = (
+        house.approved("26-310").await,
+        house.approved("26-311").await,
+    );
+    let brewer = house.desk.full_program("brewer").await;
+    let mut doses = 0;
+    // Picked for the first batch, typed for the second in other letters.
+    for (id, told) in [
+        (&first, json!({"material_lot_id": lot})),
+        (&second, json!({"lot": "la-2231"})),
+    ] {
+        for dose in house.doses(id).await {
+            let mut weighed = if dose["name"] == "Lactic acid" {
+                told.clone()
+            } else {
+                json!({})
+            };
+            weighed["actual"] = dose["planned"].clone();
+            doses += i32::from(dose["name"] == "Lactic acid");
+            let path = format!("/plans/{id}/doses/{}", dose["id"].as_str().unwrap());
+            let answer = brewer.put(&path, &weighed).await;
+            assert_eq!(answer.status, 200, "{:?}", answer.body);
+        }
+    }
+    let batches = |answer: &crate::desk::Answer| -> Vec<String> {
+        assert_eq!(answer.status, 200, "{:?}", answer.body);
+        let items = answer.body.as_array().unwrap().iter();
+        let mut batches: Vec<String> = items
+            .map(|item| item["batch"].as_str().unwrap().to_owned())
+            .collect();
+        batches.sort();
+        batches
+    };
+    let path = format!("/materials/{acid}/lots/{lot}/batches");
+    let went = manager.get(&path).await;
+    assert_eq!(batches(&went).len(), usize::try_from(doses).unwrap());
+    assert!(
+        batches(&went).contains(&"26-310".to_owned())
+            && batches(&went).contains(&"26-311".to_owned())
+    );
+    assert_eq!(went.body[0]["weighed_by"], "Bo Brewer");
+    let went = manager
+        .get(&format!("/malts/{malt}/lots/{malt_lot}/batches"))
+        .await;
+    assert_eq!(batches(&went), ["26-310", "26-311"]);
+    assert_eq!(went.body[0]["kilograms"], 400.0);
+    let trace = manager.get(&format!("/plans/{first}/trace")).await.body;
+    let of = |list: &str, field: &str| -> Vec<String> {
+        let items = trace[list].as_array().unwrap().iter();
+        items
+            .map(|item| item[field].as_str().unwrap_or("").to_owned())
+            .collect()
+    };
+    assert!(of("doses", "material_lot_id").contains(&lot), "{trace}");
+    assert_eq!(of("malts", "malt_lot_id"), std::slice::from_ref(&malt_lot));
+    assert_eq!(of("water_tests", "laboratory"), ["Fen Analytical"]);
+    assert_eq!(of("people", "name"), ["Mara Manager", "Bo Brewer"]);
+    let test = trace["water_tests"][0]["water_test_id"].as_str().unwrap();
+    let rests = manager.get(&format!("/water-tests/{test}/batches")).await;
+    assert_eq!(batches(&rests), ["26-310", "26-311"]);
+    assert_eq!(rests.body[0]["share"], 1.0);
+    // A draft rests on the test as well; a withdrawn one does not.
+    let draft = house.draft("26-312").await;
+    let rests = manager.get(&format!("/water-tests/{test}/batches")).await;
+    assert_eq!(batches(&rests), ["26-310", "26-311", "26-312"]);
+    let gone = json!({"reason": "Not brewed."});
+    let withdrawn = manager
+        .post(&format!("/plans/{draft}/withdrawal"), &gone)
+        .await;
+    assert_eq!(withdrawn.status, 201, "{:?}", withdrawn.body);
+    // A revision takes its plan's place: the batch is told once.
+    let revision = manager
+        .post(&format!("/plans/{first}/revisions"), &json!({}))
+        .await;
+    let revision = made(&revision);
+    let approved = manager
+        .post(&format!("/plans/{revision}/approval"), &json!({}))
+        .await;
+    assert_eq!(approved.status, 201, "{:?}", approved.body);
+    let rests = manager.get(&format!("/water-tests/{test}/batches")).await;
+    assert_eq!(batches(&rests), ["26-310", "26-311"]);
+    let went = manager.get(&path).await;
+    assert_eq!(batches(&went).len(), usize::try_from(doses).unwrap());
+    // The pages say the same, and the book is searched by the lot's code.
+    let page = house.desk.browser("brewer").await;
+    for (path, words) in [
+        (format!("/shelf/{acid}/lots/{lot}/batches"), "26-311"),
+        (format!("/malts/{malt}/lots/{malt_lot}/batches"), "400 kg"),
+        (
+            format!("/water-tests/{test}/batches"),
+            "100 % of the liquor",
+        ),
+    ] {
+        let seen = page.open(&path).await;
+        assert_eq!(seen.status, StatusCode::OK, "{path}");
+        assert!(seen.words().contains(words), "{}", seen.words());
+    }
+    let of_lot = entries(manager, "lot=pm-77").await;
+    assert!(
+        of_lot.contains(&"created malt lot".to_owned()),
+        "{of_lot:?}"
+    );
+    assert!(of_lot.contains(&"approved plan".to_owned()), "{of_lot:?}");
+    let nobody = manager
+        .get(&format!("/materials/{acid}/lots/{malt_lot}/batches"))
+        .await;
+    assert_eq!(nobody.status, 404);
 }
