@@ -484,6 +484,23 @@ pub(super) fn batch(plan: &Plan) -> Vec<(&'static str, String)> {
     ]
 }
 
+/// What an entry about a dose is about: the batch, the material, the lot and who stood by.
+pub(super) fn about_dose(plan: &Plan, dose: &Dose) -> Vec<(&'static str, String)> {
+    let mut about = batch(plan);
+    let material = plan.inputs.shelf.get(dose.material).and_then(|it| it.id);
+    about.extend(material.map(|id| ("material", id.to_string())));
+    if let Some(weighed) = &dose.weighed {
+        about.extend(weighed.lot.id.map(|id| ("material lot", id.to_string())));
+        about.extend(
+            weighed
+                .witness
+                .iter()
+                .map(|it| ("account", it.id.to_string())),
+        );
+    }
+    about
+}
+
 /// A plan as the record book writes it.
 pub(super) fn describe(plan: &Plan) -> serde_json::Value {
     let doses: Vec<serde_json::Value> = plan

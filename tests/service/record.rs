@@ -382,6 +382,8 @@ async fn a_lot_leads_to_every_batch_and_a_batch_to_every_lot_test_and_person() {
         assert_eq!(seen.status, StatusCode::OK, "{path}");
         assert!(seen.words().contains(words), "{}", seen.words());
     }
+    let of_lot = entries(manager, "lot=LA-2231&kind=dose").await;
+    assert_eq!(of_lot.len(), usize::try_from(doses).unwrap(), "{of_lot:?}");
     let of_lot = entries(manager, "lot=pm-77").await;
     assert!(
         of_lot.contains(&"created malt lot".to_owned()),

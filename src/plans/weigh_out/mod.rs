@@ -2,7 +2,7 @@
 
 use chemistry::quantity::DoseAmount;
 
-use super::operations::{batch, title, weighed_json};
+use super::operations::{about_dose, title, weighed_json};
 use super::{Dose, Plan, State, Weighed, store};
 use crate::brewery;
 use crate::db::Db;
@@ -75,7 +75,9 @@ pub async fn weigh(
         Some(planned),
         Some(after),
     );
-    let change = change.because(new.reason).about_each(batch(&plan));
+    let change = change
+        .because(new.reason)
+        .about_each(about_dose(&plan, &dose));
     record::append(&mut tx, by, change).await?;
     let after = settle(&mut tx, &plan).await?;
     tx.commit().await?;
@@ -113,7 +115,11 @@ pub async fn take_back(
         Some(before),
         None,
     );
-    let change = change.because(Some(reason)).about_each(batch(&plan));
+    // As it was: with the lot it was of.
+    let was = find(&plan, dose_id)?;
+    let change = change
+        .because(Some(reason))
+        .about_each(about_dose(&plan, was));
     record::append(&mut tx, by, change).await?;
     let after = settle(&mut tx, &plan).await?;
     tx.commit().await?;
