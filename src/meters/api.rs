@@ -21,7 +21,7 @@ use crate::web::problem::Problem;
 
 /// What a reading taken with a meter now is worth.
 #[derive(Debug, Serialize, utoipa::ToSchema)]
-pub struct StandingBody {
+pub struct MeterStandingBody {
     /// The last calibration that was not withdrawn.
     calibration_id: Option<CalibrationId>,
     /// When that was done.
@@ -38,7 +38,7 @@ pub struct StandingBody {
     slope_percent: Option<f64>,
 }
 
-impl From<&Standing> for StandingBody {
+impl From<&Standing> for MeterStandingBody {
     fn from(standing: &Standing) -> Self {
         Self {
             calibration_id: standing.calibration_id,
@@ -81,7 +81,7 @@ pub struct MeterNowBody {
     #[serde(flatten)]
     meter: MeterBody,
     /// What a reading taken now is worth.
-    standing: StandingBody,
+    standing: MeterStandingBody,
 }
 
 /// A calibration of a pH meter.
