@@ -1,6 +1,6 @@
 // What the queue says on a page: in the band of every page, above the weigh-out, beside each line. Words only; queue.js
 // decides.
-const clock = (at) => new Date(at).toLocaleTimeString([], { hour: "2-digit", minute: "2-digit" });
+const clock = (at) => new Date(at).toLocaleTimeString([], { hour: "2-digit", minute: "2-digit", hourCycle: "h23" });
 const count = (ticks) => (ticks.length === 1 ? "1 tick" : `${ticks.length} ticks`);
 const wait = (ticks) => `${count(ticks)} ${ticks.length === 1 ? "waits" : "wait"} on this tablet`;
 /** An answer usually comes before anybody could read that it is awaited. */
@@ -53,21 +53,26 @@ export function toBeSeen(box, seen) {
 
 const STATES = { waiting: "waits", saved: "saved", refused: "not accepted" };
 
-/** Marks the lines in the list of lines. `lines`: { id, state, now }. */
+/** Marks the lines in the list of lines, and the stones of the way above. `lines`: { id, state, now }. */
 export function states(lines) {
+  const items = [...document.querySelectorAll("[data-line-state]")];
   for (const { id, state, now } of lines) {
-    for (const item of document.querySelectorAll(`[data-line-state="${CSS.escape(id)}"]`)) {
-      if (state) item.dataset.state = state; else delete item.dataset.state;
-      item.classList.toggle("now", now);
-      if (now) item.setAttribute("aria-current", "step"); else item.removeAttribute("aria-current");
-      const words = item.querySelector(".line-state") ?? item.appendChild(make("span", "line-state"));
-      words.textContent = STATES[state] ?? "";
-    }
+    const item = items.find(({ dataset }) => dataset.lineState === id);
+    if (!item) continue;
+    if (state) item.dataset.state = state; else delete item.dataset.state;
+    item.classList.toggle("now", now);
+    item.classList.toggle("done", ["waiting", "saved"].includes(state));
+    item.classList.toggle("next", !now && ["", "refused"].includes(state));
+    if (now) item.setAttribute("aria-current", "step"); else item.removeAttribute("aria-current");
+    const words = item.querySelector(".line-state") ?? item.appendChild(make("span", "line-state"));
+    words.textContent = STATES[state] ?? (now ? "now" : "");
   }
+  const stones = document.querySelectorAll(".steps li");
+  if (stones.length === items.length) stones.forEach((stone, at) => { stone.className = ["now", "done"].find((name) => items[at].classList.contains(name)) ?? "next"; });
 }
 
 /** One sentence about the ticks of this member, or "". */
-export function sentence(mine, trouble) {
+function sentence(mine, trouble) {
   const waiting = mine.filter(({ state }) => state === "waiting");
   const refused = mine.filter(({ state }) => state === "refused");
   if (trouble === "network" && waiting.length) return `No network: ${wait(waiting)}`;
@@ -85,12 +90,13 @@ function ofOthers(others) {
 }
 
 /** Says on the page, and in its band, how the ticks of this device stand. */
-export function tell(list, { member, trouble, weighing, left, act }) {
+export function tell(list, about) {
+  const { member, trouble, weighing } = about;
   const mine = list.filter((tick) => tick.member === member && tick.state !== "saved");
   const others = list.filter((tick) => tick.member !== member && tick.state === "waiting");
-  const said = [sentence(mine, trouble), others.length ? ofOthers(others) : ""].filter(Boolean).join(". ");
-  band(said, mine[0] ?? others[0], trouble);
-  if (weighing) aboutLines(list, { member, trouble, left, act, said });
+  const ofThem = others.length ? ofOthers(others) : "";
+  band([sentence(mine, trouble), ofThem].filter(Boolean).join(". "), mine[0] ?? others[0], trouble);
+  if (weighing) aboutLines(list, about, ofThem);
 }
 
 function band(said, first, trouble) {
@@ -105,14 +111,16 @@ function band(said, first, trouble) {
   if (chip.textContent !== said) chip.textContent = said;
 }
 
-function aboutLines(list, { member, trouble, left, act, said }) {
-  const here = list.filter(({ page }) => page === location.pathname);
-  const waiting = here.filter(({ state }) => state === "waiting");
+function aboutLines(list, { member, trouble, left, act }, others) {
+  // A refused line that is on the page says so itself.
+  const here = list.filter(({ page, state, line }) => page === location.pathname && state !== "saved" && !(state === "refused" && document.querySelector(`[data-line="${CSS.escape(line)}"]`)));
+  const said = sentence(here.filter((tick) => tick.member === member), trouble);
   const parts = [];
-  if (document.body.dataset.kept) parts.push(`Kept copy from ${clock(document.body.dataset.kept)}, because there is no network: what others weighed in since is not on it.`);
-  if (trouble === "network") parts.push(said || "No network.", "Go on weighing: what you tick is kept on this tablet and sent when the network is back.");
+  if (document.body.dataset.kept) parts.push(`Kept copy from ${clock(document.body.dataset.kept)}: what others weighed in since is not on it`);
+  if (trouble === "network") parts.push(said || "No network", "Go on weighing: what you tick is sent when the network is back");
   else if (said) parts.push(said);
-  if (!left) parts.push(waiting.length ? "Every line is ticked. Leave this page open until all are saved." : "Every line is ticked.");
+  if (others) parts.push(others);
+  if (!left) parts.push("Every line is ticked");
   let box = document.querySelector(".queue-notice");
   if (!parts.length) { box?.remove(); return; }
   if (!box) {
@@ -121,16 +129,16 @@ function aboutLines(list, { member, trouble, left, act, said }) {
     document.querySelector("main h1")?.after(box);
   }
   box.classList.toggle("doubt", Boolean(trouble));
-  const text = parts.map((part) => (part.endsWith(".") ? part : `${part}.`)).join(" ");
-  const rows = here.filter(({ state }) => state !== "saved").map((tick) => row(tick, member, act));
+  const text = parts.map((part) => `${part}.`).join(" ");
+  const rows = here.map((tick) => row(tick, member, act));
   // Written anew only when it differs: somebody may be about to touch a button in it.
   const print = text + rows.map((each) => each.textContent).join("|");
   if (box.dataset.print === print) return;
   box.dataset.print = print;
   const open = box.querySelector("details")?.open;
-  const all = make("details", "", "", make("summary", "", `What is not saved yet: ${rows.length}`), make("ul", "row-list", "", ...rows));
+  const all = make("details", "", "", make("summary", "", `Not saved yet: ${rows.length}`), make("ul", "row-list", "", ...rows));
   if (open) all.open = true;
-  box.replaceChildren(make("div", "", "", make("p", "", text), ...(rows.length ? [all] : [])));
+  box.replaceChildren(make("p", "", text), ...(rows.length ? [all] : []));
 }
 
 function row(tick, member, act) {
@@ -138,7 +146,7 @@ function row(tick, member, act) {
   const told = tick.state === "refused" ? `: ${tick.sentence}` : tick.tried ? ". It may have reached the server; that is settled when the network is back." : "";
   const item = make("li", "", "", make("p", "", words + told));
   if (tick.member !== member) return item;
-  if (tick.state === "waiting" && !tick.tried) item.firstChild.append(" ", press("Withdraw", () => act("withdraw", tick)));
-  if (tick.state === "refused" && tick.status !== 422) item.firstChild.append(" ", press("I have seen this", () => act("seen", tick)));
+  if (tick.state === "waiting" && !tick.tried) item.append(press("Withdraw", () => act("withdraw", tick)));
+  if (tick.state === "refused") item.append(press("I have seen this", () => act("seen", tick)));
   return item;
 }

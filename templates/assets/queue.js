@@ -86,7 +86,7 @@ async function tapped(form, line, submitter) {
 function outside(line, data) {
   const { planned, tolerance } = line.dataset;
   const actual = Number(String(data.get("actual") ?? "").trim().replace(",", "."));
-  return Boolean(planned && tolerance) && !data.get("reason") && !(Math.abs(actual - Number(planned)) <= Number(tolerance));
+  return Boolean(planned && tolerance) && !data.get("reason") && !data.get("as_planned") && !(Math.abs(actual - Number(planned)) <= Number(tolerance));
 }
 
 /** Resolves when something came of the tick, or when that takes too long. */
@@ -161,7 +161,8 @@ function show(line, moved = true) {
   for (const other of lines()) other.hidden = other !== line;
   document.querySelector("main")?.classList.toggle("all-ticked", !line);
   for (const words of document.querySelectorAll(".steps-words")) {
-    if (line?.dataset.stepWords) words.textContent = line.dataset.stepWords;
+    if (!line) words.textContent = "Every line is ticked";
+    else if (line.dataset.stepWords) words.textContent = line.dataset.stepWords;
   }
   states(lines().map((each) => ({ id: each.dataset.line, state: stateOf(each), now: each === line })));
   if (!moved || !line || line === was) return;
@@ -206,7 +207,7 @@ async function refuse(line, tick) {
     if (field.matches("[type=checkbox], [type=radio]")) field.checked = typed.getAll(field.name).includes(field.value);
     else field.value = typed.get(field.name);
   }
-  const asked = tick.status === 422 && !tick.fields.some(({ pointer }) => /pin|password|witness/.test(pointer)) ? await question(tick) : null;
+  const asked = tick.status === 422 && !tick.fields.some(({ pointer }) => pointer.startsWith("/second_person")) ? await question(tick) : null;
   if (asked) {
     asked.dataset.refused = tick.key;
     asked.hidden = line.hidden;
