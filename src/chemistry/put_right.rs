@@ -293,15 +293,14 @@ pub fn as_read(mash: &MashInputs, reading: Ph) -> Result<MashInputs, MashError> 
     Ok(moved)
 }
 
-/// Where a mash goes from `reading` when these go in. `mash`: as it was read, without
-/// them.
+/// Where a mash is that was at `reading` as `at_reading` and has become `now` since.
 pub fn expected_after(
-    mash: &MashInputs,
+    at_reading: &MashInputs,
     reading: Estimate<Ph>,
-    since: &[Addition],
+    now: &MashInputs,
 ) -> Result<Estimate<Ph>, MashError> {
-    let mut after = as_read(mash, reading.value)?;
-    after.additions.extend_from_slice(since);
+    let mut after = now.clone();
+    after.offset = as_read(at_reading, reading.value)?.offset;
     let ph = after.predict()?.ph.value;
     let moved = ph.get() - reading.value.get();
     Ok(Estimate::new(
@@ -428,9 +427,12 @@ fn step(
     let cap = DoseAmount::clamped((left / per_unit).min(remedy.cap.get()));
     let (dose, capped) = Remedy { cap, ..remedy }.first_of(full_dose)?;
 
-    let addition = Addition::of("correction", material, dose);
-    let expected_ph = expected_after(situation.mash, reading, std::slice::from_ref(&addition))
-        .map_err(Stop::NoPrediction)?;
+    let mut after = situation.mash.clone();
+    after
+        .additions
+        .push(Addition::of("correction", material, dose));
+    let expected_ph =
+        expected_after(situation.mash, reading, &after).map_err(Stop::NoPrediction)?;
     Ok(FirstStep {
         direction,
         dose,

@@ -134,6 +134,20 @@ impl Stage {
         matches!(self, Self::Mash | Self::FirstRunnings | Self::LastRunnings)
     }
 
+    /// Between these a reading is not mistyped by the look of it alone. Source: assumed;
+    /// wider than anything a brewery pours.
+    #[must_use]
+    pub const fn plausible(self) -> (Ph, Ph) {
+        let (low, high) = match self {
+            Self::Liquor => (3.0, 10.5),
+            Self::Mash | Self::FirstRunnings | Self::LastRunnings => (4.4, 7.0),
+            Self::KettleFull => (4.2, 6.6),
+            Self::EndOfBoil => (4.0, 6.4),
+            Self::EndOfFermentation | Self::Package => (2.8, 5.4),
+        };
+        (Ph::constant(low), Ph::constant(high))
+    }
+
     /// Where the pH should be. The mash and its first runnings have the window of the
     /// beer's spec.
     ///

@@ -12,7 +12,7 @@ use crate::id::{BeerId, PlanId};
 use crate::people::Member;
 use crate::plans::closing::{self, Closing};
 use crate::plans::decisions;
-use crate::plans::mash_checks::{self, NewMashCheck};
+use crate::plans::mash_checks::{self, MeterNamed, NewMashCheck};
 use crate::plans::operations::{self as plans, NewPlan};
 use crate::plans::weigh_out::{self, LotNamed, NewWeighed};
 use crate::plans::{Plan, Stage, compute};
@@ -165,9 +165,14 @@ async fn read(db: &Db, by: &Member, plan: &Plan, off: f64) -> Result<PlanId, Err
         minute: Minutes::constant(14.0),
         ph: Ph::clamped(shown),
         sample: Celsius::constant(20.0),
-        meter: "Bench meter".into(),
-        meter_sd: PhShift::constant(0.03),
+        meter: MeterNamed::Another {
+            name: "Bench meter".into(),
+            sd: PhShift::constant(0.03),
+        },
         meter_checked: true,
+        confirmed: true,
+        wort: None,
+        cast_out: None,
     };
     mash_checks::read(db, by, plan.id, new).await?;
     Ok(plan.id)

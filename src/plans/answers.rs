@@ -3,6 +3,7 @@
 use std::collections::BTreeMap;
 
 use chemistry::plan::{self, Ending, Way};
+use chemistry::quantity::{Litres, Minutes, Ph};
 use chemistry::water::Water;
 use serde::Serialize;
 
@@ -10,7 +11,9 @@ use super::inputs::Inputs;
 use super::operations::Shown;
 use super::store::Listing;
 use super::{Advised, Correction, Deed, Dose, MashCheck, Plan, Prediction, compute, words};
-use crate::id::{BeerId, DoseId, MashCheckId, MaterialLotId, PlanId, UtcTime};
+use crate::id::{
+    BeerId, CalibrationId, DoseId, MashCheckId, MaterialLotId, MeterId, PlanId, UtcTime,
+};
 
 /// The composition of a liquor.
 #[derive(Clone, Debug, Serialize, utoipa::ToSchema)]
@@ -495,16 +498,28 @@ pub struct MashCheckBody {
     stage: &'static str,
     /// When it was entered.
     read_at: UtcTime,
-    /// Minutes since strike.
-    minute: f64,
+    /// Minutes since strike; absent at stages that are not timed so.
+    minute: Option<f64>,
     /// As the meter showed it.
     ph: f64,
     /// Temperature of the sample, °C.
     sample_c: f64,
-    /// Which meter.
+    /// Which meter, by the name of that day.
     meter: String,
-    /// One standard deviation of the meter.
+    /// Which of `/meters`.
+    meter_id: Option<MeterId>,
+    /// The calibration the reading rested on.
+    calibration_id: Option<CalibrationId>,
+    /// One standard deviation of a reading, by that calibration.
     meter_sd: f64,
+    /// Whether the meter was checked in buffer after a surprising reading.
+    meter_checked: bool,
+    /// Whether somebody said that the meter really showed what looked mistyped.
+    confirmed: bool,
+    /// Wort in the kettle, L, where it was told.
+    wort_l: Option<f64>,
+    /// The pH wished for at cast-out, where it was told.
+    cast_out_ph: Option<f64>,
     /// What to do.
     advised: Advised,
     /// By whom.
@@ -519,11 +534,17 @@ impl From<&MashCheck> for MashCheckBody {
             id: check.id,
             stage: check.stage.key(),
             read_at: check.read_at,
-            minute: check.minute.get(),
+            minute: check.since_strike().map(Minutes::get),
             ph: check.ph.get(),
             sample_c: check.sample.get(),
             meter: check.meter.clone(),
+            meter_id: check.meter_id,
+            calibration_id: check.calibration_id,
             meter_sd: check.meter_sd.get(),
+            meter_checked: check.meter_checked,
+            confirmed: check.confirmed,
+            wort_l: check.wort.map(Litres::get),
+            cast_out_ph: check.cast_out.map(Ph::get),
             advised: check.advised.clone(),
             read_by: check.read_by.clone(),
             withdrawn: check.withdrawn.as_ref().map(Into::into),

@@ -3,13 +3,13 @@
 
 use chemistry::material::Vessel;
 use chemistry::plan::{self, Way};
-use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
+use chemistry::quantity::{Celsius, DoseAmount, Fraction, Litres, Minutes, Ph, PhShift};
 use serde::{Deserialize, Serialize};
 
 use super::Stage;
 use super::bodies::InputsBody;
 use super::closing::Closing;
-use super::mash_checks::NewMashCheck;
+use super::mash_checks::{MeterNamed, NewMashCheck};
 use super::operations::{NewPlan, SourceChoice, Treatment};
 use super::weigh_out::{LotNamed, NewWeighed};
 use crate::error::Error;
@@ -285,7 +285,7 @@ pub struct NewMashCheckBody {
     /// `liquor`, `mash`, `first_runnings`, `last_runnings`, `kettle_full`, `end_of_boil`,
     /// `end_of_fermentation` or `package`; the mash when not given.
     pub stage: String,
-    /// Minutes since strike.
+    /// Minutes since strike; needed for the mash, and of the runnings where it is known.
     pub minute: Number,
     /// As the meter showed it.
     #[schema(required = true)]
@@ -293,18 +293,43 @@ pub struct NewMashCheckBody {
     /// Temperature of the sample in the meter's cup, °C.
     #[schema(required = true)]
     pub sample_c: Number,
-    /// Which meter.
+    /// Which meter: an identifier of `/meters`. Its calibration says how far the reading is
+    /// to be believed.
+    pub meter_id: String,
+    /// The name of a meter that is not among them. Nothing is advised on its readings.
     pub meter: String,
-    /// One standard deviation of the meter at its last calibration; 0.03 is assumed when
-    /// not given.
+    /// One standard deviation of a reading of that meter; 0.03 is assumed when not given.
     pub meter_sd: Number,
     /// Whether the meter was checked in buffer after a surprising reading.
     pub meter_checked: Flag,
+    /// Whether the meter really showed what looks mistyped. A reading that looks so is
+    /// refused once, pointing at `ph` or `sample_c`.
+    pub confirmed: Flag,
+    /// Wort in the kettle, L; at `kettle_full` and `end_of_boil` only. The beer of the batch
+    /// is assumed when not given.
+    pub wort_l: Number,
+    /// The pH wished for at cast-out, there too; 5.20 is assumed when not given.
+    pub cast_out_ph: Number,
 }
 
 /// Error of a calibrated meter, cooled sample. Source: assumed, as for
 /// `statistics::learning::CAREFUL_READING`.
 pub const METER_SD: f64 = 0.03;
+
+/// A pH as a meter shows one. A decimal point forgotten is the usual slip.
+fn shown_ph(value: f64) -> Result<Ph, String> {
+    if (0.0..=14.0).contains(&value) {
+        return Ok(Ph::clamped(value));
+    }
+    let rather = [10.0, 100.0, 1000.0]
+        .into_iter()
+        .map(|by| value / by)
+        .find(|ph| (3.0..8.0).contains(ph));
+    Err(match rather {
+        Some(ph) => format!("A pH lies between 0 and 14. Was it {ph}?"),
+        None => "A pH lies between 0 and 14. Read it again".into(),
+    })
+}
 
 impl TryFrom<NewMashCheckBody> for NewMashCheck {
     type Error = Error;
@@ -324,38 +349,69 @@ impl TryFrom<NewMashCheckBody> for NewMashCheck {
         } else {
             Some(Minutes::constant(0.0))
         };
-        let ph = problems.quantity("ph", &body.ph, |value| {
-            if (2.0..=10.0).contains(&value) {
-                Ok(Ph::clamped(value))
-            } else {
-                Err("A mash reads between pH 2 and 10. Read it again")
-            }
-        });
+        let ph = problems.quantity("ph", &body.ph, shown_ph);
         let sample = problems.quantity("sample_c", &body.sample_c, |value| {
             if (0.0..=100.0).contains(&value) {
                 Ok(Celsius::clamped(value))
             } else {
-                Err("Enter 0 to 100 °C")
+                Err(
+                    "A sample lies between freezing and boiling, 0 to 100 °C or 32 to 212 °F. Look which unit the \
+                     thermometer shows",
+                )
             }
         });
-        let meter = problems.optional_text("meter", &body.meter, 80);
-        let meter_sd = problems.optional_quantity("meter_sd", &body.meter_sd, |value| {
+        let meter_id = if body.meter_id.trim().is_empty() {
+            None
+        } else {
+            problems.choice("meter_id", &body.meter_id, |key| key.parse().ok())
+        };
+        let name = problems.optional_text("meter", &body.meter, 80);
+        let sd = problems.optional_quantity("meter_sd", &body.meter_sd, |value| {
             if (0.001..=1.0).contains(&value) {
                 Ok(PhShift::clamped(value))
             } else {
                 Err("Enter 0.001 to 1")
             }
         });
+        let (mut wort, mut cast_out) = (None, None);
+        if matches!(stage, Some(Stage::KettleFull | Stage::EndOfBoil)) {
+            wort = problems.optional_quantity("wort_l", &body.wort_l, |value| {
+                if (1.0..=1e6).contains(&value) {
+                    Ok(Litres::clamped(value))
+                } else {
+                    Err("Enter how much wort is in the kettle, more than nothing")
+                }
+            });
+            cast_out = problems.optional_quantity("cast_out_ph", &body.cast_out_ph, |value| {
+                if (4.0..=6.0).contains(&value) {
+                    Ok(Ph::clamped(value))
+                } else {
+                    Err("Enter a pH from 4 to 6")
+                }
+            });
+        }
         problems.finish()?;
         match (stage, minute, ph, sample) {
             (Some(stage), Some(minute), Some(ph), Some(sample)) => Ok(Self {
                 stage,
-                minute,
+                minute: if stage.timed_from_strike() {
+                    minute
+                } else {
+                    Minutes::constant(0.0)
+                },
                 ph,
                 sample,
-                meter: meter.unwrap_or_default(),
-                meter_sd: meter_sd.unwrap_or(PhShift::constant(METER_SD)),
+                meter: meter_id.map_or_else(
+                    || MeterNamed::Another {
+                        name: name.unwrap_or_default(),
+                        sd: sd.unwrap_or(PhShift::constant(METER_SD)),
+                    },
+                    MeterNamed::Registered,
+                ),
                 meter_checked: body.meter_checked.0,
+                confirmed: body.confirmed.0,
+                wort,
+                cast_out,
             }),
             _ => Err(Error::field("", "Fill in every field.")),
         }

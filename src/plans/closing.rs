@@ -92,7 +92,7 @@ async fn outcome(
     plan: &Plan,
     closing: &Closing,
 ) -> Result<Outcome, Error> {
-    let checks = store::checks(tx, plan.id).await?;
+    let checks = super::mash_checks::store::of_plan(tx, plan.id).await?;
     let usable = |check: &&MashCheck| check.stage == Stage::Mash && check.withdrawn.is_none();
     let check = match closing.mash_check_id {
         Some(id) => Some(

@@ -10,10 +10,12 @@
 //! how a treatment is worked out.
 
 use chemistry::material::{Material, Vessel};
-use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
+use chemistry::quantity::{Celsius, DoseAmount, Fraction, Litres, Minutes, Ph, PhShift};
 use jiff::civil::Date;
 
-use crate::id::{BeerId, DoseId, MashCheckId, MaterialLotId, MemberId, PlanId, UtcTime};
+use crate::id::{
+    BeerId, CalibrationId, DoseId, MashCheckId, MaterialLotId, MemberId, MeterId, PlanId, UtcTime,
+};
 
 pub mod answers;
 pub mod api;
@@ -305,12 +307,22 @@ pub struct MashCheck {
     pub ph: Ph,
     /// Temperature of the sample in the meter's cup.
     pub sample: Celsius,
-    /// Which meter.
+    /// Which meter, by the name of that day.
     pub meter: String,
-    /// One standard deviation of the meter at its last calibration.
+    /// Which of the registered meters.
+    pub meter_id: Option<MeterId>,
+    /// The calibration it rested on.
+    pub calibration_id: Option<CalibrationId>,
+    /// One standard deviation of a reading, as its calibration had it at that moment.
     pub meter_sd: PhShift,
     /// Whether the meter was checked in buffer after a surprising reading.
     pub meter_checked: bool,
+    /// Whether somebody said that the meter really showed what looked mistyped.
+    pub confirmed: bool,
+    /// How much wort there was; at the kettle only, and only where it was told.
+    pub wort: Option<Litres>,
+    /// Where it should be at cast-out, likewise.
+    pub cast_out: Option<Ph>,
     /// What was advised, as it was shown.
     pub advised: Advised,
     /// By whom.
@@ -319,27 +331,75 @@ pub struct MashCheck {
     pub withdrawn: Option<Deed>,
 }
 
+impl MashCheck {
+    /// Minutes since strike, at the stages that are timed so.
+    pub fn since_strike(&self) -> Option<Minutes> {
+        self.stage.timed_from_strike().then_some(self.minute)
+    }
+
+    /// Whether something may rest on it: not withdrawn, and not to be read again.
+    pub fn stands(&self) -> bool {
+        self.withdrawn.is_none() && self.advised.advice != "read_again"
+    }
+}
+
 /// What was said to a mash check.
 #[derive(Clone, Debug, PartialEq, serde::Serialize, serde::Deserialize, utoipa::ToSchema)]
 pub struct Advised {
-    /// The reading on the basis of a cooled sample.
+    /// What counts, on the basis of a cooled sample: the mean of the readings that repeat
+    /// each other.
     pub reading_ph: f64,
     /// Its standard deviation.
     pub reading_sd: f64,
-    /// What was expected of the mash at that moment; absent at other stages.
+    /// This reading by itself, cooled basis; absent where it is the one that counts.
+    #[serde(default)]
+    pub single_ph: Option<f64>,
+    /// How many readings were put together; 1 for one alone.
+    #[serde(default = "one")]
+    pub readings: u32,
+    /// What the plan with all that is in expects of the mash; absent at other stages.
     pub expected_ph: Option<f64>,
     /// Its standard deviation.
     pub expected_sd: Option<f64>,
-    /// `inside`, `cannot_be_told`, `below` or `above`; `noted` at other stages.
+    /// What was expected after the reading before and what went in since; absent where
+    /// nothing went in since.
+    #[serde(default)]
+    pub expected_now_ph: Option<f64>,
+    /// Its standard deviation.
+    #[serde(default)]
+    pub expected_now_sd: Option<f64>,
+    /// Lower end of the window; absent where it is open.
+    #[serde(default)]
+    pub window_low: Option<f64>,
+    /// Upper end.
+    #[serde(default)]
+    pub window_high: Option<f64>,
+    /// Where the window comes from.
+    #[serde(default)]
+    pub window_source: String,
+    /// `inside`, `cannot_be_told`, `below` or `above`; `noted` where there is no window.
     pub verdict: String,
     /// `leave`, `step`, `read_again` or `stop`.
     pub advice: String,
+    /// Why, in one word for programs: `inside`, `cannot_be_told`, `never_raised`,
+    /// `below_a_step`, `too_early`, `hot`, `calibrate`, `disagree`, `check_the_meter`,
+    /// `weigh_in_first`, `not_the_planned_mash`, `cap`, `other_way`, `no_remedy`,
+    /// `no_prediction`, `outside`, `unsafe` or `noted`. Empty with a step.
+    #[serde(default)]
+    pub why: String,
     /// What to do, in a heading.
     pub title: String,
     /// Why, in sentences.
     pub words: Vec<String>,
     /// The first step, if one is advised.
     pub step: Option<Step>,
+    /// The same step with other materials of the shelf.
+    #[serde(default)]
+    pub others: Vec<Step>,
+}
+
+const fn one() -> u32 {
+    1
 }
 
 /// Half of the computed dose, to be added now.
@@ -349,6 +409,9 @@ pub struct Step {
     pub material: usize,
     /// Its name.
     pub name: String,
+    /// Where it goes: `mash` or `kettle`.
+    #[serde(default = "in_the_mash")]
+    pub vessel: String,
     /// How much to add now, g or mL, on the step of the scale.
     pub amount: f64,
     /// `g` or `mL`.
@@ -361,8 +424,33 @@ pub struct Step {
     pub expected_ph: f64,
     /// Its standard deviation.
     pub expected_sd: f64,
+    /// The chance that it then lies in the window, 0 to 1.
+    #[serde(default)]
+    pub chance: Option<f64>,
     /// When to read again, min.
     pub reread_after_minutes: f64,
+    /// What it adds to the whole liquor of the batch.
+    #[serde(default)]
+    pub adds: Vec<Added>,
+}
+
+fn in_the_mash() -> String {
+    Vessel::Mash.key().to_owned()
+}
+
+/// One figure of the whole liquor before and after a step.
+#[derive(Clone, Debug, PartialEq, serde::Serialize, serde::Deserialize, utoipa::ToSchema)]
+pub struct Added {
+    /// Of what.
+    pub figure: String,
+    /// With what is in so far, mg/L.
+    pub before: f64,
+    /// With the step, mg/L.
+    pub after: f64,
+    /// Lowest by the spec, mg/L.
+    pub low: Option<f64>,
+    /// Highest by the spec or the limits of the plan, mg/L.
+    pub high: Option<f64>,
 }
 
 /// Predicted against measured for one batch.

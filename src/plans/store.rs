@@ -1,17 +1,14 @@
 //! SQL for plans, doses and mash checks.
 
 use chemistry::material::Vessel;
-use chemistry::quantity::{Celsius, DoseAmount, Fraction, Minutes, Ph, PhShift};
+use chemistry::quantity::{DoseAmount, Fraction, Ph, PhShift};
 use serde::{Deserialize, Serialize};
 use sqlx::{Row, SqliteConnection, sqlite::SqliteRow};
 
 use super::bodies::{InputsBody, ShelfItemBody};
-use super::{
-    Choice, Deed, Dose, Inputs, Lot, MashCheck, Outcome, Plan, Prediction, Stage, State, Weighed,
-    Witness,
-};
+use super::{Choice, Deed, Dose, Inputs, Lot, Outcome, Plan, Prediction, State, Weighed, Witness};
 use crate::error::Error;
-use crate::id::{BeerId, MashCheckId, PlanId, UtcTime};
+use crate::id::{BeerId, PlanId, UtcTime};
 
 /// A plan as lists show it.
 #[derive(Clone, Debug, PartialEq)]
@@ -526,87 +523,6 @@ pub(super) async fn update_weighed(
     );
     let query = Kept::of(dose).bound(query).bind(dose.id);
     query.execute(db).await?;
-    Ok(())
-}
-
-pub(super) async fn insert_check(
-    db: &mut SqliteConnection,
-    check: &MashCheck,
-) -> Result<(), sqlx::Error> {
-    sqlx::query(
-        "INSERT INTO mash_checks (id, plan_id, stage, read_at, minute, ph, sample_c, meter, meter_sd,
-                                  meter_checked, assessment, full_dose, read_by)
-         VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
-    )
-    .bind(check.id)
-    .bind(check.plan_id)
-    .bind(check.stage.key())
-    .bind(check.read_at)
-    .bind(check.minute.get())
-    .bind(check.ph.get())
-    .bind(check.sample.get())
-    .bind(&check.meter)
-    .bind(check.meter_sd.get())
-    .bind(check.meter_checked)
-    .bind(serde_json::to_string(&check.advised).unwrap_or_default())
-    .bind(check.advised.step.as_ref().map(|step| step.full_dose))
-    .bind(&check.read_by)
-    .execute(db)
-    .await?;
-    Ok(())
-}
-
-/// Every mash check of a plan, the earliest first.
-pub(super) async fn checks(
-    db: &mut SqliteConnection,
-    plan: PlanId,
-) -> Result<Vec<MashCheck>, Error> {
-    let rows = sqlx::query(
-        "SELECT id, plan_id, stage, read_at, minute, ph, sample_c, meter, meter_sd, meter_checked, assessment,
-                read_by, withdrawn_at, withdrawn_by, withdrawal_reason
-         FROM mash_checks WHERE plan_id = ? ORDER BY read_at, id",
-    )
-    .bind(plan)
-    .fetch_all(db)
-    .await?;
-    rows.iter().map(check).collect()
-}
-
-fn check(row: &SqliteRow) -> Result<MashCheck, Error> {
-    Ok(MashCheck {
-        id: row.try_get("id")?,
-        plan_id: row.try_get("plan_id")?,
-        stage: Stage::from_key(row.try_get("stage")?).ok_or_else(|| unreadable("unknown stage"))?,
-        read_at: row.try_get("read_at")?,
-        minute: Minutes::clamped(row.try_get("minute")?),
-        ph: Ph::clamped(row.try_get("ph")?),
-        sample: Celsius::clamped(row.try_get("sample_c")?),
-        meter: row.try_get("meter")?,
-        meter_sd: PhShift::clamped(row.try_get("meter_sd")?),
-        meter_checked: row.try_get("meter_checked")?,
-        advised: serde_json::from_str(row.try_get("assessment")?).map_err(unreadable)?,
-        read_by: row.try_get("read_by")?,
-        withdrawn: deed(
-            row,
-            "withdrawn_at",
-            "withdrawn_by",
-            Some("withdrawal_reason"),
-        )?,
-    })
-}
-
-pub(super) async fn withdraw_check(
-    db: &mut SqliteConnection,
-    id: MashCheckId,
-    deed: &Deed,
-) -> Result<(), sqlx::Error> {
-    sqlx::query("UPDATE mash_checks SET withdrawn_at = ?, withdrawn_by = ?, withdrawal_reason = ? WHERE id = ?")
-        .bind(deed.at)
-        .bind(&deed.by)
-        .bind(&deed.reason)
-        .bind(id)
-        .execute(db)
-        .await?;
     Ok(())
 }
 

@@ -70,6 +70,11 @@ impl Scale {
         (x.clamp(0.0, 100.0) * 100.0).round() / 100.0
     }
 
+    /// A value's height on a drawing where more is higher, per cent from above.
+    pub fn height(self, value: f64) -> f64 {
+        ((100.0 - self.place(value)) * 100.0).round() / 100.0
+    }
+
     /// A mark on it.
     pub fn mark(self, value: f64, text: impl Into<String>) -> Mark {
         Mark {
@@ -147,6 +152,56 @@ pub struct IntervalBar {
     pub reading: Option<Mark>,
     /// Its own error.
     pub reading_doubt: Option<Span>,
+    /// What is expected after the reading before and what went in since.
+    pub now: Option<Mark>,
+    /// Its 90 % interval.
+    pub now_doubt: Option<Span>,
+    /// All of it in a sentence.
+    pub text: String,
+}
+
+/// A place on a drawing with two axes, y downwards as in SVG.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Point {
+    /// Where, per cent from the left.
+    pub x: f64,
+    /// Where, per cent from above.
+    pub y: f64,
+    /// Upper end of its doubt, per cent from above.
+    pub top: f64,
+    /// How far the doubt reaches down from there, per cent.
+    pub height: f64,
+    /// What it says.
+    pub text: String,
+}
+
+/// The pH of a mash against the dose of one material.
+#[derive(Clone, Debug, PartialEq)]
+pub struct DoseCurve {
+    /// The scale below, doses.
+    pub doses: Vec<Mark>,
+    /// What the doses are of, with the unit.
+    pub material: String,
+    /// The scale at the side, pH.
+    pub levels: Vec<Level>,
+    /// Upper edge of the window, per cent from above.
+    pub window_top: f64,
+    /// Its height, per cent.
+    pub window_height: f64,
+    /// The window in figures.
+    pub window: String,
+    /// The target.
+    pub target: Level,
+    /// As the plan predicts it: "x,y x,y …".
+    pub predicted: String,
+    /// As it was read.
+    pub as_read: String,
+    /// The prediction with its 90 % interval.
+    pub expected: Option<Point>,
+    /// The readings, the earliest first, each with its own error.
+    pub readings: Vec<Point>,
+    /// Where the proposed step leads.
+    pub step: Option<Point>,
     /// All of it in a sentence.
     pub text: String,
 }

@@ -91,6 +91,15 @@ pub fn moment(at: UtcTime, time_zone: &str) -> String {
         .to_string()
 }
 
+/// A time of day in the brewery's time zone: `14:05`.
+pub fn clock(at: UtcTime, time_zone: &str) -> String {
+    let zone = jiff::tz::TimeZone::get(time_zone).unwrap_or(jiff::tz::TimeZone::UTC);
+    at.timestamp()
+        .to_zoned_datetime(zone)
+        .strftime("%H:%M")
+        .to_string()
+}
+
 /// Today's date in the brewery's time zone.
 pub fn today(time_zone: &str) -> jiff::civil::Date {
     let zone = jiff::tz::TimeZone::get(time_zone).unwrap_or(jiff::tz::TimeZone::UTC);

@@ -30,6 +30,7 @@ pub struct Brewhouse {
     pub manager: Program,
     pub beer: String,
     pub source: String,
+    pub meter: String,
 }
 
 pub fn made(answer: &Answer) -> String {
@@ -96,12 +97,33 @@ impl Brewhouse {
             },
         });
         let beer = made(&manager.post("/beers", &beer).await);
-        Self {
+        let meter =
+            json!({"name": "Bench meter", "kind": "bench", "compensated": true, "in_use": true});
+        let meter = made(&manager.post("/meters", &meter).await);
+        let house = Self {
             desk,
             manager,
             beer,
             source,
-        }
+            meter,
+        };
+        house.calibrate(&house.meter, "", 97.0).await;
+        house
+    }
+
+    /// Calibrates a meter as its own display tells it, in fresh buffers 7 and 4; blank: now.
+    pub async fn calibrate(&self, meter: &str, at: &str, slope: f64) {
+        let body = json!({
+            "calibrated_at": at, "method": "display", "temperature_c": 20,
+            "buffers": [{"buffer": "technical_7"}, {"buffer": "technical_4"}],
+            "slope": slope, "offset_mv": 5,
+        });
+        made(
+            &self
+                .manager
+                .post(&format!("/meters/{meter}/calibrations"), &body)
+                .await,
+        );
     }
 
     pub fn order(&self, batch: &str) -> Value {
@@ -151,8 +173,18 @@ impl Brewhouse {
             .clone()
     }
 
+    /// Reads the mash with the calibrated meter, cooled sample.
     pub async fn read(&self, id: &str, ph: f64, minute: f64) -> Answer {
-        let body = json!({"ph": ph, "minute": minute, "sample_c": 20, "meter": "Bench"});
+        self.read_with(id, json!({"ph": ph, "minute": minute}))
+            .await
+    }
+
+    /// Reads with these fields over those of a cooled sample in the calibrated meter.
+    pub async fn read_with(&self, id: &str, over: Value) -> Answer {
+        let mut body = json!({"sample_c": 20, "meter_id": self.meter});
+        for (name, value) in over.as_object().unwrap() {
+            body[name] = value.clone();
+        }
         self.manager
             .post(&format!("/plans/{id}/mash-checks"), &body)
             .await

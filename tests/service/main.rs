@@ -21,6 +21,7 @@ mod plans;
 mod program;
 mod queued;
 mod readiness;
+mod readings;
 mod record;
 mod shelf;
 mod source_pages;

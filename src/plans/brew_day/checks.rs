@@ -1,4 +1,4 @@
-//! Reading the mash on the tablet, and what to do about it.
+//! Taking a reading on the tablet: which stage, what the meter showed.
 
 use askama::Template;
 use askama_web::WebTemplate;
@@ -6,34 +6,42 @@ use axum::Router;
 use axum::extract::State;
 use axum::response::{IntoResponse, Redirect, Response};
 use axum::routing::{get, post};
+use chemistry::kettle;
+use chemistry::reading::WARMEST_SAMPLE;
 
+use super::check_page;
+use crate::brewery::Units;
 use crate::db::Db;
 use crate::error::Error;
-use crate::id::{DoseId, MashCheckId, PlanId};
-use crate::input::Problems;
+use crate::id::{PlanId, UtcTime};
+use crate::meters::{Meter, Standing};
 use crate::people::Permission;
 use crate::plans::asked::{METER_SD, NewMashCheckBody};
-use crate::plans::mash_checks::{self, NewMashCheck};
+use crate::plans::mash_checks::{self, NewMashCheck, expected};
 use crate::plans::pages::check_address;
-use crate::plans::{
-    MashCheck, Plan, Prediction, Stage, State as PlanState, compute, operations, sheet, words,
-};
+use crate::plans::{MashCheck, Plan, Stage, State as PlanState, compute, operations};
 use crate::web::App;
-use crate::web::chart::IntervalBar;
 use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
-use crate::web::units::{Measure, typed_in_si};
+use crate::web::units::{Measure, shown_in, typed_in_si};
 
 /// The pages.
 pub(super) fn routes() -> Router<App> {
     Router::new()
         .route("/plans/{id}/mash-checks/new", get(new_check).post(read))
-        .route("/plans/{id}/mash-checks/{check_id}", get(show_check))
+        .route(
+            "/plans/{id}/mash-checks/{check_id}",
+            get(check_page::show_check),
+        )
+        .route(
+            "/plans/{id}/mash-checks/{check_id}/material",
+            post(check_page::choose_material),
+        )
         .route(
             "/plans/{id}/mash-checks/{check_id}/withdrawal",
-            post(withdraw_check),
+            post(check_page::withdraw_check),
         )
 }
 
@@ -43,11 +51,24 @@ struct NewCheckPage {
     page: Page,
     plan: Plan,
     typed: Form,
-    stages: Vec<Choice>,
+    stage: Stage,
+    /// The other stages that can be read now: key and name.
+    stages: Vec<(&'static str, &'static str)>,
+    meters: Vec<Choice>,
     temperature_unit: &'static str,
-    expected: String,
+    volume_unit: &'static str,
+    /// What is expected or where the window lies.
+    lead: String,
     not_in: Vec<String>,
+    /// Whether something looks mistyped and may be confirmed.
+    asked: bool,
+    /// What a hot sample would be worth.
+    warmest: String,
+    usual_cast_out: String,
 }
+
+/// What stands for a meter that is not among those of the brewery.
+const ANOTHER: &str = "another";
 
 async fn new_check_page(
     db: &Db,
@@ -56,35 +77,25 @@ async fn new_check_page(
     typed: Form,
 ) -> Result<NewCheckPage, Error> {
     let plan = operations::find(db, &framer.member, id).await?;
-    let page = framer
-        .page(
-            format!("Read the mash of {} {}", plan.batch, plan.beer_name),
-            "brew-day",
-        )
-        .await;
-    let expected = compute::as_weighed(&plan)
-        .ok()
-        .and_then(|outcome| compute::prediction(&outcome));
-    // After a first step the reading before it foretells more than the plan does.
-    let after_step = mash_checks::list(db, &framer.member, id)
+    let stage = Stage::from_key(typed.value("stage")).unwrap_or(Stage::Mash);
+    let title = match stage {
+        Stage::Mash => format!("Read the mash of {} {}", plan.batch, plan.beer_name),
+        other => format!("{} of {} {}", other.name(), plan.batch, plan.beer_name),
+    };
+    let page = framer.page(title, "brew-day").await;
+    let units = page.settings.units;
+    let checks = mash_checks::list(db, &framer.member, id).await?;
+    let mut meters: Vec<(String, String)> = mash_checks::meters_to_choose_from(db, &framer.member)
         .await?
-        .into_iter()
-        .rev()
-        .filter(|check| check.withdrawn.is_none())
-        .find(|check| check.stage == Stage::Mash)
-        .filter(|check| {
-            plan.doses
-                .iter()
-                .any(|dose| dose.mash_check == Some(check.id) && dose.weighed.is_some())
-        })
-        .and_then(|check| check.advised.step)
-        .map(|step| {
-            format!(
-                "{} ± {} after the step that went in",
-                format::ph(step.expected_ph),
-                format::ph(step.expected_sd)
-            )
-        });
+        .iter()
+        .map(|(meter, standing)| (meter.id.to_string(), meter_words(meter, standing)))
+        .collect();
+    meters.push((ANOTHER.into(), "Another meter".into()));
+    let chosen = match typed.value("meter_id") {
+        "" => meters[0].0.clone(),
+        chosen => chosen.to_owned(),
+    };
+    let closed = plan.state == PlanState::Closed;
     let not_in = plan
         .doses
         .iter()
@@ -93,53 +104,137 @@ async fn new_check_page(
         .map(|item| item.name.clone())
         .collect();
     Ok(NewCheckPage {
-        stages: Choice::list(
-            Stage::ALL.map(|stage| (stage.key(), stage.name())),
-            typed.value("stage"),
-        ),
-        temperature_unit: page.settings.units.label(Measure::Temperature),
-        expected: after_step.unwrap_or_else(|| {
-            expected.map_or_else(String::new, |it| {
-                format!(
-                    "{}, 90 % between {} and {}",
-                    format::ph(it.ph.get()),
-                    format::ph(it.low.get()),
-                    format::ph(it.high.get())
-                )
-            })
-        }),
-        not_in,
+        stages: Stage::ALL
+            .into_iter()
+            .filter(|other| *other != stage && (!closed || mash_checks::late(*other)))
+            .map(|stage| (stage.key(), stage.name()))
+            .collect(),
+        meters: Choice::list(meters, &chosen),
+        temperature_unit: units.label(Measure::Temperature),
+        volume_unit: units.label(Measure::Volume),
+        lead: lead(&plan, stage, &checks),
+        not_in: if stage == Stage::Mash {
+            not_in
+        } else {
+            Vec::new()
+        },
+        asked: typed.problem("confirmed").is_some() || typed.ticked("confirmed"),
+        warmest: units.show(Measure::Temperature, WARMEST_SAMPLE.get()),
+        usual_cast_out: format::ph(kettle::USUAL_TARGET.get()),
+        stage,
         page,
         plan,
         typed,
     })
 }
 
+/// What is to be expected: of the mash by its last reading or the plan, elsewhere the window.
+fn lead(plan: &Plan, stage: Stage, checks: &[MashCheck]) -> String {
+    let between = |low: f64, high: f64| format!("{} and {}", format::ph(low), format::ph(high));
+    if stage != Stage::Mash {
+        let window = stage.window(plan.inputs.problem.spec.mash_ph);
+        return match (window.low, window.high) {
+            (Some(low), Some(high)) => {
+                format!("Usual: between {}.", between(low.get(), high.get()))
+            }
+            (None, Some(high)) => format!("Usual: up to {}.", format::ph(high.get())),
+            _ => String::new(),
+        };
+    }
+    if let Some(now) = expected::now(plan, checks) {
+        return format!(
+            "Expected {} ± {} after the step that went in.",
+            format::ph(now.ph.value.get()),
+            format::ph(now.ph.sd)
+        );
+    }
+    let prediction = compute::as_weighed(plan)
+        .ok()
+        .and_then(|outcome| compute::prediction(&outcome));
+    prediction.map_or_else(String::new, |it| {
+        format!(
+            "Expected {}, 90 % between {}.",
+            format::ph(it.ph.get()),
+            between(it.low.get(), it.high.get())
+        )
+    })
+}
+
+/// A meter and what its readings are worth now.
+fn meter_words(meter: &Meter, standing: &Standing) -> String {
+    let Some(at) = standing.calibrated_at else {
+        return format!("{}: not calibrated", meter.name);
+    };
+    let slope = standing.slope_percent.map_or_else(String::new, |slope| {
+        format!(", slope {} %", format::decimals(slope.get(), 0))
+    });
+    let verdict = if standing.may_be_acted_on() {
+        ""
+    } else {
+        ": calibrate it first"
+    };
+    format!(
+        "{}: calibrated {}{slope}, ± {}{verdict}",
+        meter.name,
+        ago(UtcTime::now().seconds_since(at)),
+        format::ph(standing.sd.get())
+    )
+}
+
+/// How long ago, in the largest unit that says something.
+fn ago(seconds: i64) -> String {
+    let minutes = seconds.max(0) / 60;
+    match minutes {
+        0..=1 => "just now".into(),
+        2..=90 => format!("{minutes} min ago"),
+        91..=2880 => format!("{} h ago", (minutes + 30) / 60),
+        _ => format!("{} days ago", minutes / 1440),
+    }
+}
+
 async fn new_check(
     State(db): State<Db>,
     framer: Framer,
     At(id): At<PlanId>,
+    asked: Form,
 ) -> Result<NewCheckPage, Error> {
-    let last = mash_checks::list(&db, &framer.member, id).await?.pop();
     let units = crate::brewery::operations::settings(&db).await?.units;
-    let typed = Form::empty()
-        .with("stage", Stage::Mash.key())
-        .with(
-            "sample_c",
-            format::decimals(units.shown(Measure::Temperature, 20.0), 0),
-        )
-        .with(
-            "meter",
-            last.as_ref()
-                .map(|check| check.meter.clone())
-                .unwrap_or_default(),
-        )
-        .with(
-            "meter_sd",
-            last.map_or(METER_SD, |check| check.meter_sd.get())
-                .to_string(),
-        );
+    let stage = Stage::from_key(asked.value("stage")).unwrap_or(Stage::Mash);
+    let last = mash_checks::list(&db, &framer.member, id).await?.pop();
+    let mut typed = Form::empty().with("stage", stage.key()).with(
+        "sample_c",
+        format::decimals(units.shown(Measure::Temperature, 20.0), 0),
+    );
+    if let Some(last) = last.filter(|check| check.meter_id.is_none()) {
+        typed = typed
+            .with("meter_id", ANOTHER)
+            .with("meter", last.meter)
+            .with("meter_sd", last.meter_sd.get().to_string());
+    } else {
+        typed = typed.with("meter_sd", METER_SD.to_string());
+    }
+    if matches!(stage, Stage::KettleFull | Stage::EndOfBoil) {
+        let plan = operations::find(&db, &framer.member, id).await?;
+        let litres = plan.inputs.batch.get().to_string();
+        let fields = [("wort_l".to_owned(), Measure::Volume)];
+        typed = shown_in(&typed.with("wort_l", litres), units, &fields);
+    }
     new_check_page(&db, &framer, id, typed).await
+}
+
+fn body(typed: &Form, units: Units) -> Result<NewMashCheck, Error> {
+    let fields = [
+        ("sample_c".to_owned(), Measure::Temperature),
+        ("wort_l".to_owned(), Measure::Volume),
+    ];
+    let mut body: NewMashCheckBody = typed_in_si(typed, units, &fields).body()?;
+    if body.meter_id == ANOTHER {
+        body.meter_id.clear();
+    } else {
+        body.meter.clear();
+        body.meter_sd = crate::input::Number::Missing;
+    }
+    body.try_into()
 }
 
 async fn read(
@@ -151,12 +246,7 @@ async fn read(
     let read = async {
         framer.member.may(Permission::BrewBatches)?;
         let units = crate::brewery::operations::settings(&db).await?.units;
-        let si = typed_in_si(
-            &typed,
-            units,
-            &[("sample_c".to_owned(), Measure::Temperature)],
-        );
-        let new = NewMashCheck::try_from(si.body::<NewMashCheckBody>()?)?;
+        let new = body(&typed, units)?;
         mash_checks::read(&db, &framer.member, id, new).await
     };
     match read.await {
@@ -164,200 +254,6 @@ async fn read(
         Err(error) => {
             let (status, typed) = typed.refused(error)?;
             Ok((status, new_check_page(&db, &framer, id, typed).await?).into_response())
-        }
-    }
-}
-
-#[derive(Template, WebTemplate)]
-#[template(path = "plans/check.html")]
-struct CheckPage {
-    page: Page,
-    plan: Plan,
-    check: MashCheck,
-    typed: Form,
-    reading: String,
-    sample: String,
-    interval: Option<IntervalBar>,
-    verdict: (&'static str, &'static str),
-    step: Option<StepWords>,
-    kind: &'static str,
-    wait_seconds: i64,
-    wait_words: String,
-    open: bool,
-    withdrawn: String,
-}
-
-struct StepWords {
-    amount: String,
-    unit: &'static str,
-    name: String,
-    detail: String,
-    expected: String,
-    dose: Option<DoseId>,
-    weighed: bool,
-    lot: String,
-    cautions: Vec<&'static str>,
-}
-
-async fn check_page(
-    db: &Db,
-    framer: &Framer,
-    id: PlanId,
-    check_id: MashCheckId,
-    typed: Form,
-) -> Result<CheckPage, Error> {
-    let plan = operations::find(db, &framer.member, id).await?;
-    let checks = mash_checks::list(db, &framer.member, id).await?;
-    let check = checks
-        .into_iter()
-        .find(|check| check.id == check_id)
-        .ok_or(Error::NotFound("mash check of this plan"))?;
-    let page = framer
-        .page(
-            format!("Mash of {} {}", plan.batch, plan.beer_name),
-            "brew-day",
-        )
-        .await;
-    let units = page.settings.units;
-    let advised = &check.advised;
-    let interval = match (advised.expected_ph, advised.expected_sd) {
-        (Some(ph), Some(sd)) => {
-            let expected = Prediction {
-                ph: chemistry::quantity::Ph::clamped(ph),
-                sd: chemistry::quantity::PhShift::clamped(sd),
-                low: chemistry::quantity::Ph::clamped(
-                    ph - chemistry::quantity::NINETY_PERCENT * sd,
-                ),
-                high: chemistry::quantity::Ph::clamped(
-                    ph + chemistry::quantity::NINETY_PERCENT * sd,
-                ),
-            };
-            let reading = Some((advised.reading_ph, advised.reading_sd));
-            Some(sheet::interval(
-                expected,
-                plan.inputs.problem.spec.mash_ph,
-                reading,
-            ))
-        }
-        _ => None,
-    };
-    let step = advised.step.as_ref().map(|step| {
-        let dose = plan
-            .doses
-            .iter()
-            .find(|dose| dose.mash_check == Some(check.id));
-        let (amount, unit) = words::dose(units, &plan.inputs, step.material, step.amount);
-        let item = plan.inputs.problem.shelf.get(step.material);
-        StepWords {
-            amount,
-            unit,
-            name: step.name.clone(),
-            detail: words::material_detail(&plan.inputs, step.material),
-            expected: format!(
-                "{} ± {}",
-                format::ph(step.expected_ph),
-                format::ph(step.expected_sd)
-            ),
-            dose: dose.map(|dose| dose.id),
-            weighed: dose.is_some_and(|dose| dose.weighed.is_some()),
-            lot: plan
-                .inputs
-                .shelf
-                .get(step.material)
-                .map(|label| label.lot.clone())
-                .unwrap_or_default(),
-            cautions: item.map_or_else(Vec::new, |item| item.material.substance().cautions()),
-        }
-    });
-    // The wait begins when the step goes in; until then it has not begun.
-    let given = plan
-        .doses
-        .iter()
-        .find(|dose| dose.mash_check == Some(check.id))
-        .and_then(|dose| dose.weighed.as_ref().map(|weighed| weighed.at));
-    let wait = advised
-        .step
-        .as_ref()
-        .map_or(600.0, |step| step.reread_after_minutes * 60.0);
-    // Whole seconds of a few minutes: no digit is lost.
-    let wait_seconds = given.map_or(-1, |at| {
-        (wait as i64 - crate::id::UtcTime::now().seconds_since(at)).max(0)
-    });
-    Ok(CheckPage {
-        reading: format!(
-            "{} ± {}",
-            format::ph(advised.reading_ph),
-            format::ph(advised.reading_sd)
-        ),
-        sample: format!(
-            "The meter showed {} in a sample of {} {}, {} minutes after strike.",
-            format::ph(check.ph.get()),
-            format::decimals(units.shown(Measure::Temperature, check.sample.get()), 0),
-            units.label(Measure::Temperature),
-            format::decimals(check.minute.get(), 0)
-        ),
-        verdict: match advised.verdict.as_str() {
-            "inside" => ("within", "inside the window"),
-            "cannot_be_told" => ("within", "cannot be told from the target"),
-            "below" => ("below", "below the window"),
-            "above" => ("above", "above the window"),
-            _ => ("unknown", "written down"),
-        },
-        kind: match advised.advice.as_str() {
-            "step" => "step",
-            "stop" => "stop",
-            _ => "leave",
-        },
-        wait_words: if wait_seconds > 0 {
-            format!("in {} minutes", (wait_seconds + 59) / 60)
-        } else {
-            "now".into()
-        },
-        open: matches!(plan.state, PlanState::Approved | PlanState::Dosed)
-            && check.withdrawn.is_none(),
-        withdrawn: check.withdrawn.as_ref().map_or_else(String::new, |deed| {
-            format!(
-                "{}, {}: {}",
-                deed.by,
-                format::moment(deed.at, &page.settings.time_zone),
-                deed.reason
-            )
-        }),
-        wait_seconds,
-        interval,
-        step,
-        page,
-        plan,
-        check,
-        typed,
-    })
-}
-
-async fn show_check(
-    State(db): State<Db>,
-    framer: Framer,
-    At((id, check)): At<(PlanId, MashCheckId)>,
-) -> Result<CheckPage, Error> {
-    check_page(&db, &framer, id, check, Form::empty()).await
-}
-
-async fn withdraw_check(
-    State(db): State<Db>,
-    framer: Framer,
-    At((id, check)): At<(PlanId, MashCheckId)>,
-    typed: Form,
-) -> Result<Response, Error> {
-    let withdrawn = async {
-        let mut problems = Problems::new();
-        let reason = problems.text("reason", typed.value("reason"), 500);
-        problems.finish()?;
-        mash_checks::withdraw(&db, &framer.member, id, check, reason.unwrap_or_default()).await
-    };
-    match withdrawn.await {
-        Ok(()) => Ok(Redirect::to(&format!("/plans/{id}?done=withdrawn")).into_response()),
-        Err(error) => {
-            let (status, typed) = typed.refused(error)?;
-            Ok((status, check_page(&db, &framer, id, check, typed).await?).into_response())
         }
     }
 }

@@ -17,6 +17,7 @@ use crate::web::App;
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
 
+mod check_page;
 mod checks;
 mod weigh_out;
 

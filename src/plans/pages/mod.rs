@@ -89,6 +89,9 @@ struct ShowPage {
     grist: Vec<(String, String, String)>,
     volumes: Vec<(&'static str, String)>,
     unweighed_steps: bool,
+    /// What is expected of the mash now, since when, and the chance that it lies inside;
+    /// only where something went in after a reading.
+    mash_now: Option<(String, String, String)>,
     cautions: Vec<(String, Vec<&'static str>)>,
     trial: bool,
     /// What it lacks, under these words.
@@ -108,7 +111,11 @@ struct CheckRow {
     at: String,
     reading: String,
     sample: String,
+    /// By the plan.
     expected: String,
+    /// After the reading before and what went in since.
+    now: String,
+    minute: String,
 }
 
 struct OutcomeRow {
@@ -136,6 +143,15 @@ fn check_row(check: MashCheck, time_zone: &str, units: Units) -> CheckRow {
             .advised
             .expected_ph
             .map_or_else(String::new, format::ph),
+        now: check
+            .advised
+            .expected_now_ph
+            .map_or_else(String::new, |ph| {
+                format!("{} after the step", format::ph(ph))
+            }),
+        minute: check
+            .since_strike()
+            .map_or_else(String::new, |it| format::decimals(it.get(), 0)),
         check,
     }
 }
@@ -331,6 +347,21 @@ async fn show_page(
         cautions: sheet::cautions(&plan),
         trial: tried.is_some(),
         missing,
+        mash_now: mash_checks::expected::now(&plan, &checks).map(|now| {
+            (
+                format!(
+                    "{} ± {}",
+                    format::ph(now.ph.value.get()),
+                    format::ph(now.ph.sd)
+                ),
+                format::clock(now.since, &zone),
+                sheet::chance(
+                    &plan.inputs.problem.spec.mash_ph,
+                    now.ph.value.get(),
+                    now.ph.sd,
+                ),
+            )
+        }),
         unweighed_steps: plan
             .doses
             .iter()

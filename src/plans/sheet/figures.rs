@@ -18,6 +18,7 @@ pub(in crate::plans) fn interval(
     prediction: Prediction,
     aim: Aim,
     reading: Option<(f64, f64)>,
+    now: Option<(f64, f64)>,
 ) -> IntervalBar {
     let (low, high, ph) = (
         prediction.low.get(),
@@ -26,13 +27,14 @@ pub(in crate::plans) fn interval(
     );
     let read = reading
         .iter()
+        .chain(&now)
         .flat_map(|(ph, sd)| [ph - NINETY_PERCENT * sd, ph + NINETY_PERCENT * sd]);
     let values = [low, high, aim.low.get(), aim.high.get()]
         .into_iter()
         .chain(read);
     let scale = Scale::around(values, 0.4);
     let step = if high - low > 1.0 { 0.5 } else { 0.1 };
-    let text = format!(
+    let mut text = format!(
         "Mash pH expected {}, nine times in ten between {} and {}. Window {} to {}, target {}.",
         format::ph(ph),
         format::ph(low),
@@ -41,7 +43,28 @@ pub(in crate::plans) fn interval(
         format::ph(aim.high.get()),
         format::ph(aim.target.get())
     );
+    if let Some((ph, sd)) = now {
+        text.push_str(&format!(
+            " After the reading before and what went in since {} ± {} was expected.",
+            format::ph(ph),
+            format::ph(sd)
+        ));
+    }
+    if let Some((ph, sd)) = reading {
+        text.push_str(&format!(" Read {} ± {}.", format::ph(ph), format::ph(sd)));
+    }
+    let with_doubt =
+        |(ph, sd): (f64, f64)| scale.mark(ph, format!("{} ± {}", format::ph(ph), format::ph(sd)));
+    let reach = |(ph, sd): (f64, f64)| {
+        scale.span(
+            Some(ph - NINETY_PERCENT * sd),
+            Some(ph + NINETY_PERCENT * sd),
+            String::new(),
+        )
+    };
     IntervalBar {
+        now: now.map(with_doubt),
+        now_doubt: now.map(reach),
         ticks: scale.ticks(step, 1),
         window: Some(scale.span(
             Some(aim.low.get()),
@@ -59,15 +82,8 @@ pub(in crate::plans) fn interval(
             format!("{} and {}", format::ph(low), format::ph(high)),
         )),
         expected: Some(scale.mark(ph, format::ph(ph))),
-        reading: reading
-            .map(|(ph, sd)| scale.mark(ph, format!("{} ± {}", format::ph(ph), format::ph(sd)))),
-        reading_doubt: reading.map(|(ph, sd)| {
-            scale.span(
-                Some(ph - NINETY_PERCENT * sd),
-                Some(ph + NINETY_PERCENT * sd),
-                String::new(),
-            )
-        }),
+        reading: reading.map(with_doubt),
+        reading_doubt: reading.map(reach),
         text,
     }
 }

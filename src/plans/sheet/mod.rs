@@ -3,6 +3,8 @@
 
 use chemistry::material::{SAFETY_DATA_SHEET, Vessel};
 use chemistry::plan::{Ending, Outcome, Way};
+use chemistry::put_right::Aim;
+use chemistry::quantity::{Estimate, Ph};
 
 use crate::brewery::{Settings, Units};
 use crate::error::Error;
@@ -14,8 +16,10 @@ use crate::web::form::Form;
 use crate::web::format;
 use crate::web::units::Measure as Shown;
 
+mod curve;
 mod figures;
 
+pub(in crate::plans) use curve::dose_curve;
 pub(in crate::plans) use figures::interval;
 use figures::{doubts, waters, windows};
 
@@ -29,6 +33,8 @@ pub(in crate::plans) struct Facts {
     pub(in crate::plans) interval: Option<IntervalBar>,
     /// Kind and words of its badge.
     pub(in crate::plans) mash_badge: (&'static str, String),
+    /// The chance that it lands inside the window, in words.
+    pub(in crate::plans) mash_chance: String,
     /// Where its doubt comes from.
     pub(in crate::plans) doubts: Vec<DoubtShare>,
     /// Buffering of the mash.
@@ -77,7 +83,10 @@ pub(in crate::plans) fn consequences(plan: &Plan, outcome: &Outcome, settings: &
             .err()
             .map(ToString::to_string)
             .unwrap_or_default(),
-        interval: prediction.map(|it| interval(it, inputs.problem.spec.mash_ph, None)),
+        interval: prediction.map(|it| interval(it, inputs.problem.spec.mash_ph, None, None)),
+        mash_chance: prediction.map_or_else(String::new, |it| {
+            chance(&inputs.problem.spec.mash_ph, it.ph.get(), it.sd.get())
+        }),
         mash_badge,
         doubts: doubts(outcome),
         buffering: outcome
@@ -94,6 +103,24 @@ pub(in crate::plans) fn consequences(plan: &Plan, outcome: &Outcome, settings: &
         cost: cost(outcome, settings),
         unpriced: unpriced(plan),
         met: (met, outcome.findings.len()),
+    }
+}
+
+/// The chance that a mash expected so lies in its window, in words.
+pub(in crate::plans) fn chance(aim: &Aim, ph: f64, sd: f64) -> String {
+    chance_words(aim.chance(Estimate::new(Ph::clamped(ph), sd)).get())
+}
+
+/// A chance to lie inside a window, in words.
+pub(in crate::plans) fn chance_words(chance: f64) -> String {
+    let percent = (chance * 100.0).round();
+    // Nothing about a mash is certain, and the normal distribution has thin tails.
+    if percent >= 99.0 {
+        "more than 98 % chance to lie inside".into()
+    } else if percent <= 1.0 {
+        "less than 2 % chance to lie inside".into()
+    } else {
+        format!("{} % chance to lie inside", format::decimals(percent, 0))
     }
 }
 
