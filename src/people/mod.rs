@@ -150,7 +150,7 @@ pub enum Scope {
     Read,
     /// Enter water tests and keep sources.
     Tests,
-    /// Draft and approve plans; keep beers, malts and the shelf.
+    /// Draft and approve plans; keep beers, malts and the shelf. Reads everything too.
     Plans,
     /// Record doses and mash checks; keep and calibrate meters.
     Readings,
@@ -176,7 +176,7 @@ impl Scope {
             Self::Read => "Read everything",
             Self::Tests => "Enter water tests and keep sources",
             Self::Plans => {
-                "Draft and approve plans; keep beers, malts and the shelf. Tick “Read everything” too"
+                "Read everything; draft and approve plans; keep beers, malts and the shelf"
             }
             Self::Readings => "Record doses and mash checks; keep and calibrate meters",
         }
@@ -185,6 +185,12 @@ impl Scope {
     /// The scope with this key.
     pub fn from_key(key: &str) -> Option<Self> {
         Self::ALL.into_iter().find(|scope| scope.key() == key)
+    }
+
+    /// Whether it covers what asks for `needed`: a plan is computed from everything that can
+    /// be read, and shows it.
+    fn opens(self, needed: Self) -> bool {
+        self == needed || (self == Self::Plans && needed == Self::Read)
     }
 }
 
@@ -226,7 +232,7 @@ impl Member {
                 )))
             }
             (None, _) => Ok(()),
-            (Some(scopes), Some(needed)) if scopes.contains(&needed) => Ok(()),
+            (Some(scopes), Some(needed)) if scopes.iter().any(|it| it.opens(needed)) => Ok(()),
             (Some(_), Some(needed)) => Err(Error::Forbidden(format!(
                 "This token may not {}: it lacks the scope “{}”.",
                 permission.deed(),

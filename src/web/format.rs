@@ -122,6 +122,11 @@ pub fn done_sentence(key: &str) -> Option<&'static str> {
         "calibrated" => "The calibration is saved.",
         "closed" => "The batch is closed.",
         "password" => "The password is changed. Sign in with it from now on.",
+        "pin" => "The PIN is set. It opens Leat on every enrolled tablet.",
+        "enrolled" => {
+            "This tablet is enrolled. Whoever has a PIN picks a name here; you are signed out."
+        }
+        "signed_out" => "Signed out everywhere.",
         "revoked" => "Revoked. It no longer opens anything.",
         "removed" => "Removed.",
         "retired" => "Retired. It stays in the history and can be taken back.",

@@ -14,7 +14,7 @@ use super::App;
 use super::format::decimals;
 use super::layout::Page;
 use crate::db::Db;
-use crate::people::Member;
+use crate::people::{Member, Place};
 
 /// The pages.
 pub fn routes() -> Router<App> {
@@ -68,9 +68,10 @@ fn cautions() -> Vec<Cautions> {
         .collect()
 }
 
-async fn help(State(db): State<Db>, member: Option<Extension<Member>>) -> HelpPage {
+async fn help(State(db): State<Db>, place: Place, member: Option<Extension<Member>>) -> HelpPage {
     let member = member.map(|Extension(member)| member);
     let page = Page::load(&db, member.as_ref(), "Help", "help").await;
+    let page = page.at(&place, "/help".into());
     let mash = &page.settings.mash;
     let share = |value: f64| decimals(value, 2);
     HelpPage {
@@ -94,9 +95,14 @@ struct ApiPage {
 const READER_POLICY: &str = "default-src 'none'; style-src 'self' 'unsafe-inline'; script-src 'self'; \
     img-src 'self' data:; connect-src 'self'; form-action 'self'; base-uri 'none'; frame-ancestors 'none'";
 
-async fn api(State(db): State<Db>, member: Option<Extension<Member>>) -> impl IntoResponse {
+async fn api(
+    State(db): State<Db>,
+    place: Place,
+    member: Option<Extension<Member>>,
+) -> impl IntoResponse {
     let member = member.map(|Extension(member)| member);
     let page = Page::load(&db, member.as_ref(), "The API", "help").await;
+    let page = page.at(&place, "/help/api".into());
     (
         [(header::CONTENT_SECURITY_POLICY, READER_POLICY)],
         ApiPage { page },

@@ -2,13 +2,14 @@
 
 use axum::extract::FromRequestParts;
 use axum::http::request::Parts;
+use axum::http::{HeaderMap, Method, Uri, header};
 
 use super::App;
 use crate::brewery;
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::UtcTime;
-use crate::people::{Member, Permission};
+use crate::people::{Member, Permission, Place, Tablet};
 
 /// The frame of a page.
 #[derive(Clone, Debug)]
@@ -27,6 +28,11 @@ pub struct Page {
     pub flash: Option<String>,
     /// The brewery's choice of units, currency and time zone.
     pub settings: brewery::Settings,
+    /// Where somebody else goes on after a switch: this page, or the one whose form was
+    /// sent to make it.
+    pub here: String,
+    /// The enrolled tablet it is shown on, if it is one.
+    pub tablet: Option<Tablet>,
 }
 
 /// Who is signed in, as pages show it.
@@ -68,7 +74,24 @@ impl Page {
             section,
             flash: None,
             settings,
+            here: "/".into(),
+            tablet: None,
         }
+    }
+
+    /// The same frame at a place; `here` is the path to come back to.
+    #[must_use]
+    pub fn at(self, place: &Place, here: String) -> Self {
+        Self {
+            here,
+            tablet: place.tablet.clone(),
+            ..self
+        }
+    }
+
+    /// A tablet that lies unused this long goes back to the names, s.
+    pub fn tablet_idle_s(&self) -> u64 {
+        self.settings.tablet_idle.as_secs()
     }
 
     /// What the clock of the server says, which a tablet's need not.
@@ -92,14 +115,17 @@ pub struct Framer {
     /// Who is signed in.
     pub member: Member,
     flash: Option<String>,
+    place: Place,
+    here: String,
 }
 
 impl Framer {
     /// The frame of one page.
     pub async fn page(&self, title: impl Into<String>, section: &'static str) -> Page {
+        let page = Page::load(&self.db, Some(&self.member), title, section).await;
         Page {
             flash: self.flash.clone(),
-            ..Page::load(&self.db, Some(&self.member), title, section).await
+            ..page.at(&self.place, self.here.clone())
         }
     }
 }
@@ -122,10 +148,37 @@ impl FromRequestParts<App> for Framer {
         let flash = flash
             .and_then(|key| super::format::done_sentence(&key))
             .map(str::to_owned);
+        let place = match Place::from_request_parts(parts, app).await {
+            Ok(place) => place,
+            Err(never) => match never {},
+        };
         Ok(Self {
             db: app.db.clone(),
             member,
             flash,
+            place,
+            here: here(&parts.method, &parts.uri, &parts.headers),
         })
+    }
+}
+
+/// The path to come back to: of what is read its own, without the message of the form before;
+/// of what changes something the page that its form stood on.
+pub fn here(method: &Method, uri: &Uri, headers: &HeaderMap) -> String {
+    let page = if method.is_safe() {
+        Some(uri.clone())
+    } else {
+        let referer = headers.get(header::REFERER);
+        referer.and_then(|referer| referer.to_str().ok()?.parse().ok())
+    };
+    let Some(page) = page else { return "/".into() };
+    let kept = form_urlencoded::parse(page.query().unwrap_or_default().as_bytes())
+        .filter(|(name, _)| name != "done");
+    let query = form_urlencoded::Serializer::new(String::new())
+        .extend_pairs(kept)
+        .finish();
+    match query.as_str() {
+        "" => page.path().to_owned(),
+        query => format!("{}?{query}", page.path()),
     }
 }

@@ -12,10 +12,10 @@ use axum::response::{IntoResponse, Redirect, Response};
 use serde::Serialize;
 
 use super::App;
-use super::layout::Page;
+use super::layout::{self, Page};
 use super::queued;
 use crate::error::Error;
-use crate::people::Member;
+use crate::people::{Member, Place};
 
 /// What went wrong, as RFC 9457 lays it out.
 #[derive(Clone, Debug, Serialize, utoipa::ToSchema)]
@@ -217,12 +217,7 @@ struct ProblemPage {
 /// asked for JSON is answered as a program is.
 pub async fn page_layer(State(app): State<App>, request: Request, next: Next) -> Response {
     let id = request_id(&request);
-    let wanted = request
-        .uri()
-        .path_and_query()
-        .map(ToString::to_string)
-        .unwrap_or_default();
-    let reads = request.method().is_safe();
+    let here = layout::here(request.method(), request.uri(), request.headers());
     let by_script = queued::by_script(request.headers());
     let mut response = next.run(request).await;
     if !(response.status().is_client_error() || response.status().is_server_error()) {
@@ -243,14 +238,16 @@ pub async fn page_layer(State(app): State<App>, request: Request, next: Next) ->
         return respond(problem);
     }
     if response.status() == StatusCode::UNAUTHORIZED {
-        let next = if reads { wanted } else { "/".into() };
-        return Redirect::to(&format!("/sign-in?next={}", super::form::percent(&next)))
-            .into_response();
+        let next = super::form::percent(&here);
+        return Redirect::to(&format!("/sign-in?next={next}")).into_response();
     }
     let mut problem = problem.unwrap_or_else(|| unexplained(response.status()));
     problem.request_id = id;
     let member = response.extensions_mut().remove::<Member>();
-    let page = Page::load(&app.db, member.as_ref(), problem.title, "").await;
+    let mut page = Page::load(&app.db, member.as_ref(), problem.title, "").await;
+    if let Some(place) = response.extensions_mut().remove::<Place>() {
+        page = page.at(&place, here);
+    }
     let status = StatusCode::from_u16(problem.status).unwrap_or(StatusCode::INTERNAL_SERVER_ERROR);
     (status, ProblemPage { page, problem }).into_response()
 }

@@ -26,3 +26,4 @@ mod record;
 mod shelf;
 mod source_pages;
 mod sources;
+mod tablets;

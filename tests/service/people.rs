@@ -177,3 +177,264 @@ async fn keys_of_requests_long_past_are_forgotten_when_somebody_signs_in() {
         .unwrap();
     assert_eq!(left, ["young"]);
 }
+
+/// The cookie of a new session, begun in a browser that holds `before`.
+async fn signed_in(desk: &Desk, before: &str) -> String {
+    let client = reqwest::Client::builder()
+        .redirect(reqwest::redirect::Policy::none())
+        .build()
+        .unwrap();
+    let answer = client
+        .post(format!("{}/sign-in", desk.address))
+        .header("origin", &desk.address)
+        .header("cookie", before)
+        .form(&[("login", "qa"), ("password", crate::desk::PASSWORD)])
+        .send()
+        .await
+        .unwrap();
+    let line = answer.headers()["set-cookie"].to_str().unwrap().to_owned();
+    line.split(';').next().unwrap().to_owned()
+}
+
+async fn opens(desk: &Desk, cookie: &str) -> bool {
+    let request = reqwest::Client::new().get(format!("{}/record", desk.address));
+    let answer = request.header("cookie", cookie).send().await.unwrap();
+    answer.url().path() == "/record"
+}
+
+#[tokio::test]
+async fn a_cookie_from_before_signing_in_is_no_session_after_it() {
+    let desk = Desk::start().await;
+    // Planted by somebody who hopes that it becomes the session.
+    let planted = "leat_session=planted-by-somebody-else";
+    let session = signed_in(&desk, planted).await;
+    assert_ne!(session, planted);
+    assert!(opens(&desk, &session).await && !opens(&desk, planted).await);
+    // Signing in once more in the same browser ends the session before.
+    let later = signed_in(&desk, &session).await;
+    assert!(opens(&desk, &later).await && !opens(&desk, &session).await);
+}
+
+#[tokio::test]
+async fn a_session_ends_when_it_is_idle_and_in_any_case_after_two_weeks() {
+    let desk = Desk::start().await;
+    let now = leat::id::UtcTime::now();
+    for (column, hours, good) in [
+        ("last_seen_at", -11, true),
+        ("last_seen_at", -13, false),
+        ("expires_at", 1, true),
+        ("expires_at", -1, false),
+    ] {
+        let session = signed_in(&desk, "").await;
+        let mut tx = desk.app.db.begin_unkeyed().await.unwrap();
+        let statement = format!("UPDATE sessions SET {column} = ?");
+        sqlx::query(sqlx::AssertSqlSafe(statement))
+            .bind(now.plus_seconds(3600 * hours))
+            .execute(&mut *tx)
+            .await
+            .unwrap();
+        tx.commit().await.unwrap();
+        assert_eq!(opens(&desk, &session).await, good, "{column} {hours} h");
+    }
+}
+
+#[tokio::test]
+async fn signing_out_everywhere_ends_every_session_of_that_person_and_no_other() {
+    let desk = Desk::start().await;
+    let id = desk.member("qa").await.id;
+    let (one, other) = (desk.browser("qa").await, desk.browser("qa").await);
+    let brewer = desk.browser("brewer").await;
+    let page = one.open(&format!("/people/{id}")).await;
+    assert!(page.words().contains("(this one)"), "{}", page.words());
+    let action = format!("/people/{id}/sign-out");
+    assert_eq!(
+        brewer.post(&action, &[]).await.status,
+        StatusCode::FORBIDDEN
+    );
+    let out = one.fill(&page, &action, &[]).await;
+    assert!(
+        out.words().contains("Signed out everywhere"),
+        "{}",
+        out.words()
+    );
+    for browser in [&one, &other] {
+        assert_eq!(browser.open("/record").await.path, "/sign-in");
+    }
+    assert_eq!(brewer.open("/record").await.path, "/record");
+
+    // A manager does it for anybody.
+    let again = desk.browser("qa").await;
+    let manager = desk.browser("manager").await;
+    let page = manager.open(&format!("/people/{id}")).await;
+    manager.fill(&page, &action, &[]).await;
+    assert_eq!(again.open("/record").await.path, "/sign-in");
+    let book = manager.open("/record").await;
+    assert!(book.words().contains("signed out everywhere"));
+}
+
+async fn invited(desk: &Desk, name: &str) -> String {
+    let manager = desk.browser("manager").await;
+    let form = manager.open("/people/invite").await;
+    let list = manager
+        .fill(&form, "/people/invite", &[("name", name), ("role", "qa")])
+        .await;
+    let link = list.texts("#invitation-link").remove(0);
+    assert!(
+        !manager.open("/people").await.text.contains(&link),
+        "shown once"
+    );
+    link.strip_prefix(&desk.address).unwrap().to_owned()
+}
+
+#[tokio::test]
+async fn an_invitation_makes_one_account_of_its_name_and_role() {
+    let desk = Desk::start().await;
+    let link = invited(&desk, "Nia New").await;
+    let guest = desk.stranger();
+    let page = guest.open(&link).await;
+    assert!(page.words().contains("Nia New, you are invited as QA"));
+    let refused = guest
+        .fill(
+            &page,
+            "/invitation",
+            &[("login", "qa"), ("password", "another long one")],
+        )
+        .await;
+    assert!(refused.error("login").is_some(), "a name that is taken");
+    let refused = guest
+        .fill(
+            &page,
+            "/invitation",
+            &[("login", "nia"), ("password", "short")],
+        )
+        .await;
+    assert!(refused.error("password").is_some());
+    let fields = [("login", "nia"), ("password", "another long one")];
+    // What is typed over the name and role of the invitation counts for nothing.
+    let mut sent = crate::desk::offered(&page, "/invitation", &fields);
+    sent.push(("role".into(), "manager".into()));
+    sent.push(("name".into(), "Somebody Else".into()));
+    let start = guest.post("/invitation", &sent).await;
+    assert_eq!((start.path.as_str(), start.status), ("/", StatusCode::OK));
+    assert!(start.texts(".person-name")[0].starts_with("Nia New qa"));
+
+    let second = desk.stranger();
+    for seen in [
+        second.open(&link).await,
+        second.post("/invitation", &sent).await,
+    ] {
+        assert_eq!(seen.status, StatusCode::FORBIDDEN);
+        assert!(seen.words().contains("Ask a manager"), "{}", seen.words());
+    }
+    let people = desk.browser("manager").await.open("/people").await;
+    assert!(people.words().contains("nia") && !people.words().contains("good until"));
+}
+
+#[tokio::test]
+async fn an_invitation_taken_back_or_a_week_old_makes_none() {
+    let desk = Desk::start().await;
+    let old = invited(&desk, "Olga Old").await;
+    let mut tx = desk.app.db.begin_unkeyed().await.unwrap();
+    let a_week = sqlx::query_scalar::<_, i64>(
+        "SELECT count(*) FROM invitations WHERE julianday(expires_at) - julianday(created_at) = 7",
+    );
+    assert_eq!(a_week.fetch_one(&mut *tx).await.unwrap(), 1);
+    sqlx::query("UPDATE invitations SET expires_at = created_at")
+        .execute(&mut *tx)
+        .await
+        .unwrap();
+    tx.commit().await.unwrap();
+    let withdrawn = invited(&desk, "Tom Taken").await;
+    let manager = desk.browser("manager").await;
+    let list = manager.open("/people").await;
+    let html = list.html();
+    let form = scraper::Selector::parse("form[action^='/invitations/']").unwrap();
+    let actions: Vec<_> = html
+        .select(&form)
+        .map(|form| form.value().attr("action").unwrap())
+        .collect();
+    assert_eq!(actions.len(), 1, "one that is over stands on no list");
+    manager.fill(&list, actions[0], &[]).await;
+    for link in [
+        old,
+        withdrawn,
+        "/invitation?token=made-up".into(),
+        "/invitation".into(),
+    ] {
+        let seen = desk.stranger().open(&link).await;
+        assert_eq!(seen.status, StatusCode::FORBIDDEN, "{link}");
+    }
+}
+
+#[tokio::test]
+async fn a_token_shows_its_last_use_and_ends_when_it_is_over_or_revoked() {
+    let desk = Desk::start().await;
+    let manager = desk.browser("manager").await;
+    let make = async |name: &str| {
+        let fields = [("token_name", name), ("scope_read", "yes"), ("days", "3")];
+        let made = manager
+            .fill(&manager.open("/people").await, "/tokens", &fields)
+            .await;
+        made.texts("#token-secret").remove(0)
+    };
+    let get = async |token: &str| {
+        let request = reqwest::Client::new().get(format!("{}/api/v1/me", desk.address));
+        request.bearer_auth(token).send().await.unwrap().status()
+    };
+    let probe = make("Probe").await;
+    let page = manager.open("/people").await;
+    assert!(!page.text.contains(&probe), "shown once");
+    assert!(page.words().contains("never used"));
+    assert_eq!(get(&probe).await, 200);
+    let page = manager.open("/people").await;
+    assert!(page.words().contains("last used 20"), "{}", page.words());
+    let html = page.html();
+    let form = scraper::Selector::parse("form[action^='/tokens/']").unwrap();
+    let action = html
+        .select(&form)
+        .next()
+        .unwrap()
+        .value()
+        .attr("action")
+        .unwrap();
+    manager.fill(&page, action, &[]).await;
+    assert_eq!(get(&probe).await, 401);
+    let scale = make("Scale").await;
+    assert_eq!(get(&scale).await, 200);
+    let mut tx = desk.app.db.begin_unkeyed().await.unwrap();
+    sqlx::query("UPDATE api_tokens SET expires_at = created_at")
+        .execute(&mut *tx)
+        .await
+        .unwrap();
+    tx.commit().await.unwrap();
+    assert_eq!(get(&scale).await, 401);
+}
+
+#[tokio::test]
+async fn guesses_from_one_address_leave_the_owner_at_another_alone() {
+    let desk = Desk::start().await;
+    let browser = desk.stranger();
+    // As a proxy on the same machine says whom it speaks for; the last one it saw itself.
+    let try_from = async |address: &str, password: &str| {
+        let request = browser
+            .request("POST", "/sign-in")
+            .header("origin", &desk.address)
+            .header("x-forwarded-for", address)
+            .form(&[("login", "qa"), ("password", password)]);
+        request.send().await.unwrap().status()
+    };
+    let mut last = StatusCode::OK;
+    for spoofed in 0..14 {
+        let address = format!("10.9.9.{spoofed}, 203.0.113.7");
+        last = try_from(&address, "wrong password").await;
+    }
+    assert_eq!(last, StatusCode::TOO_MANY_REQUESTS);
+    assert_eq!(
+        try_from("203.0.113.7", crate::desk::PASSWORD).await,
+        StatusCode::TOO_MANY_REQUESTS
+    );
+    assert_eq!(
+        try_from("198.51.100.4", crate::desk::PASSWORD).await,
+        StatusCode::OK
+    );
+}

@@ -137,6 +137,9 @@ pub async fn set_pin(
     present: &str,
     pin: &str,
 ) -> Result<(), Error> {
+    if by.id != id {
+        by.may(Permission::KeepPeople)?;
+    }
     let pin = pin.trim();
     if let Some(message) = weakness(pin) {
         return Err(Error::field("pin", message));

@@ -48,6 +48,11 @@ async fn a_post_from_another_site_is_refused_whatever_it_carries() {
         "/sign-in",
         "/sign-out",
         "/people/new",
+        "/people/invite",
+        "/invitation",
+        "/tablets",
+        "/switch",
+        "/sign-in/pin",
         "/tokens",
         "/plans/new",
     ] {
@@ -272,6 +277,11 @@ async fn secrets_stand_nowhere_in_the_database() {
         )
         .await;
     let token = made.texts("#token-secret").remove(0);
+    let form = manager.open("/people/invite").await;
+    let fields = [("name", "Ivo Invited")];
+    let list = manager.fill(&form, "/people/invite", &fields).await;
+    let link = list.texts("#invitation-link").remove(0);
+    let invitation = link.split_once("token=").unwrap().1.to_owned();
     let (cookie, _) = signed_in(&desk, "qa").await;
     let session = cookie.split_once('=').unwrap().1.to_owned();
 
@@ -285,7 +295,7 @@ async fn secrets_stand_nowhere_in_the_database() {
     let copy = desk.file.with_file_name("copy.sqlite");
     desk.app.db.back_up(&copy).await.unwrap();
     let bytes = std::fs::read(&copy).unwrap();
-    for needle in [secret, &token, &session, PASSWORD] {
+    for needle in [secret, &token, &session, &invitation, PASSWORD] {
         let found = bytes
             .windows(needle.len())
             .any(|window| window == needle.as_bytes());

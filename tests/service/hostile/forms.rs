@@ -49,7 +49,7 @@ pub struct Offer {
 }
 
 /// One form of each shape that the pages offer with a button to send it, but for those that sign out, change a
-/// password or end a token, which would end the attack.
+/// password or make a tablet of the browser, which would end the attack.
 pub fn every_form(pages: &[Seen]) -> Vec<Offer> {
     let forms = Selector::parse("form[method='post']").unwrap();
     let inputs = Selector::parse("input[name], select[name], textarea[name]").unwrap();
@@ -77,7 +77,10 @@ pub fn every_form(pages: &[Seen]) -> Vec<Offer> {
             if form.select(&button).next().is_none() {
                 continue;
             }
-            if action == "/sign-out" || action.ends_with("/password") {
+            let ends = ["/sign-out", "/password"]
+                .iter()
+                .any(|end| action.ends_with(end));
+            if ends || action == "/tablets" {
                 continue;
             }
             let names: Vec<_> = fields.iter().map(|(name, _)| name.clone()).collect();
