@@ -19,7 +19,24 @@ pub struct Config {
     /// Fill a new database with an invented brewery and say so on every page.
     #[arg(long, env = "LEAT_DEMO", num_args = 0..=1, default_missing_value = "true", default_value_t = false)]
     pub demo: bool,
-    /// Send cookies over https only. Set it when browsers reach Leat by https.
+    /// Answer https by itself, with this certificate (PEM, with what leads to its root).
+    #[arg(
+        long,
+        env = "LEAT_TLS_CERTIFICATE",
+        value_name = "FILE",
+        requires = "tls_key"
+    )]
+    pub tls_certificate: Option<PathBuf>,
+    /// The private key of the certificate (PEM).
+    #[arg(
+        long,
+        env = "LEAT_TLS_KEY",
+        value_name = "FILE",
+        requires = "tls_certificate"
+    )]
+    pub tls_key: Option<PathBuf>,
+    /// Send cookies over https only. Set it when a proxy answers https for Leat; with a
+    /// certificate of its own Leat does so by itself.
     #[arg(long, env = "LEAT_SECURE_COOKIES", num_args = 0..=1, default_missing_value = "true", default_value_t = false)]
     pub secure_cookies: bool,
     /// What to log, for example info, warn or leat=debug.

@@ -46,7 +46,7 @@ async fn main() -> anyhow::Result<()> {
     }
 
     let server = Server::open(&config).await?;
-    tracing::info!("Leat answers at http://{}", server.address());
+    tracing::info!("Leat answers at {}", server.url());
     if let Some(address) = server.first_account_address().await? {
         tracing::info!("Nobody has an account yet. Make the first one at {address}");
     }

@@ -132,6 +132,8 @@ pub fn config(file: &std::path::Path) -> Config {
         database: file.to_owned(),
         listen: "127.0.0.1:0".parse().unwrap(),
         demo: false,
+        tls_certificate: None,
+        tls_key: None,
         secure_cookies: false,
         log: "warn".into(),
         log_json: false,

@@ -2,7 +2,7 @@
 
 use std::collections::BTreeSet;
 use std::io::{BufRead, BufReader};
-use std::path::Path;
+use std::path::{Path, PathBuf};
 use std::process::{Child, Command, Output, Stdio};
 use std::sync::{Arc, Mutex};
 use std::time::Duration;
@@ -205,6 +205,136 @@ async fn killed_again_and_again_while_it_writes_it_loses_nothing_it_answered() {
     assert_eq!(told.0, i64::try_from(expected.len()).unwrap());
 }
 
+/// A certificate for `localhost` and its key, as files.
+fn certificate(folder: &Path, name: &str) -> (PathBuf, PathBuf, Vec<u8>) {
+    let made = rcgen::generate_simple_self_signed(vec!["localhost".into()]).unwrap();
+    let (certificate, key) = (
+        folder.join(format!("{name}.pem")),
+        folder.join(format!("{name}.key")),
+    );
+    std::fs::write(&certificate, made.cert.pem()).unwrap();
+    std::fs::write(&key, made.signing_key.serialize_pem()).unwrap();
+    (certificate, key, made.cert.der().to_vec())
+}
+
+/// Sends one request over https, trusting this certificate alone, and reads the answer.
+async fn over_tls(port: &str, certificate: &[u8], request: &str) -> String {
+    use tokio::io::{AsyncReadExt, AsyncWriteExt};
+    use tokio_rustls::rustls::pki_types::{CertificateDer, ServerName};
+    use tokio_rustls::rustls::{ClientConfig, RootCertStore};
+    let mut roots = RootCertStore::empty();
+    roots
+        .add(CertificateDer::from(certificate.to_vec()))
+        .unwrap();
+    let config = ClientConfig::builder()
+        .with_root_certificates(roots)
+        .with_no_client_auth();
+    let connector = tokio_rustls::TlsConnector::from(Arc::new(config));
+    let stream = tokio::net::TcpStream::connect(format!("127.0.0.1:{port}")).await;
+    let name = ServerName::try_from("localhost").unwrap();
+    let mut stream = connector.connect(name, stream.unwrap()).await.unwrap();
+    stream.write_all(request.as_bytes()).await.unwrap();
+    let mut answer = Vec::new();
+    // The server may close without a last word of TLS.
+    let _ = stream.read_to_end(&mut answer).await;
+    String::from_utf8_lossy(&answer).into_owned()
+}
+
+#[tokio::test]
+async fn with_a_certificate_it_answers_https_keeps_cookies_there_and_ends_in_good_order() {
+    let folder = tempfile::tempdir().unwrap();
+    let file = folder.path().join("leat.sqlite");
+    let (certificate, key, der) = certificate(folder.path(), "one");
+    let mut command = leat(&file);
+    command.arg("--tls-certificate").arg(certificate);
+    command.arg("--tls-key").arg(key);
+    let mut running = Running::with(command);
+    let port = running
+        .address
+        .strip_prefix("https://127.0.0.1:")
+        .unwrap()
+        .to_owned();
+    let first = running.line("first one at ");
+    assert!(first.starts_with("https://"), "{first}");
+    let token = first.split_once("token=").unwrap().1;
+
+    let host = format!("localhost:{port}");
+    let open = format!("GET /sign-in HTTP/1.1\r\nhost: {host}\r\nconnection: close\r\n\r\n");
+    let page = over_tls(&port, &der, &open).await;
+    assert!(page.starts_with("HTTP/1.1 200"), "{page}");
+    let fields = format!("login=manager&name=Mara&password=open+the+sluice&token={token}");
+    let post = |origin: &str| {
+        format!(
+            "POST /first-account HTTP/1.1\r\nhost: {host}\r\norigin: {origin}\r\nconnection: close\r\n\
+             content-type: application/x-www-form-urlencoded\r\ncontent-length: {}\r\n\r\n{fields}",
+            fields.len()
+        )
+    };
+    let foreign = over_tls(&port, &der, &post("https://elsewhere.example")).await;
+    assert!(foreign.starts_with("HTTP/1.1 403"), "{foreign}");
+    let made = over_tls(&port, &der, &post(&format!("https://{host}"))).await;
+    assert!(made.starts_with("HTTP/1.1 303"), "{made}");
+    let cookie = made
+        .lines()
+        .find(|line| line.starts_with("set-cookie: leat_session="));
+    let cookie = cookie.unwrap();
+    assert!(
+        cookie.contains("; Secure") && cookie.contains("HttpOnly"),
+        "{cookie}"
+    );
+    // Plain http is not understood there.
+    assert!(
+        Client::new()
+            .get(format!("http://127.0.0.1:{port}/"))
+            .send()
+            .await
+            .is_err()
+    );
+
+    let process = running.process.id().to_string();
+    assert!(
+        Command::new("kill")
+            .args(["-TERM", &process])
+            .status()
+            .unwrap()
+            .success()
+    );
+    assert!(running.process.wait().unwrap().success());
+    assert!(
+        !file.with_extension("sqlite-wal").exists(),
+        "the log is folded in"
+    );
+}
+
+#[test]
+fn a_certificate_that_cannot_be_used_is_refused_with_the_names_of_its_settings() {
+    let folder = tempfile::tempdir().unwrap();
+    let file = folder.path().join("leat.sqlite");
+    let (certificate, key, _) = certificate(folder.path(), "one");
+    let (_, other_key, _) = self::certificate(folder.path(), "other");
+    let nothing = folder.path().join("nothing.pem");
+    for (certificate, key, name) in [
+        (Some(&nothing), Some(&key), "LEAT_TLS_CERTIFICATE"),
+        (Some(&certificate), Some(&nothing), "LEAT_TLS_KEY"),
+        (Some(&certificate), Some(&other_key), "LEAT_TLS_KEY"),
+        (Some(&key), Some(&key), "LEAT_TLS_CERTIFICATE"),
+        (Some(&certificate), None, "--tls-key"),
+        (None, Some(&key), "--tls-certificate"),
+    ] {
+        let mut command = leat(&file);
+        if let Some(certificate) = certificate {
+            command.env("LEAT_TLS_CERTIFICATE", certificate);
+        }
+        if let Some(key) = key {
+            command.env("LEAT_TLS_KEY", key);
+        }
+        let output = command.output().unwrap();
+        assert!(!output.status.success());
+        assert!(words(&output).contains(name), "{}", words(&output));
+    }
+    assert!(!file.exists());
+}
+
 async fn enter(
     client: &Client,
     address: &str,
@@ -229,7 +359,10 @@ struct Running {
 
 impl Running {
     fn start(file: &Path) -> Self {
-        let mut command = leat(file);
+        Self::with(leat(file))
+    }
+
+    fn with(mut command: Command) -> Self {
         command.args(["--listen", "127.0.0.1:0"]);
         let mut process = command.stderr(Stdio::piped()).spawn().unwrap();
         let log = BufReader::new(process.stderr.take().unwrap());
