@@ -78,6 +78,10 @@ ids! {
     MaterialId;
     /// One lot of a material.
     MaterialLotId;
+    /// A delivery or a count of a lot of a material.
+    MovementId;
+    /// A certificate or a safety data sheet.
+    AttachmentId;
     /// A malt.
     MaltId;
     /// One lot of a malt.

@@ -10,7 +10,8 @@ use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
 use super::entered::{NewMaterialBody, NewMaterialLotBody, StrengthBody};
-use super::{Material, MaterialLot, operations};
+use super::stock::{Levels, Stock};
+use super::{Material, MaterialLot, operations, warnings};
 use crate::brewery;
 use crate::db::Db;
 use crate::error::Error;
@@ -35,6 +36,13 @@ pub struct MaterialBody {
     unit: &'static str,
     /// What every calculation takes without a lot.
     in_force: InForceBody,
+    /// How much there is of its lots on the shelf, g or mL; absent where none was counted.
+    stock_g_or_ml: Option<f64>,
+    /// How many of its lots on the shelf were never counted.
+    lots_not_counted: usize,
+    /// What to look after: `low`, and of its current lot `overdrawn`, `past_use_by`,
+    /// `near_use_by`, `open_long`.
+    warnings: Vec<&'static str>,
     /// What whoever weighs it must know.
     cautions: Vec<&'static str>,
 }
@@ -88,14 +96,46 @@ impl InForceBody {
     }
 }
 
+/// What bodies are made with: the stock and the day.
+struct Now {
+    levels: Levels,
+    current: Vec<MaterialLot>,
+    today: Date,
+}
+
+impl Now {
+    async fn read(db: &Db) -> Result<Self, Error> {
+        let (levels, current) = operations::now(db).await?;
+        Ok(Self {
+            levels,
+            current,
+            today: brewery::operations::today(db).await?,
+        })
+    }
+
+    fn of_lot(&self, id: MaterialLotId) -> Option<Stock> {
+        self.levels.lot(id).and_then(|level| level.stock)
+    }
+}
+
 impl MaterialBody {
-    fn of(material: &Material, today: Date) -> Self {
+    fn of(material: &Material, now: &Now) -> Self {
+        let level = now.levels.material(material.id);
+        let current = now
+            .current
+            .iter()
+            .find(|lot| lot.material_id == material.id);
+        let in_hand = current.map(|lot| (lot, now.of_lot(lot.id)));
+        let warnings = warnings::of_material(material, level, in_hand, now.today);
         Self {
+            stock_g_or_ml: level.stock.map(Stock::get),
+            lots_not_counted: level.not_counted,
+            warnings: warnings.iter().map(|warning| warning.key()).collect(),
             id: material.id,
             version: material.version,
             entered: material.into(),
             unit: material.unit().symbol(),
-            in_force: InForceBody::of(material, None, today),
+            in_force: InForceBody::of(material, None, now.today),
             cautions: material.substance.cautions(),
         }
     }
@@ -113,18 +153,27 @@ pub struct MaterialLotBody {
     /// As it was entered.
     #[serde(flatten)]
     entered: NewMaterialLotBody,
+    /// How much there is, g or mL; below zero where more was weighed out than came, absent
+    /// where nobody counted it and no delivery was entered.
+    stock_g_or_ml: Option<f64>,
+    /// What to look after: `overdrawn`, `past_use_by`, `near_use_by`, `open_long`.
+    warnings: Vec<&'static str>,
     /// What every calculation takes with this lot.
     in_force: InForceBody,
 }
 
 impl MaterialLotBody {
-    fn of(material: &Material, lot: &MaterialLot, today: Date) -> Self {
+    fn of(material: &Material, lot: &MaterialLot, now: &Now) -> Self {
+        let there = now.of_lot(lot.id);
+        let warnings = warnings::of_lot(material, lot, there, now.today);
         Self {
+            stock_g_or_ml: there.map(Stock::get),
+            warnings: warnings.iter().map(|warning| warning.key()).collect(),
             id: lot.id,
             material_id: lot.material_id,
             version: lot.version,
             entered: lot.into(),
-            in_force: InForceBody::of(material, Some(lot), today),
+            in_force: InForceBody::of(material, Some(lot), now.today),
         }
     }
 }
@@ -150,12 +199,12 @@ async fn list(
     by: Member,
     Query(query): Query<ListQuery>,
 ) -> Result<axum::Json<Listed<MaterialBody>>, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     let limit = query.limit()?;
     let found = operations::page(&db, &by, query.after()?, limit + 1).await?;
     let bodies = found
         .iter()
-        .map(|material| MaterialBody::of(material, today))
+        .map(|material| MaterialBody::of(material, &now))
         .collect();
     Ok(axum::Json(Listed::cut(
         bodies,
@@ -176,7 +225,7 @@ async fn create(
     by: Member,
     Json(body): Json<NewMaterialBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     by.may(Permission::KeepShelf)?;
     let material = operations::create(&db, &by, body.try_into()?).await?;
     let location = format!("/api/v1/materials/{}", material.id);
@@ -184,7 +233,7 @@ async fn create(
         StatusCode::CREATED,
         [(header::LOCATION, location)],
         etag(material.version),
-        axum::Json(MaterialBody::of(&material, today)),
+        axum::Json(MaterialBody::of(&material, &now)),
     ))
 }
 
@@ -200,11 +249,11 @@ async fn show(
     by: Member,
     At(id): At<MaterialId>,
 ) -> Result<impl IntoResponse, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     let material = operations::find(&db, &by, id).await?;
     Ok((
         etag(material.version),
-        axum::Json(MaterialBody::of(&material, today)),
+        axum::Json(MaterialBody::of(&material, &now)),
     ))
 }
 
@@ -224,12 +273,12 @@ async fn revise(
     headers: HeaderMap,
     Json(body): Json<NewMaterialBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     by.may(Permission::KeepShelf)?;
     let material = operations::revise(&db, &by, id, body.try_into()?, if_match(&headers)?).await?;
     Ok((
         etag(material.version),
-        axum::Json(MaterialBody::of(&material, today)),
+        axum::Json(MaterialBody::of(&material, &now)),
     ))
 }
 
@@ -247,13 +296,13 @@ async fn list_lots(
     At(id): At<MaterialId>,
     Query(query): Query<ListQuery>,
 ) -> Result<axum::Json<Listed<MaterialLotBody>>, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     let limit = query.limit()?;
     let material = operations::find(&db, &by, id).await?;
     let lots = operations::page_of_lots(&db, &by, id, query.after()?, limit + 1).await?;
     let bodies = lots
         .iter()
-        .map(|lot| MaterialLotBody::of(&material, lot, today))
+        .map(|lot| MaterialLotBody::of(&material, lot, &now))
         .collect();
     Ok(axum::Json(Listed::cut(
         bodies,
@@ -276,7 +325,7 @@ async fn create_lot(
     At(id): At<MaterialId>,
     Json(body): Json<NewMaterialLotBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     let material = operations::find(&db, &by, id).await?;
     let lot = operations::create_lot(&db, &by, id, body).await?;
     let location = format!("/api/v1/materials/{id}/lots/{}", lot.id);
@@ -284,7 +333,7 @@ async fn create_lot(
         StatusCode::CREATED,
         [(header::LOCATION, location)],
         etag(lot.version),
-        axum::Json(MaterialLotBody::of(&material, &lot, today)),
+        axum::Json(MaterialLotBody::of(&material, &lot, &now)),
     ))
 }
 
@@ -300,11 +349,11 @@ async fn show_lot(
     by: Member,
     At((id, lot_id)): At<(MaterialId, MaterialLotId)>,
 ) -> Result<impl IntoResponse, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     let (material, lot) = operations::find_lot_of(&db, &by, id, lot_id).await?;
     Ok((
         etag(lot.version),
-        axum::Json(MaterialLotBody::of(&material, &lot, today)),
+        axum::Json(MaterialLotBody::of(&material, &lot, &now)),
     ))
 }
 
@@ -324,12 +373,12 @@ async fn revise_lot(
     headers: HeaderMap,
     Json(body): Json<NewMaterialLotBody>,
 ) -> Result<impl IntoResponse, Error> {
-    let today = brewery::operations::today(&db).await?;
+    let now = Now::read(&db).await?;
     by.may(Permission::KeepLots)?;
     let (material, _) = operations::find_lot_of(&db, &by, id, lot_id).await?;
     let lot = operations::revise_lot(&db, &by, lot_id, body, if_match(&headers)?).await?;
     Ok((
         etag(lot.version),
-        axum::Json(MaterialLotBody::of(&material, &lot, today)),
+        axum::Json(MaterialLotBody::of(&material, &lot, &now)),
     ))
 }

@@ -4,7 +4,7 @@
 //! the certificate says and when the pack was opened. [`Material::chemistry`] turns
 //! both into what every calculation uses. Figures nobody has entered are the usual
 //! ones of the substance, and are called assumed wherever they are shown. How much is
-//! left on the shelf is not counted.
+//! there follows from deliveries, counts and doses: see [`stock`].
 
 use chemistry::ion::Ion;
 use chemistry::material::{self, DoseUnit, Form, MaterialError, Strength, Substance, Vessel};
@@ -18,7 +18,9 @@ pub mod api;
 pub mod entered;
 pub mod operations;
 pub mod pages;
+pub mod stock;
 pub mod store;
+pub mod warnings;
 pub mod words;
 
 /// What one kilogram of a solid or one litre of a liquid costs, in the brewery's
@@ -122,11 +124,16 @@ pub struct MaterialLot {
 }
 
 impl MaterialLot {
-    /// How long it has stood open on a day since it was opened, or last assayed by the
-    /// brewery; `None` where it is sealed.
-    pub fn open_for(&self, on: Date) -> Option<Days> {
+    /// Since when it has stood open without an assay by the brewery: `None` where it is
+    /// sealed.
+    pub fn open_since(&self) -> Option<Date> {
         let opened = self.opened_on?;
-        let since = self.assayed_on.map_or(opened, |day| day.max(opened));
+        Some(self.assayed_on.map_or(opened, |day| day.max(opened)))
+    }
+
+    /// How long that is on a day.
+    pub fn open_for(&self, on: Date) -> Option<Days> {
+        let since = self.open_since()?;
         let days = (on - since).get_days();
         Some(Days::clamped(f64::from(days)))
     }

@@ -4,6 +4,7 @@ use chemistry::material::Substance;
 use sqlx::SqliteConnection;
 
 use super::entered::{NewMaterialBody, NewMaterialLotBody};
+use super::stock::{self, Levels};
 use super::{Material, MaterialLot, store};
 use crate::brewery;
 use crate::db::Db;
@@ -38,6 +39,14 @@ pub async fn list_with_lots(
             (material, lot)
         })
         .collect())
+}
+
+/// How much there is of everything, and the lot of every material that is weighed from.
+/// No permission is asked: it goes with what was read or written under one.
+pub async fn now(db: &Db) -> Result<(Levels, Vec<MaterialLot>), Error> {
+    let mut snapshot = db.snapshot().await?;
+    let levels = stock::operations::levels(&mut snapshot).await?;
+    Ok((levels, store::current_lots(&mut snapshot).await?))
 }
 
 /// The materials a plan may use, each with the lot it is weighed from, by name.
@@ -199,9 +208,17 @@ pub async fn find_lot_of(
     lot: MaterialLotId,
 ) -> Result<(Material, MaterialLot), Error> {
     by.may(Permission::Read)?;
-    let mut snapshot = db.snapshot().await?;
-    let material = known(store::find(&mut snapshot, material).await?)?;
-    let lot = store::find_lot(&mut snapshot, lot).await?;
+    lot_of_material(&mut *db.snapshot().await?, material, lot).await
+}
+
+/// One lot of this material, with the material. No permission is asked.
+pub async fn lot_of_material(
+    conn: &mut SqliteConnection,
+    material: MaterialId,
+    lot: MaterialLotId,
+) -> Result<(Material, MaterialLot), Error> {
+    let material = known(store::find(conn, material).await?)?;
+    let lot = store::find_lot(conn, lot).await?;
     let lot = known_lot(lot.filter(|lot| lot.material_id == material.id))?;
     Ok((material, lot))
 }

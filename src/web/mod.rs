@@ -90,6 +90,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::record::pages::routes())
         .merge(crate::brewery::pages::routes())
         .merge(crate::shelf::pages::routes())
+        .merge(crate::shelf::stock::pages::routes())
         .merge(crate::malts::pages::routes())
         .merge(crate::beers::pages::routes())
         .merge(crate::plans::pages::routes())
@@ -115,6 +116,7 @@ pub fn router(app: App) -> Router {
         .merge(crate::plans::api::routes())
         .merge(crate::meters::api::routes())
         .merge(crate::shelf::api::routes())
+        .merge(crate::shelf::stock::api::routes())
         .merge(crate::sources::api::routes())
         .merge(crate::malts::api::routes())
         .split_for_parts();

@@ -7,12 +7,14 @@ use axum::response::{IntoResponse, Redirect, Response};
 use chemistry::material::{Role, Substance};
 use jiff::civil::Date;
 
-use super::PAGE;
+use super::{PAGE, WarningRow};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::MaterialId;
 use crate::people::Permission;
-use crate::shelf::{Material, MaterialLot, Price, operations, words};
+use crate::shelf::stock::{self, Levels};
+use crate::shelf::words::{self, Measures};
+use crate::shelf::{Material, MaterialLot, Price, operations, warnings};
 use crate::web::form::Form;
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
@@ -42,6 +44,9 @@ struct MaterialRow {
     price: String,
     vessels: String,
     avoid: bool,
+    stock: String,
+    not_counted: usize,
+    warnings: Vec<WarningRow>,
 }
 
 /// A substance the empty shelf offers.
@@ -78,6 +83,7 @@ fn sort(shelf: &mut [(Material, Option<MaterialLot>)], by: &Sorted) {
 async fn list_page(db: &Db, framer: &Framer, typed: Form) -> Result<ListPage, Error> {
     let retired = typed.ticked("retired");
     let mut shelf = operations::list_with_lots(db, &framer.member).await?;
+    let levels = stock::operations::all(db, &framer.member).await?;
     let empty = shelf.is_empty();
     shelf.retain(|(material, _)| material.in_use != retired);
     let sorted = Sorted::asked(&typed, &COLUMNS);
@@ -94,7 +100,7 @@ async fn list_page(db: &Db, framer: &Framer, typed: Form) -> Result<ListPage, Er
         columns: sorted.columns(address, &COLUMNS),
         materials: shelf
             .iter()
-            .map(|(material, lot)| material_row(material, lot.as_ref(), &page, today))
+            .map(|(material, lot)| material_row(material, lot.as_ref(), &levels, (&page, today)))
             .collect(),
         pager,
         retired,
@@ -108,9 +114,13 @@ async fn list_page(db: &Db, framer: &Framer, typed: Form) -> Result<ListPage, Er
 fn material_row(
     material: &Material,
     lot: Option<&MaterialLot>,
-    page: &Page,
-    today: Date,
+    levels: &Levels,
+    (page, today): (&Page, Date),
 ) -> MaterialRow {
+    let level = levels.material(material.id);
+    let in_hand = lot.map(|lot| (lot, levels.lot(lot.id).and_then(|level| level.stock)));
+    let warnings = warnings::of_material(material, level, in_hand, today);
+    let measures = Measures::of(material.substance);
     MaterialRow {
         id: material.id,
         name: material.name.clone(),
@@ -122,6 +132,9 @@ fn material_row(
         price: words::price(material, &page.settings),
         vessels: words::vessels(&material.vessels),
         avoid: material.avoid,
+        stock: stock::words::stock(page.settings.units, measures, level.stock),
+        not_counted: level.not_counted,
+        warnings: warnings.into_iter().map(WarningRow::of).collect(),
     }
 }
 

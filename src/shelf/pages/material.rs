@@ -7,17 +7,20 @@ use axum::response::{IntoResponse, Redirect, Response};
 use chemistry::material::{Form as Solidity, Role, Substance, Vessel};
 use jiff::civil::Date;
 
-use super::{PAGE, SubstanceWords, day};
+use super::{PAGE, SubstanceWords, WarningRow, day};
 use crate::brewery::{self, Units};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MaterialId, MaterialLotId};
 use crate::people::Permission;
 use crate::shelf::entered::NewMaterialBody;
+use crate::shelf::stock::{self, Stock};
+use crate::shelf::warnings;
 use crate::shelf::words::{self, BringsRow, Measures};
 use crate::shelf::{Material, MaterialLot, operations};
 use crate::web::extract::At;
 use crate::web::form::Form;
+use crate::web::format;
 use crate::web::layout::{Framer, Page};
 use crate::web::list::Pager;
 use crate::web::units::{shown_in, typed_in_si};
@@ -50,6 +53,10 @@ pub(super) struct ShowPage {
     solubility: Option<&'static str>,
     per_batch: String,
     brings: Vec<BringsRow>,
+    stock: String,
+    counted: bool,
+    not_counted: usize,
+    warnings: Vec<WarningRow>,
     lots: Vec<LotRow>,
     pager: Option<Pager>,
 }
@@ -60,21 +67,29 @@ struct LotRow {
     received_on: String,
     opened_on: String,
     use_by: String,
-    overdue: bool,
+    stock: String,
+    warnings: Vec<WarningRow>,
     strength: String,
     how_known: &'static str,
     current: bool,
     used_up: bool,
 }
 
-fn lot_row(material: &Material, lot: &MaterialLot, today: Date) -> LotRow {
+fn lot_row(
+    material: &Material,
+    lot: &MaterialLot,
+    stock: Option<Stock>,
+    (units, today): (Units, Date),
+) -> LotRow {
+    let warnings = warnings::of_lot(material, lot, stock, today);
     LotRow {
         id: lot.id,
         code: lot.code.clone(),
         received_on: day(lot.received_on),
         opened_on: day(lot.opened_on),
         use_by: day(lot.use_by),
-        overdue: lot.in_use && lot.use_by.is_some_and(|date| date < today),
+        stock: stock::words::stock(units, Measures::of(material.substance), stock),
+        warnings: warnings.into_iter().map(WarningRow::of).collect(),
         strength: words::strength(&material.chemistry(Some(lot), today)),
         how_known: material.how_known(Some(lot)),
         current: lot.current,
@@ -92,12 +107,17 @@ pub(super) async fn show(
     let lots = operations::lots(&db, &framer.member, id).await?;
     let current = lots.iter().find(|lot| lot.current).cloned();
     let current = current.as_ref();
-    let today = brewery::operations::today(&db).await?;
+    let levels = stock::operations::all(&db, &framer.member).await?;
+    let stock_of = |id| levels.lot(id).and_then(|level| level.stock);
+    let level = levels.material(id);
     let (lots, pager) = Pager::cut(lots, PAGE, &typed, &format!("/shelf/{id}"));
     let page = framer.page(&material.name, "shelf").await;
     let units = page.settings.units;
+    let today = format::today(&page.settings.time_zone);
     let measures = Measures::of(material.substance);
     let substance = material.substance;
+    let in_hand = current.map(|lot| (lot, stock_of(lot.id)));
+    let warnings = warnings::of_material(&material, level, in_hand, today);
     let brought = words::quoted_dose(measures, units);
     Ok(ShowPage {
         what: words::beside_name(&material),
@@ -127,9 +147,13 @@ pub(super) async fn show(
         solubility: substance.solubility_note(),
         per_batch: words::amount(units, measures.per_batch, brought),
         brings: words::brings(&material.brings(current, today, brought)),
+        stock: stock::words::stock(units, measures, level.stock),
+        counted: level.stock.is_some(),
+        not_counted: level.not_counted,
+        warnings: warnings.into_iter().map(WarningRow::of).collect(),
         lots: lots
             .iter()
-            .map(|lot| lot_row(&material, lot, today))
+            .map(|lot| lot_row(&material, lot, stock_of(lot.id), (units, today)))
             .collect(),
         pager,
         page,

@@ -6,6 +6,7 @@ use axum::routing::{get, post};
 use chemistry::material::{Form as Solidity, Substance};
 use jiff::civil::Date;
 
+use super::warnings::Warning;
 use super::{Material, words};
 use crate::web::App;
 
@@ -28,14 +29,30 @@ pub fn routes() -> Router<App> {
             get(material::edit).post(material::revise),
         )
         .route("/shelf/{id}/lots/new", get(lot::new).post(lot::create))
+        .route("/shelf/{id}/lots/{lot_id}", get(lot::show))
         .route(
-            "/shelf/{id}/lots/{lot_id}",
+            "/shelf/{id}/lots/{lot_id}/edit",
             get(lot::edit).post(lot::revise),
         )
 }
 
 fn day(date: Option<Date>) -> String {
     date.map(|date| date.to_string()).unwrap_or_default()
+}
+
+/// Something to look after, as a badge.
+struct WarningRow {
+    badge: &'static str,
+    words: String,
+}
+
+impl WarningRow {
+    fn of(warning: Warning) -> Self {
+        Self {
+            badge: warning.badge(),
+            words: warning.words(),
+        }
+    }
 }
 
 /// What a form says of the substance it is about.
