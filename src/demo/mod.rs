@@ -1,5 +1,5 @@
 //! An invented brewery to try Leat with: three sources with two years of tests, six
-//! beers from very pale to very dark, a stocked shelf, plans in every state.
+//! beers from very pale to very dark, a stocked shelf, two pH meters, plans in every state.
 //!
 //! Everything goes in through the same operations as real entries do, checked and
 //! written down. Nothing in it is a measurement, and it proves nothing.
@@ -23,9 +23,11 @@ use crate::shelf;
 use crate::web::format;
 
 mod batches;
+mod meters;
 mod water;
 
 use batches::fill_plans;
+use meters::fill_meters;
 use water::fill_sources;
 
 /// The password of everybody in the invented brewery. The page to sign in says so.
@@ -52,7 +54,8 @@ pub async fn fill(db: &Db, passwords: &Passwords) -> Result<(), Error> {
     fill_shelf(db, &manager, today).await?;
     let malts = fill_malts(db, &manager, today).await?;
     let beers = fill_beers(db, &manager, &malts).await?;
-    fill_plans(db, &manager, today, &beers, &mut chance).await
+    fill_plans(db, &manager, today, &beers, &mut chance).await?;
+    fill_meters(db, &manager, &mut chance).await
 }
 
 fn account(login: &str, name: &str, role: &str) -> Result<NewAccount, Error> {
