@@ -22,6 +22,8 @@ export async function mainPages(page) {
   const test = await first(page, source, "/water-tests/", "tbody");
   const material = await first(page, "/shelf", "/shelf/", "tbody");
   const malt = await first(page, "/malts", "/malts/", "tbody");
+  const meter = await first(page, "/meters", "/meters/", "tbody");
+  const calibration = await first(page, meter, `${meter}/calibrations/`, "tbody");
   const beer = await first(page, "/beers", "/beers/", "tbody");
   const check = await first(page, closed, `${closed}/mash-checks/`);
   return Object.entries({
@@ -31,7 +33,9 @@ export async function mainPages(page) {
     "beers": "/beers", "beer": beer, "beer-new": "/beers/new", "beer-edit": `${beer}/edit`,
     "sources": "/sources", "source": source, "source-new": "/sources/new", "test": test, "test-new": `${source}/water-tests/new`,
     "shelf": "/shelf", "material": material, "material-new": "/shelf/new", "material-edit": `${material}/edit`,
-    "malts": "/malts", "malt": malt, "malt-new": "/malts/new", "record": "/record", "people": "/people", "person-new": "/people/new",
+    "malts": "/malts", "malt": malt, "malt-new": "/malts/new", "meters": "/meters", "meter": meter, "meter-new": "/meters/new", "calibration": calibration,
+    "calibrate-mv": `${meter}/calibrations/new?method=millivolts`, "calibrate-ph": `${meter}/calibrations/new?method=ph`,
+    "calibrate-display": `${meter}/calibrations/new?method=display`, "record": "/record", "people": "/people", "person-new": "/people/new",
     "settings": "/settings", "help": "/help", "help-api": "/help/api",
   }).map(([name, address]) => ({ name, address }));
 }

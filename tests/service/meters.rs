@@ -703,5 +703,5 @@ async fn slope_and_offset_are_drawn_once_there_are_two_calibrations() {
         "{}",
         page.words()
     );
-    assert!(page.words().contains("1 to 25 of 40"), "{}", page.words());
+    assert!(page.words().contains("1 to 10 of 40"), "{}", page.words());
 }

@@ -27,7 +27,7 @@ use crate::web::list::Pager;
 mod calibration;
 
 /// Calibrations on one page.
-const PAGE: usize = 25;
+const PAGE: usize = 10;
 
 /// The pages.
 pub fn routes() -> Router<App> {
