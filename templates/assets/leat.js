@@ -4,7 +4,6 @@
 //       data-live-method) and replaces the target with the HTML fragment that comes back
 //   <select data-autosubmit>        or a form: submits on change
 //   <button data-confirm="…?">      asks first
-//   <span data-countdown="600" data-countdown-done="Read the mash now">  counts whole seconds down
 //   every POST form                 is sent once; its buttons rest until the answer comes
 //
 // Plain http on the brewery's own network: nothing here needs a secure context.
@@ -62,7 +61,6 @@
       if (whole) target.replaceWith(whole);
       else { target.replaceChildren(holder.content); settle(target); }
       restore(whole || target, was);
-      countdowns();
     } catch (problem) {
       if (problem.name === "AbortError") return;
       target.removeAttribute("aria-busy");
@@ -118,24 +116,5 @@
     if (event.persisted) document.querySelectorAll("form[data-sent]").forEach((form) => rest(form, false));
   });
 
-  function countdowns() {
-    for (const clock of document.querySelectorAll("[data-countdown]:not([data-ends])")) {
-      clock.dataset.ends = performance.now() + 1000 * Number(clock.dataset.countdown);
-    }
-    tick();
-  }
-
-  function tick() {
-    for (const clock of document.querySelectorAll("[data-ends]:not(.over)")) {
-      const left = Math.ceil((Number(clock.dataset.ends) - performance.now()) / 1000);
-      if (left > 0) { clock.textContent = "in " + Math.floor(left / 60) + ":" + String(left % 60).padStart(2, "0"); continue; }
-      clock.textContent = clock.dataset.countdownDone || "now";
-      clock.classList.add("over");
-      clock.setAttribute("role", "alert");
-    }
-  }
-
-  countdowns();
-  setInterval(tick, 1000);
   document.querySelector(".problem-summary")?.focus();
 })();

@@ -42,3 +42,14 @@ export async function approvedPlan(leat, token) {
   await ask(leat, token, "POST", `${plan}/approval`, {}, 201);
   return plan;
 }
+
+/** A meter calibrated just now, as its own display tells it, in fresh buffers 7 and 4. */
+export async function calibratedMeter(leat, token) {
+  const { id } = await ask(leat, token, "POST", "/meters", { name: `Bench meter ${Date.now()}`, kind: "bench", compensated: true, in_use: true }, 201);
+  const calibration = {
+    calibrated_at: "", method: "display", temperature_c: 20, slope: 97, offset_mv: 5,
+    buffers: [{ buffer: "technical_7" }, { buffer: "technical_4" }],
+  };
+  await ask(leat, token, "POST", `/meters/${id}/calibrations`, calibration, 201);
+  return id;
+}

@@ -111,7 +111,9 @@ export async function openWindow(browser, leat, options = {}) {
   context.on("console", (message) => {
     // A refused form comes back with 4xx, which Chromium also writes to its console.
     const refused = /the server responded with a status of 4(09|22)/.test(message.text());
-    if (["error", "warning"].includes(message.type()) && !refused) complaints.push(`console: ${message.text()}`);
+    // So do we, for the service worker: it would answer where a test stands in for the network.
+    const blocked = message.text().startsWith("Service Worker registration blocked");
+    if (["error", "warning"].includes(message.type()) && !refused && !blocked) complaints.push(`console: ${message.text()}`);
   });
   context.on("weberror", (error) => complaints.push(`script: ${error.error()}`));
   const page = await context.newPage();

@@ -9,7 +9,7 @@ use axum::routing::{get, post};
 use chemistry::kettle;
 use chemistry::reading::WARMEST_SAMPLE;
 
-use super::check_page;
+use super::{check_page, read_again};
 use crate::brewery::Units;
 use crate::db::Db;
 use crate::error::Error;
@@ -19,7 +19,7 @@ use crate::people::Permission;
 use crate::plans::asked::{METER_SD, NewMashCheckBody};
 use crate::plans::mash_checks::{self, NewMashCheck, expected};
 use crate::plans::pages::check_address;
-use crate::plans::{MashCheck, Plan, Stage, State as PlanState, compute, operations};
+use crate::plans::{MashCheck, Plan, Stage, State as PlanState, compute, operations, readiness};
 use crate::web::App;
 use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
@@ -60,6 +60,8 @@ struct NewCheckPage {
     /// What is expected or where the window lies.
     lead: String,
     not_in: Vec<String>,
+    /// When the mash is to be read again: the moment, and the brewery's clock.
+    again: Option<(String, String)>,
     /// Whether something looks mistyped and may be confirmed.
     asked: bool,
     /// What a hot sample would be worth.
@@ -95,6 +97,9 @@ async fn new_check_page(
         "" => meters[0].0.clone(),
         chosen => chosen.to_owned(),
     };
+    let again = readiness::of_plan(db, &framer.member, id)
+        .await?
+        .and_then(|open| read_again(&open, &page.settings.time_zone));
     let closed = plan.state == PlanState::Closed;
     let not_in = plan
         .doses
@@ -113,6 +118,7 @@ async fn new_check_page(
         temperature_unit: units.label(Measure::Temperature),
         volume_unit: units.label(Measure::Volume),
         lead: lead(&plan, stage, &checks),
+        again: again.filter(|_| stage == Stage::Mash),
         not_in: if stage == Stage::Mash {
             not_in
         } else {

@@ -62,6 +62,8 @@ struct Card {
     progress: Vec<String>,
     missing: Vec<MissingRow>,
     next: Step,
+    /// When the mash is to be read again: the moment, and the brewery's clock.
+    again: Option<(String, String)>,
     /// What else waits, where the next thing interrupts it.
     other: Option<Step>,
 }
@@ -130,6 +132,7 @@ fn card(batch: Batch, today: Date, page: &Page) -> Card {
         progress: progress(&batch),
         missing: missing_rows(&batch, page),
         next: next(&batch, page),
+        again: read_again(&batch, &page.settings.time_zone),
         other: waiting(&batch),
         batch,
     }
@@ -208,6 +211,13 @@ fn next(batch: &Batch, page: &Page) -> Step {
         },
         allowed,
     }
+}
+
+/// When the mash of a batch is to be read again: the moment, and the same by the
+/// brewery's clock.
+pub(super) fn read_again(batch: &Batch, time_zone: &str) -> Option<(String, String)> {
+    let at = batch.next.due_at()?;
+    Some((at.to_string(), format::clock(at, time_zone)))
 }
 
 /// The rest of the weigh-out, where the mash comes first.

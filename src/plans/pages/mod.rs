@@ -17,7 +17,7 @@ use crate::input::Problems;
 use crate::people::Permission;
 use crate::plans::asked::TreatmentBody;
 use crate::plans::bodies::InputsBody;
-use crate::plans::brew_day::{MissingRow, missing_rows};
+use crate::plans::brew_day::{MissingRow, missing_rows, read_again};
 use crate::plans::closing::lesson;
 use crate::plans::decisions;
 use crate::plans::inputs::Inputs;
@@ -96,6 +96,8 @@ struct ShowPage {
     trial: bool,
     /// What it lacks, under these words.
     missing: (&'static str, Vec<MissingRow>),
+    /// When the mash is to be read again: the moment, and the brewery's clock.
+    again: Option<(String, String)>,
 }
 
 struct ShareRow {
@@ -261,7 +263,9 @@ async fn show_page(
     let units = page.settings.units;
     let zone = page.settings.time_zone.clone();
     let lesson = lesson(db, &framer.member, &plan).await?;
-    let missing = match readiness::of_plan(db, &framer.member, id).await? {
+    let open = readiness::of_plan(db, &framer.member, id).await?;
+    let again = open.as_ref().and_then(|open| read_again(open, &zone));
+    let missing = match open {
         Some(open) if open.lines_in > 0 => ("Before it goes on", missing_rows(&open, &page)),
         Some(open) => ("Before it can start", missing_rows(&open, &page)),
         None => ("", Vec::new()),
@@ -347,6 +351,7 @@ async fn show_page(
         cautions: sheet::cautions(&plan),
         trial: tried.is_some(),
         missing,
+        again,
         mash_now: mash_checks::expected::now(&plan, &checks).map(|now| {
             (
                 format!(
