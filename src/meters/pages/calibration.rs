@@ -96,10 +96,9 @@ impl Line {
 }
 
 async fn form(framer: &Framer, meter: Meter, typed: Form) -> CalibratePage {
-    let page = framer
-        .page(format!("Calibrate {}", meter.name), "meters")
-        .await;
     let method = Method::from_key(typed.value("method")).unwrap_or(Method::Millivolts);
+    let title = format!("Calibrate {}: {}", meter.name, method.name());
+    let page = framer.page(title, "meters").await;
     let units = page.settings.units;
     let last = POINTS.end() - 1;
     let more: Vec<Line> = (OFFERED..=last)
