@@ -18,10 +18,14 @@ use reqwest::{Client, StatusCode};
 use scraper::{Html, Selector};
 
 const PROGRAM: &str = env!("CARGO_BIN_EXE_leat");
+/// The password of everybody in the demo.
+const PASSWORD: &str = "open the sluice";
 /// 95 of 100 answers with any page come within this.
 const PAGE_MS: f64 = 10.0;
 /// The page of a plan works its treatment out again, in four ways.
 const PLAN_MS: f64 = 30.0;
+/// From the PIN typed on a shared tablet to the page behind it, with the hash.
+const SWITCH_MS: f64 = 400.0;
 const START_MS: f64 = 300.0;
 const RESIDENT_MB: f64 = 64.0;
 const PROGRAM_MB: f64 = 40.0;
@@ -51,6 +55,9 @@ async fn main() -> ExitCode {
     drop(server);
     let (server, start_ms) = Server::start(&client, &file, false).await;
     promises.hold("start to first answer", start_ms, START_MS, "ms");
+
+    let switch_ms = server.switch_ms().await;
+    promises.hold("switch by PIN on a tablet", switch_ms, SWITCH_MS, "ms");
 
     server.sign_in(&client).await;
     let kinds = server.walk(&client).await;
@@ -175,16 +182,49 @@ impl Server {
         (answer.status(), answer.text().await.expect("text"))
     }
 
-    async fn sign_in(&self, client: &Client) {
-        let fields = [("login", "manager"), ("password", "open the sluice")];
+    /// Sends a form; returns the path it led to.
+    async fn post(&self, client: &Client, path: &str, fields: &[(&str, &str)]) -> String {
         let answer = client
-            .post(format!("{}/sign-in", self.address))
+            .post(format!("{}{path}", self.address))
             .header("origin", &self.address)
-            .form(&fields)
+            .form(fields)
             .send()
             .await
             .expect("an answer");
-        assert_eq!(answer.url().path(), "/", "the demo's manager signs in");
+        answer.url().path().to_owned()
+    }
+
+    async fn sign_in(&self, client: &Client) {
+        let fields = [("login", "manager"), ("password", PASSWORD)];
+        let path = self.post(client, "/sign-in", &fields).await;
+        assert_eq!(path, "/", "the demo's manager signs in");
+    }
+
+    /// How long a switch takes on a tablet of its own: the slowest of a few.
+    async fn switch_ms(&self) -> f64 {
+        const PIN: &str = "482913";
+        let tablet = Client::builder().cookie_store(true).build();
+        let tablet = tablet.expect("a client");
+        self.sign_in(&tablet).await;
+        let own = tablet.get(format!("{}/my-account", self.address)).send();
+        let own = own.await.expect("an answer").url().path().to_owned();
+        let fields = [("pin", PIN), ("present_for_pin", PASSWORD)];
+        assert_eq!(
+            self.post(&tablet, &format!("{own}/pin"), &fields).await,
+            own
+        );
+        let fields = [("tablet_name", "Bench")];
+        assert_eq!(self.post(&tablet, "/tablets", &fields).await, "/sign-in");
+        let who = own.rsplit('/').next().unwrap_or_default();
+        let fields = [("who", who), ("pin", PIN), ("next", "/")];
+        let mut slowest: f64 = 0.0;
+        // As often as the limits on guessing let it.
+        for _ in 0..4 {
+            let begun = Instant::now();
+            assert_eq!(self.post(&tablet, "/sign-in/pin", &fields).await, "/");
+            slowest = slowest.max(milliseconds(begun.elapsed()));
+        }
+        slowest
     }
 
     /// Follows links from the first page on. Returns addresses by their kind, which is

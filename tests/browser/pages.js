@@ -35,7 +35,7 @@ export async function mainPages(page) {
     "shelf": "/shelf", "material": material, "material-new": "/shelf/new", "material-edit": `${material}/edit`,
     "malts": "/malts", "malt": malt, "malt-new": "/malts/new", "meters": "/meters", "meter": meter, "meter-new": "/meters/new", "calibration": calibration,
     "calibrate-mv": `${meter}/calibrations/new?method=millivolts`, "calibrate-ph": `${meter}/calibrations/new?method=ph`,
-    "calibrate-display": `${meter}/calibrations/new?method=display`, "record": "/record", "people": "/people", "person-new": "/people/new",
+    "calibrate-display": `${meter}/calibrations/new?method=display`, "record": "/record", "people": "/people", "person-new": "/people/new", "person-invited": "/people/invite", "account": "/my-account", "tablets": "/tablets",
     "settings": "/settings", "help": "/help", "help-api": "/help/api",
   }).map(([name, address]) => ({ name, address }));
 }
