@@ -3,7 +3,9 @@
 //! `cargo bench --bench service`. Starts the release program itself on the demo brewery,
 //! signs in, follows every link there is and asks for each kind of page many times. Every
 //! time is shown beside that of an embedded picture, fetched in the same run: the ratio
-//! depends less on the machine than the time does. Fails when a promise below is broken.
+//! depends less on the machine than the time does. Then the same file is filled with five
+//! years of batches, and the pages that list them are asked for again. Fails when a promise
+//! below is broken.
 
 #![expect(clippy::print_stdout, reason = "a benchmark reports to whoever ran it")]
 
@@ -16,6 +18,8 @@ use std::time::{Duration, Instant};
 
 use reqwest::{Client, StatusCode};
 use scraper::{Html, Selector};
+
+mod five_years;
 
 const PROGRAM: &str = env!("CARGO_BIN_EXE_leat");
 /// The password of everybody in the demo.
@@ -36,6 +40,23 @@ const ROUNDS: usize = 5;
 /// Addresses followed of one kind: enough to see them differ.
 const OF_ONE_KIND: usize = 5;
 const BASELINE: &str = "/assets/icon.svg";
+/// Asked for once the book is full: what a page lists, and its ends.
+const FULL: [&str; 14] = [
+    "/",
+    "/plans",
+    "/plans?page=100",
+    "/plans?order=batch",
+    "/plans?order=beer&page=50",
+    "/plans?state=closed&batch=C12",
+    "/plans/new",
+    "/record",
+    "/record?before=1020000",
+    "/record?batch=C1200",
+    "/record?kind=dose",
+    "/shelf",
+    "/beers",
+    "/sources",
+];
 
 #[tokio::main(flavor = "current_thread")]
 async fn main() -> ExitCode {
@@ -76,13 +97,7 @@ async fn main() -> ExitCode {
     );
     for (kind, addresses) in kinds {
         let times = server.time(&client, &addresses).await;
-        println!(
-            "{kind:44} {:5.2} ms {:5.2} ms {:8.0} {:6.1}",
-            times.median_ms,
-            times.p95_ms,
-            times.kilobytes,
-            times.median_ms / baseline.median_ms
-        );
+        report(&kind, &times, &baseline);
         let allowed = if kind == "/plans/{id}" {
             PLAN_MS
         } else {
@@ -93,7 +108,32 @@ async fn main() -> ExitCode {
     let resident_mb = server.resident_mb();
     println!();
     promises.hold("resident memory at the end", resident_mb, RESIDENT_MB, "MB");
+    drop(server);
+
+    five_years::fill(&file).await;
+    let (server, start_ms) = Server::start(&client, &file, false).await;
+    println!("\nwith {} closed batches", five_years::BATCHES);
+    promises.hold("start to first answer", start_ms, START_MS, "ms");
+    server.sign_in(&client).await;
+    let baseline = server.time(&client, &[BASELINE.to_owned()]).await;
+    for path in FULL {
+        let times = server.time(&client, &[path.to_owned()]).await;
+        report(path, &times, &baseline);
+        promises.keep(path, times.p95_ms, PAGE_MS, "ms");
+    }
+    let resident_mb = server.resident_mb();
+    promises.hold("resident memory", resident_mb, RESIDENT_MB, "MB");
     promises.verdict()
+}
+
+fn report(what: &str, times: &Times, baseline: &Times) {
+    println!(
+        "{what:44} {:5.2} ms {:5.2} ms {:8.0} {:6.1}",
+        times.median_ms,
+        times.p95_ms,
+        times.kilobytes,
+        times.median_ms / baseline.median_ms
+    );
 }
 
 /// Promises, and which were broken.

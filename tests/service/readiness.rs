@@ -21,7 +21,24 @@ fn days(from: Date, days: i64) -> Date {
 async fn tested(days_ago: i64) -> Brewhouse {
     let mut water = hard_water();
     water["sampled_on"] = json!(days(today(), -days_ago).to_string());
-    Brewhouse::on(water).await
+    calibrated(Brewhouse::on(water).await).await
+}
+
+/// The same brewery with a meter that was calibrated just now: 7.02 and 4.00 at 20 °C, the
+/// slope of 58.17 mV per pH that theory asks.
+async fn calibrated(house: Brewhouse) -> Brewhouse {
+    let meter = json!({"name": "Bench", "kind": "bench", "resolution_ph": 0.01, "compensated": true, "in_use": true});
+    let meter = crate::brewhouse::made(&house.manager.post("/meters", &meter).await);
+    let calibration = json!({
+        "method": "millivolts", "temperature_c": 20,
+        "buffers": [
+            {"buffer": "technical_7", "reading_mv": 0.0},
+            {"buffer": "technical_4", "reading_mv": 175.7},
+        ],
+    });
+    let path = format!("/meters/{meter}/calibrations");
+    crate::brewhouse::made(&house.manager.post(&path, &calibration).await);
+    house
 }
 
 async fn draft(house: &Brewhouse, batch: &str, on: Date) -> String {
@@ -319,7 +336,7 @@ async fn assumed_figures_of_the_water_are_said_beside_the_batch() {
         .as_array_mut()
         .unwrap()
         .retain(|it| it["analyte"] != "sodium");
-    let house = Brewhouse::on(water).await;
+    let house = calibrated(Brewhouse::on(water).await).await;
     approved(&house, "26-320", today()).await;
     let found = batch(&house, "26-320").await;
     assert_eq!(kinds(&found), ["assumed"]);
@@ -363,6 +380,48 @@ async fn a_lot_past_its_day_is_said_as_long_as_something_of_it_is_to_be_weighed(
     }
     assert_eq!(kinds(&batch(&house, "26-331").await), [""; 0]);
     assert_ne!(id, late);
+}
+
+#[tokio::test]
+async fn a_batch_of_today_asks_for_a_meter_and_for_its_calibration_until_it_was_read() {
+    let house = Brewhouse::build().await;
+    let id = approved(&house, "26-350", today()).await;
+    approved(&house, "26-351", days(today(), 1)).await;
+    let meter_of = async |number: &str| {
+        let found = batch(&house, number).await;
+        let missing = found["missing"].as_array().unwrap().clone();
+        missing.into_iter().find(|it| it["kind"] == "meter")
+    };
+    let none = meter_of("26-350").await.unwrap();
+    assert!(
+        none["words"]
+            .as_str()
+            .unwrap()
+            .contains("No pH meter is listed")
+    );
+    assert_eq!(none["stops"], false);
+    assert!(meter_of("26-351").await.is_none(), "calibrated on the day");
+    let meter = json!({"name": "Old", "kind": "bench", "resolution_ph": 0.01, "compensated": true, "in_use": true});
+    let meter = crate::brewhouse::made(&house.manager.post("/meters", &meter).await);
+    let stale = meter_of("26-350").await.unwrap();
+    assert!(
+        stale["words"]
+            .as_str()
+            .unwrap()
+            .contains("calibrated within 24 hours")
+    );
+    let brewer = house.desk.browser("brewer").await;
+    let link = format!(".missing a[href=\"/meters/{meter}/calibrations/new\"]");
+    let page = brewer.open("/").await;
+    assert_eq!(page.texts(&link), ["Calibrate it"]);
+    let form = brewer
+        .open(&format!("/meters/{meter}/calibrations/new"))
+        .await;
+    assert_eq!(form.status, 200);
+    let house = calibrated(house).await;
+    let found = batch(&house, "26-350").await;
+    assert!(!kinds(&found).contains(&"meter"), "{found}");
+    assert_ne!(id, meter);
 }
 
 #[tokio::test]

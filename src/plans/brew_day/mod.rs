@@ -185,6 +185,14 @@ pub(super) fn missing_rows(batch: &Batch, page: &Page) -> Vec<MissingRow> {
             }
             Missing::NewerTest { .. } => Some((format!("/plans/{}", batch.id), "Revise the plan")),
             Missing::Assumed { source, .. } => Some((format!("/sources/{source}"), "The water")),
+            Missing::Meter { listed: 0, .. } if page.can(Permission::KeepMeters) => {
+                Some(("/meters/new".into(), "Add a meter"))
+            }
+            Missing::Meter {
+                only: Some(meter), ..
+            } => Some((format!("/meters/{meter}/calibrations/new"), "Calibrate it")),
+            Missing::Meter { listed: 0, .. } => Some(("/meters".into(), "The meters")),
+            Missing::Meter { .. } => Some(("/meters".into(), "Calibrate one")),
             Missing::FreshLot { material, .. } => Some((format!("/shelf/{material}"), "The lots")),
         },
     };

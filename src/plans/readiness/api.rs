@@ -73,7 +73,7 @@ pub struct OpenBatchBody {
 pub struct MissingBody {
     /// `approval`, `revision` (another is being drafted), `test` (a source has none),
     /// `fresh_test` (it should have been tested again), `newer_test` (it was tested after the plan
-    /// read its water), `assumed` (figures of a source are) or `fresh_lot` (the lot in use is past
+    /// read its water), `assumed` (figures of a source are), `meter` (none can be acted on) or `fresh_lot` (the lot in use is past
     /// its day).
     kind: &'static str,
     /// In a sentence.

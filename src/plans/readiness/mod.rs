@@ -15,7 +15,8 @@ use super::{Prediction, State};
 use crate::brewery::{self, Settings};
 use crate::db::Db;
 use crate::error::Error;
-use crate::id::{BeerId, DoseId, MaterialId, PlanId, SourceId, UtcTime};
+use crate::id::{BeerId, DoseId, MaterialId, MeterId, PlanId, SourceId, UtcTime};
+use crate::meters;
 use crate::people::{Member, Permission};
 use crate::shelf::{self, Material, MaterialLot};
 use crate::sources::{self, DutyState, Source, TestDuty};
@@ -198,6 +199,13 @@ pub enum Missing {
         /// The last day its maker vouches for it.
         use_by: Date,
     },
+    /// No pH meter can be acted on: none was calibrated in the day before now and is fit for use.
+    Meter {
+        /// Meters in use.
+        listed: usize,
+        /// Which, where there is only one.
+        only: Option<MeterId>,
+    },
 }
 
 impl Missing {
@@ -211,6 +219,7 @@ impl Missing {
             Self::NewerTest { .. } => "newer_test",
             Self::Assumed { .. } => "assumed",
             Self::FreshLot { .. } => "fresh_lot",
+            Self::Meter { .. } => "meter",
         }
     }
 
@@ -249,6 +258,13 @@ impl Missing {
                 name, code, use_by, ..
             } => {
                 format!("{name}, lot {code}, was good until {use_by}.")
+            }
+            Self::Meter { listed: 0, .. } => {
+                "No pH meter is listed: a reading is kept, but no dose is advised on it.".into()
+            }
+            Self::Meter { .. } => {
+                "No pH meter fit for use was calibrated within 24 hours: no dose is advised on a reading."
+                    .into()
             }
         }
     }
@@ -329,11 +345,25 @@ struct About {
     sources: Vec<Source>,
     newest_samples: HashMap<SourceId, Date>,
     shelf: Vec<(Material, Option<MaterialLot>)>,
+    /// What is missing where no meter can be acted on now.
+    meter: Option<Missing>,
 }
 
 impl About {
     async fn read(db: &Db, by: &Member, settings: Settings, today: Date) -> Result<Self, Error> {
+        let meters = meters::operations::standings(db, by, UtcTime::now()).await?;
+        let fit = meters
+            .iter()
+            .any(|(_, standing)| standing.may_be_acted_on());
+        let only = match meters.as_slice() {
+            [(meter, _)] => Some(meter.id),
+            _ => None,
+        };
         Ok(Self {
+            meter: (!fit).then_some(Missing::Meter {
+                listed: meters.len(),
+                only,
+            }),
             settings,
             today,
             sources: sources::operations::list(db, by).await?,
@@ -396,6 +426,10 @@ impl About {
             plan.reading.is_some() || plan.lines.iter().any(|line| line.weighed_at.is_some());
         for used in plan.sources.iter().filter(|_| !begun) {
             self.missing_of_source(used, plan, &mut missing);
+        }
+        // A batch that was read has had its meter; one of another day is calibrated for then.
+        if plan.brewed_on <= self.today && plan.reading.is_none() {
+            missing.extend(self.meter.clone());
         }
         let day = plan.brewed_on.max(self.today);
         for (material, lot) in &self.shelf {
