@@ -32,7 +32,7 @@ use crate::web::problem::Problem;
 #[derive(Clone, Debug, Default, Deserialize, utoipa::IntoParams)]
 #[into_params(parameter_in = Query)]
 pub struct PlanQuery {
-    /// Only plans in this state.
+    /// Only plans in this state, or `open`: neither closed nor withdrawn.
     pub state: Option<String>,
     /// Only plans of this beer.
     pub beer_id: Option<String>,
@@ -44,13 +44,17 @@ impl PlanQuery {
     fn filter(&self) -> Result<Filter, Error> {
         let mut problems = Problems::new();
         let given = |text: &Option<String>| text.clone().filter(|text| !text.trim().is_empty());
-        let state =
-            given(&self.state).and_then(|key| problems.choice("state", &key, PlanState::from_key));
+        let state = given(&self.state);
+        let open = state.as_deref() == Some("open");
+        let state = state
+            .filter(|_| !open)
+            .and_then(|key| problems.choice("state", &key, PlanState::from_key));
         let beer = given(&self.beer_id)
             .and_then(|key| problems.choice("beer_id", &key, |key| key.parse().ok()));
         problems.finish()?;
         Ok(Filter {
             state,
+            open,
             beer,
             batch: given(&self.batch),
         })

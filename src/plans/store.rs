@@ -3,7 +3,7 @@
 use chemistry::material::Vessel;
 use chemistry::quantity::{DoseAmount, Fraction, Ph, PhShift};
 use serde::{Deserialize, Serialize};
-use sqlx::{Row, SqliteConnection, sqlite::SqliteRow};
+use sqlx::{QueryBuilder, Row, Sqlite, SqliteConnection, sqlite::SqliteRow};
 
 use super::bodies::{InputsBody, ShelfItemBody};
 use super::{Choice, Deed, Dose, Inputs, Lot, Outcome, Plan, Prediction, State, Weighed, Witness};
@@ -398,6 +398,8 @@ pub(super) async fn last_revision(db: &mut SqliteConnection, batch: &str) -> Res
 pub struct Filter {
     /// Only plans in this state.
     pub state: Option<State>,
+    /// Only plans that are neither closed nor withdrawn.
+    pub open: bool,
     /// Only plans of this beer.
     pub beer: Option<BeerId>,
     /// Only plans of batches whose number holds this.
@@ -440,27 +442,13 @@ pub(super) async fn list(
     skip: i64,
     limit: i64,
 ) -> Result<Vec<Listing>, Error> {
-    let rows = sqlx::query(
-        "SELECT id, batch, revision, beer_id, beer_name, brewed_on, state, prediction, outcome,
-                (SELECT count(*) FROM doses WHERE plan_id = plans.id) AS doses,
-                (SELECT count(*) FROM doses WHERE plan_id = plans.id AND weighed_at IS NOT NULL) AS weighed
-         FROM plans
-         WHERE (?1 IS NULL OR state = ?1) AND (?2 IS NULL OR beer_id = ?2)
-           AND (?3 IS NULL OR instr(lower(batch), lower(?3)) > 0)
-         ORDER BY CASE ?4 WHEN 'latest' THEN brewed_on END DESC,
-                  CASE ?4 WHEN 'earliest' THEN brewed_on WHEN 'batch' THEN batch WHEN 'beer' THEN beer_name END,
-                  id DESC
-         LIMIT ?5 OFFSET ?6",
-    )
-    .bind(filter.state.map(State::key))
-    .bind(filter.beer)
-    .bind(&filter.batch)
-    .bind(order.key())
-    .bind(limit)
-    .bind(skip)
-    .fetch_all(db)
-    .await?;
-    rows.iter().map(listing).collect()
+    let order = match order {
+        Order::Latest => "brewed_on DESC, id DESC",
+        Order::Earliest => "brewed_on, id DESC",
+        Order::Batch => "batch, id DESC",
+        Order::Beer => "beer_name, id DESC",
+    };
+    listed(db, filter, None, order, skip, limit).await
 }
 
 /// Plans made before `before`, the latest made first.
@@ -470,22 +458,45 @@ pub(super) async fn made_before(
     before: Option<PlanId>,
     limit: i64,
 ) -> Result<Vec<Listing>, Error> {
-    let rows = sqlx::query(
+    listed(db, filter, before, "id DESC", 0, limit).await
+}
+
+/// Chooses plans in an index first: a row is read only when it is shown.
+async fn listed(
+    db: &mut SqliteConnection,
+    filter: &Filter,
+    before: Option<PlanId>,
+    order: &'static str,
+    skip: i64,
+    limit: i64,
+) -> Result<Vec<Listing>, Error> {
+    let mut query = QueryBuilder::<Sqlite>::new(
         "SELECT id, batch, revision, beer_id, beer_name, brewed_on, state, prediction, outcome,
                 (SELECT count(*) FROM doses WHERE plan_id = plans.id) AS doses,
                 (SELECT count(*) FROM doses WHERE plan_id = plans.id AND weighed_at IS NOT NULL) AS weighed
-         FROM plans
-         WHERE (?1 IS NULL OR state = ?1) AND (?2 IS NULL OR beer_id = ?2)
-           AND (?3 IS NULL OR instr(lower(batch), lower(?3)) > 0) AND (?4 IS NULL OR id < ?4)
-         ORDER BY id DESC LIMIT ?5",
-    )
-    .bind(filter.state.map(State::key))
-    .bind(filter.beer)
-    .bind(&filter.batch)
-    .bind(before)
-    .bind(limit)
-    .fetch_all(db)
-    .await?;
+         FROM plans WHERE id IN (SELECT id FROM plans WHERE true",
+    );
+    if let Some(state) = filter.state {
+        query.push(" AND state = ").push_bind(state.key());
+    }
+    if filter.open {
+        query.push(" AND state IN ('draft', 'approved', 'dosed')");
+    }
+    if let Some(beer) = filter.beer {
+        query.push(" AND beer_id = ").push_bind(beer);
+    }
+    if let Some(batch) = &filter.batch {
+        query.push(" AND instr(lower(batch), lower(");
+        query.push_bind(batch).push(")) > 0");
+    }
+    if let Some(before) = before {
+        query.push(" AND id < ").push_bind(before);
+    }
+    query.push(" ORDER BY ").push(order);
+    query.push(" LIMIT ").push_bind(limit);
+    query.push(" OFFSET ").push_bind(skip);
+    query.push(") ORDER BY ").push(order);
+    let rows = query.build().fetch_all(db).await?;
     rows.iter().map(listing).collect()
 }
 

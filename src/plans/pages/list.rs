@@ -80,6 +80,7 @@ pub(super) async fn list(
 ) -> Result<ListPage, Error> {
     let filter = Filter {
         state: PlanState::from_key(asked.value("state")),
+        open: asked.value("state") == "open",
         beer: asked.value("beer_id").parse().ok(),
         batch: Some(asked.value("batch").trim().to_owned()).filter(|batch| !batch.is_empty()),
     };
@@ -137,11 +138,19 @@ pub(super) async fn list(
     })
     .into();
     let states = PlanState::ALL.map(|state| (state.key(), state.name()));
-    let states = std::iter::once(("", "Every state")).chain(states);
+    let states = [
+        ("", "Every state"),
+        ("open", "Neither closed nor withdrawn"),
+    ]
+    .into_iter()
+    .chain(states);
     Ok(ListPage {
         page: framer.page("Plans", "plans").await,
         states: Choice::list(states, asked.value("state")),
-        filtered: filter.state.is_some() || filter.beer.is_some() || filter.batch.is_some(),
+        filtered: filter.state.is_some()
+            || filter.open
+            || filter.beer.is_some()
+            || filter.batch.is_some(),
         order: order.key(),
         sorts,
         earlier: (number > 1).then(|| address(number - 1)),
