@@ -112,6 +112,12 @@ fn malt(body: &NewMaltBody, problems: &mut Problems) -> Option<Malt> {
     let name = problems.text("name", &body.name, 80);
     let class = problems.choice("class", &body.class, MaltClass::from_key);
     let colour = colour(body, problems);
+    if class == Some(MaltClass::Crystal) && body.colour.is_missing() {
+        problems.add(
+            "colour",
+            "Enter the colour: how acid a crystal malt is follows from it.",
+        );
+    }
     let supplier = problems.optional_text("supplier", &body.supplier, 80);
     let notes = problems.optional_text("notes", &body.notes, 2000);
     let assumed = class?.behaviour(colour.map(Lovibond::from));

@@ -30,9 +30,11 @@ use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
-use crate::web::list::Pager;
+use crate::web::list::{Column, Pager, Sorted};
 use crate::web::units::{Measure, shown_in, typed_in_si};
 
+/// Sources on one page of their list.
+const SOURCES: usize = 20;
 /// Tests on one page of a source's list.
 const TESTS: i64 = 20;
 /// Entries of the record book on a page.
@@ -55,7 +57,10 @@ pub fn routes() -> Router<App> {
 struct ListPage {
     page: Page,
     sources: Vec<SourceRow>,
+    by_name: Column,
+    by_due: Column,
     heads: Vec<String>,
+    pager: Option<Pager>,
     retired: bool,
     may_change: bool,
 }
@@ -104,18 +109,40 @@ fn short(todays: &TodaysWater) -> Vec<ShortFigure> {
         .collect()
 }
 
+/// Columns the list sorts by: key, head, kind.
+const COLUMNS: [(&str, &str, &str); 2] = [("name", "Source", ""), ("due", "Tests", "")];
+
 async fn list(State(db): State<Db>, framer: Framer, asked: Form) -> Result<ListPage, Error> {
     let page = framer.page("Sources", "sources").await;
     let retired = asked.ticked("retired");
     let today = format::today(&page.settings.time_zone);
     let by = &framer.member;
     let newest = operations::newest_samples(&db, by).await?;
+    let found = operations::list(&db, by).await?.into_iter();
+    let mut found: Vec<(Source, TestDuty)> = found
+        .filter(|source| source.in_use != retired)
+        .map(|source| {
+            let duty = TestDuty::of(&source, newest.get(&source.id).copied(), today);
+            (source, duty)
+        })
+        .collect();
+    let sorted = Sorted::asked(&asked, &COLUMNS);
+    match sorted.key {
+        // What was never tested is due before everything.
+        "due" => found.sort_by_key(|(_, duty)| duty.next),
+        _ => found.sort_by_key(|(source, _)| source.name.to_lowercase()),
+    }
+    if sorted.descending {
+        found.reverse();
+    }
+    let address = if retired {
+        "/sources?retired=yes"
+    } else {
+        "/sources"
+    };
+    let (found, pager) = Pager::cut(found, SOURCES, &asked, &sorted.address(address));
     let mut sources = Vec::new();
-    for source in operations::list(&db, by).await? {
-        if source.in_use == retired {
-            continue;
-        }
-        let duty = TestDuty::of(&source, newest.get(&source.id).copied(), today);
+    for (source, duty) in found {
         let todays = match operations::todays_water(&db, by, source.id).await {
             Ok(todays) => Ok(todays),
             Err(Error::Conflict(sentence)) => Err(sentence),
@@ -138,6 +165,9 @@ async fn list(State(db): State<Db>, framer: Framer, asked: Form) -> Result<ListP
     Ok(ListPage {
         may_change: page.can(Permission::KeepSources),
         heads: SHORT.map(|analyte| capital(analyte.name())).into(),
+        by_name: sorted.column(address, COLUMNS[0]),
+        by_due: sorted.column(address, COLUMNS[1]),
+        pager,
         page,
         sources,
         retired,

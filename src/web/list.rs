@@ -59,24 +59,31 @@ impl Sorted {
     ) -> Vec<Column> {
         columns
             .iter()
-            .map(|&(key, label, kind)| {
-                let sorted = key == self.key;
-                let turned = Self {
-                    key,
-                    descending: sorted && !self.descending,
-                };
-                Column {
-                    label,
-                    address: turned.address(list),
-                    direction: match (sorted, self.descending) {
-                        (false, _) => "none",
-                        (true, false) => "ascending",
-                        (true, true) => "descending",
-                    },
-                    kind,
-                }
-            })
+            .map(|column| self.column(list, *column))
             .collect()
+    }
+
+    /// The head of one column.
+    pub fn column(
+        self,
+        list: &str,
+        (key, label, kind): (&'static str, &'static str, &'static str),
+    ) -> Column {
+        let sorted = key == self.key;
+        let turned = Self {
+            key,
+            descending: sorted && !self.descending,
+        };
+        Column {
+            label,
+            address: turned.address(list),
+            direction: match (sorted, self.descending) {
+                (false, _) => "none",
+                (true, false) => "ascending",
+                (true, true) => "descending",
+            },
+            kind,
+        }
     }
 }
 

@@ -415,3 +415,22 @@ async fn a_us_brewery_types_lovibond_and_reads_it_back() {
     let form = browser.open(&format!("{}/edit", page.path)).await;
     assert_eq!(form.field("colour"), "60");
 }
+
+#[tokio::test]
+async fn crystal_malt_without_its_colour_is_refused_by_both_doors() {
+    let desk = Desk::start().await;
+    let manager = desk.browser("manager").await;
+    let form = manager.open("/malts/new").await;
+    let typed = [("name", "Crystal"), ("class", "crystal"), ("colour", "")];
+    let refused = manager.fill(&form, "/malts/new", &typed).await;
+    assert_eq!(refused.status, 422);
+    let error = refused.error("colour").unwrap();
+    assert!(error.contains("Enter the colour"), "{error}");
+    assert_eq!(refused.field("name"), "Crystal");
+    let program = desk.full_program("manager").await;
+    let body = json!({"name": "Crystal", "class": "crystal", "in_use": true});
+    assert_eq!(program.post("/malts", &body).await.status, 422);
+    // Of other classes the colour says nothing.
+    let body = json!({"name": "Pilsner", "class": "pilsner", "in_use": true});
+    assert_eq!(program.post("/malts", &body).await.status, 201);
+}

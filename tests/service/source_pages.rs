@@ -352,3 +352,41 @@ async fn long_lists_of_tests_are_paged_and_drawn_through_time() {
     let other = qa.open(&format!("{}?figure=calcium", page.path)).await;
     assert!(other.words().contains("Calcium was tested less than twice"));
 }
+
+#[tokio::test]
+async fn the_list_of_sources_is_sorted_by_name_or_by_the_next_test_and_paged() {
+    let desk = Desk::start().await;
+    let program = desk.full_program("manager").await;
+    for number in 1..=21 {
+        let source = serde_json::json!({
+            "name": format!("Well {number:02}"), "kind": "borehole", "days_between_tests": 90, "in_use": true,
+        });
+        let made = program.post("/sources", &source).await;
+        assert_eq!(made.status, 201, "{:?}", made.body);
+        // The later its number, the older its only test; well 5 has none.
+        if number != 5 {
+            let day = format!("2026-10-{:02}", 28 - number);
+            let test = serde_json::json!({
+                "sampled_on": day,
+                "readings": [{"analyte": "alkalinity", "value": "100", "unit": "mg_per_l_as_caco3"}],
+            });
+            let path = format!("/sources/{}/water-tests", made.body["id"].as_str().unwrap());
+            let answer = program.post(&path, &test).await;
+            assert_eq!(answer.status, 201, "{:?}", answer.body);
+        }
+    }
+    let qa = desk.browser("qa").await;
+    let names = |page: &crate::desk::Seen| page.texts("tbody th a");
+    let first = qa.open("/sources").await;
+    assert_eq!(names(&first).len(), 20);
+    assert_eq!(names(&first)[0], "Well 01");
+    assert!(first.words().contains("1 to 20 of 21"), "{}", first.words());
+    assert_eq!(
+        names(&qa.open("/sources?sort=name&after=20").await),
+        ["Well 21"]
+    );
+    let last = qa.open("/sources?sort=name&order=descending").await;
+    assert_eq!(names(&last)[0], "Well 21");
+    let due = qa.open("/sources?sort=due").await;
+    assert_eq!(names(&due)[..3], ["Well 05", "Well 21", "Well 20"]);
+}

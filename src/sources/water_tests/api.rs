@@ -8,7 +8,7 @@ use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::IntoResponse;
 use chemistry::quantity::Celsius;
 use chemistry::report::{
-    Assessment, Concern, Figure, Finding, Inference, Method, PotableFinding, Standing,
+    Assessment, Concern, Figure, Finding, Inference, LimitSet, Method, PotableFinding, Standing,
 };
 use serde::{Deserialize, Serialize};
 use utoipa_axum::router::OpenApiRouter;
@@ -387,11 +387,12 @@ pub fn routes() -> OpenApiRouter<App> {
 }
 
 async fn answer(db: &Db, test: &WaterTest) -> Result<impl IntoResponse + use<>, Error> {
-    Ok((etag(test.version), axum::Json(body(db, test).await?)))
+    let limits = operations::limits(db).await?;
+    Ok((etag(test.version), axum::Json(body(limits, test)?)))
 }
 
-async fn body(db: &Db, test: &WaterTest) -> Result<WaterTestAnswer, Error> {
-    let check = operations::check(db, &test.sheet, test.water_kind).await?;
+fn body(limits: LimitSet, test: &WaterTest) -> Result<WaterTestAnswer, Error> {
+    let check = operations::check(limits, &test.sheet, test.water_kind)?;
     Ok(WaterTestAnswer {
         id: test.id,
         source_id: test.source_id,
@@ -432,10 +433,9 @@ async fn list(
         })
         .transpose()?;
     let tests = operations::list(&db, &by, id, after, limit + 1).await?;
-    let mut bodies = Vec::with_capacity(tests.len());
-    for test in &tests {
-        bodies.push(body(&db, test).await?);
-    }
+    let limits = operations::limits(&db).await?;
+    let bodies = tests.iter().map(|test| body(limits, test));
+    let bodies = bodies.collect::<Result<Vec<_>, _>>()?;
     Ok(axum::Json(Listed::cut(
         bodies,
         limit,

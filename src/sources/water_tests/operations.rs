@@ -2,8 +2,8 @@
 
 use chemistry::quantity::{Celsius, MgPerLAsCaCO3};
 use chemistry::report::{
-    Analyte, Assessment, Method, PotableFinding, Reading, ReportingUnit, SampleKind, Severity,
-    Verdict, WaterKind, assess, potable_findings,
+    Analyte, Assessment, LimitSet, Method, PotableFinding, Reading, ReportingUnit, SampleKind,
+    Severity, Verdict, WaterKind, assess, potable_findings,
 };
 use jiff::civil::Date;
 
@@ -226,17 +226,21 @@ pub struct Check {
     pub potable: Vec<PotableFinding>,
 }
 
-async fn check_of(db: &Db, assessment: Assessment) -> Result<Check, Error> {
-    let limits = brewery::operations::settings(db).await?.potable_limits;
-    Ok(Check {
-        potable: potable_findings(assessment.figures(), limits),
-        assessment,
-    })
+/// Whose limits for drinking water reports are held against.
+pub async fn limits(db: &Db) -> Result<LimitSet, Error> {
+    Ok(brewery::operations::settings(db).await?.potable_limits)
 }
 
-/// Checks a sheet of a kind of water.
-pub async fn check(db: &Db, sheet: &Sheet, water: WaterKind) -> Result<Check, Error> {
-    check_of(db, sheet.assess(water)?).await
+fn check_of(limits: LimitSet, assessment: Assessment) -> Check {
+    Check {
+        potable: potable_findings(assessment.figures(), limits),
+        assessment,
+    }
+}
+
+/// Checks a sheet of a kind of water against these limits.
+pub fn check(limits: LimitSet, sheet: &Sheet, water: WaterKind) -> Result<Check, Error> {
+    Ok(check_of(limits, sheet.assess(water)?))
 }
 
 /// Checks the lines that can be read, and says which cannot.
@@ -254,7 +258,10 @@ pub async fn check_as_typed(
         readings: &body.readings,
     };
     let lines = rows.lines(&mut problems);
-    let check = check_of(db, assess(&report(&lines, kind, water, temperature)?)).await?;
+    let check = check_of(
+        limits(db).await?,
+        assess(&report(&lines, kind, water, temperature)?),
+    );
     match problems.finish() {
         Err(Error::Invalid(found)) => Ok((check, found)),
         Err(other) => Err(other),
@@ -279,9 +286,10 @@ pub async fn check_body(db: &Db, body: &WaterTestCheckBody) -> Result<Check, Err
     let lines = rows.lines(&mut problems);
     problems.finish()?;
     match (water, kind) {
-        (Some(water), Some(kind)) => {
-            check_of(db, assess(&report(&lines, kind, water, temperature)?)).await
-        }
+        (Some(water), Some(kind)) => Ok(check_of(
+            limits(db).await?,
+            assess(&report(&lines, kind, water, temperature)?),
+        )),
         _ => Err(Error::field("", "Fill in every field.")),
     }
 }

@@ -511,7 +511,7 @@ async fn page_of(
     let by = &framer.member;
     let test = operations::find(db, by, id).await?;
     let source = sources::find(db, by, test.source_id).await?;
-    let check = operations::check(db, &test.sheet, test.water_kind).await?;
+    let check = operations::check(operations::limits(db).await?, &test.sheet, test.water_kind)?;
     let title = format!("{}, {}", source.name, test.sheet.sampled_on);
     let page = framer.page(title, "sources").await;
     let entries = record::operations::of_subject(db, by, "water test", &id.to_string(), 20).await?;
