@@ -167,7 +167,7 @@ fn progress(batch: &Batch) -> Vec<String> {
 /// What a batch lacks, each with where it is mended.
 pub(super) fn missing_rows(batch: &Batch, page: &Page) -> Vec<MissingRow> {
     let row = |missing: &Missing| MissingRow {
-        words: missing.words(),
+        words: missing.words(page.settings.units),
         stops: missing.stops(),
         mend: match missing {
             Missing::Approval => None,
@@ -193,6 +193,7 @@ pub(super) fn missing_rows(batch: &Batch, page: &Page) -> Vec<MissingRow> {
             } => Some((format!("/meters/{meter}/calibrations/new"), "Calibrate it")),
             Missing::Meter { listed: 0, .. } => Some(("/meters".into(), "The meters")),
             Missing::Meter { .. } => Some(("/meters".into(), "Calibrate one")),
+            Missing::Material { material, .. } => Some((format!("/shelf/{material}"), "The stock")),
             Missing::FreshLot { material, .. } => Some((format!("/shelf/{material}"), "The lots")),
         },
     };

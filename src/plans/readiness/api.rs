@@ -6,6 +6,7 @@ use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
 use super::{Batch, BrewDay, Freshness, Missing, brew_day};
+use crate::brewery::Units;
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{BeerId, PlanId, SourceId, UtcTime};
@@ -73,7 +74,8 @@ pub struct OpenBatchBody {
 pub struct MissingBody {
     /// `approval`, `revision` (another is being drafted), `test` (a source has none),
     /// `fresh_test` (it should have been tested again), `newer_test` (it was tested after the plan
-    /// read its water), `assumed` (figures of a source are), `meter` (none can be acted on) or `fresh_lot` (the lot in use is past
+    /// read its water), `assumed` (figures of a source are), `material` (there is too little of
+    /// it), `meter` (none can be acted on) or `fresh_lot` (the lot in use is past
     /// its day).
     kind: &'static str,
     /// In a sentence.
@@ -111,7 +113,7 @@ impl From<&Missing> for MissingBody {
     fn from(missing: &Missing) -> Self {
         Self {
             kind: missing.key(),
-            words: missing.words(),
+            words: missing.words(Units::Metric),
             stops: missing.stops(),
         }
     }

@@ -7,20 +7,23 @@
 
 use std::collections::HashMap;
 
-use chemistry::material::Vessel;
+use chemistry::material::{DoseUnit, Vessel};
+use chemistry::quantity::DoseAmount;
 use chemistry::report::Analyte;
 use jiff::civil::Date;
 
 use super::{Prediction, State};
-use crate::brewery::{self, Settings};
+use crate::brewery::{self, Settings, Units};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{BeerId, DoseId, MaterialId, MeterId, PlanId, SourceId, UtcTime};
 use crate::meters;
 use crate::people::{Member, Permission};
+use crate::shelf::stock::{self, Levels, Stock};
 use crate::shelf::{self, Material, MaterialLot};
 use crate::sources::{self, DutyState, Source, TestDuty};
 use crate::web::format;
+use crate::web::units::Measure;
 
 pub mod api;
 mod next;
@@ -199,6 +202,20 @@ pub enum Missing {
         /// The last day its maker vouches for it.
         use_by: Date,
     },
+    /// There is less of something still to be weighed out than it takes, after what the batches
+    /// before it take.
+    Material {
+        /// Which material.
+        material: MaterialId,
+        /// Its name.
+        name: String,
+        /// What it is measured out in.
+        unit: DoseUnit,
+        /// What is to be weighed out, g or mL.
+        needed: DoseAmount,
+        /// What is left for it, g or mL.
+        left: DoseAmount,
+    },
     /// No pH meter can be acted on: none was calibrated in the day before now and is fit for use.
     Meter {
         /// Meters in use.
@@ -219,6 +236,7 @@ impl Missing {
             Self::NewerTest { .. } => "newer_test",
             Self::Assumed { .. } => "assumed",
             Self::FreshLot { .. } => "fresh_lot",
+            Self::Material { .. } => "material",
             Self::Meter { .. } => "meter",
         }
     }
@@ -229,7 +247,7 @@ impl Missing {
     }
 
     /// What is missing, in a sentence.
-    pub fn words(&self) -> String {
+    pub fn words(&self, units: Units) -> String {
         match self {
             Self::Approval => "Not approved yet.".into(),
             Self::Revision { revision, .. } => {
@@ -258,6 +276,17 @@ impl Missing {
                 name, code, use_by, ..
             } => {
                 format!("{name}, lot {code}, was good until {use_by}.")
+            }
+            Self::Material { name, unit, needed, left, .. } => {
+                let measure = match unit {
+                    DoseUnit::Grams => Measure::DoseMass,
+                    DoseUnit::Millilitres => Measure::DoseVolume,
+                };
+                format!(
+                    "{name} is short: it takes {}, and {} are left for it.",
+                    units.show(measure, needed.get()),
+                    units.show(measure, left.get())
+                )
             }
             Self::Meter { listed: 0, .. } => {
                 "No pH meter is listed: a reading is kept, but no dose is advised on it.".into()
@@ -314,17 +343,15 @@ pub async fn brew_day(db: &Db, by: &Member) -> Result<BrewDay, Error> {
     Ok(BrewDay {
         on: today,
         until,
-        batches: open
-            .into_iter()
-            .map(|plan| about.batch(plan, until))
-            .collect(),
+        batches: about.batches(open, until),
         more_late: late.len().saturating_sub(MOST_LATE),
         later: shown(When::Later).count(),
         waters,
     })
 }
 
-/// One batch; `None` once its plan is closed or withdrawn.
+/// One batch; `None` once its plan is closed or withdrawn. What it takes from the shelf is
+/// held against all that is there: which batch comes before it is for the brew day to say.
 pub async fn of_plan(db: &Db, by: &Member, id: PlanId) -> Result<Option<Batch>, Error> {
     by.may(Permission::Read)?;
     let settings = brewery::operations::settings(db).await?;
@@ -335,7 +362,9 @@ pub async fn of_plan(db: &Db, by: &Member, id: PlanId) -> Result<Option<Batch>, 
     snapshot.commit().await?;
     let Some(open) = open else { return Ok(None) };
     let about = About::read(db, by, settings, today).await?;
-    Ok(Some(about.batch(open, until)))
+    let mut missing = about.missing(&open);
+    missing.extend(about.short(&open, &mut HashMap::new()));
+    Ok(Some(about.batch(open, missing, until)))
 }
 
 /// What the brewery has, to hold plans against.
@@ -345,6 +374,7 @@ struct About {
     sources: Vec<Source>,
     newest_samples: HashMap<SourceId, Date>,
     shelf: Vec<(Material, Option<MaterialLot>)>,
+    levels: Levels,
     /// What is missing where no meter can be acted on now.
     meter: Option<Missing>,
 }
@@ -369,6 +399,7 @@ impl About {
             sources: sources::operations::list(db, by).await?,
             newest_samples: sources::operations::newest_samples(db, by).await?,
             shelf: shelf::operations::list_in_use(db, by).await?,
+            levels: stock::operations::all(db, by).await?,
         })
     }
 
@@ -387,8 +418,54 @@ impl About {
         })
     }
 
-    fn batch(&self, plan: store::OpenPlan, until: Date) -> Batch {
-        let missing = self.missing(&plan);
+    /// Every plan as a batch. What is on the shelf goes to the one that is brewed first.
+    fn batches(&self, open: Vec<store::OpenPlan>, until: Date) -> Vec<Batch> {
+        let mut missing: Vec<Vec<Missing>> = open.iter().map(|plan| self.missing(plan)).collect();
+        let mut in_turn: Vec<usize> = (0..open.len()).collect();
+        in_turn.sort_by_key(|place| open[*place].brewed_on);
+        let mut taken = HashMap::new();
+        for place in in_turn {
+            missing[place].extend(self.short(&open[place], &mut taken));
+        }
+        open.into_iter()
+            .zip(missing)
+            .map(|(plan, missing)| self.batch(plan, missing, until))
+            .collect()
+    }
+
+    /// What there is too little of for a plan after what is `taken`; adds what it takes.
+    fn short(&self, plan: &store::OpenPlan, taken: &mut HashMap<MaterialId, f64>) -> Vec<Missing> {
+        let mut short = Vec::new();
+        for (material, _) in &self.shelf {
+            let lines = plan.lines.iter();
+            let needed: f64 = lines
+                .filter(|line| line.weighed_at.is_none() && line.material == Some(material.id))
+                .map(|line| line.planned.get())
+                .sum();
+            if needed <= 0.0 {
+                continue;
+            }
+            let before = taken.entry(material.id).or_default();
+            let level = self.levels.material(material.id);
+            // Where a lot was never counted, nobody knows that it is short.
+            if let (Some(stock), 0) = (level.stock, level.not_counted) {
+                let left = Stock::of(stock.get() - *before).there();
+                if needed > left.get() {
+                    short.push(Missing::Material {
+                        material: material.id,
+                        name: material.name.clone(),
+                        unit: material.unit(),
+                        needed: DoseAmount::clamped(needed),
+                        left,
+                    });
+                }
+            }
+            *before += needed;
+        }
+        short
+    }
+
+    fn batch(&self, plan: store::OpenPlan, missing: Vec<Missing>, until: Date) -> Batch {
         let next = next::of(&plan, &missing, &self.settings.vessel_order);
         Batch {
             when: When::of(plan.brewed_on, self.today, until),

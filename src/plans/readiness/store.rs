@@ -2,6 +2,7 @@
 //! and of their inputs only the names.
 
 use chemistry::material::Vessel;
+use chemistry::quantity::DoseAmount;
 use jiff::civil::Date;
 use serde::Deserialize;
 use sqlx::sqlite::SqliteRow;
@@ -36,6 +37,7 @@ pub(super) struct Line {
     id: DoseId,
     pub(super) vessel: Vessel,
     pub(super) material: Option<MaterialId>,
+    pub(super) planned: DoseAmount,
     /// The mash check whose first step it is.
     pub(super) step_of: Option<MashCheckId>,
     pub(super) weighed_at: Option<UtcTime>,
@@ -103,7 +105,7 @@ pub(super) async fn plans(
     .await?;
     let mut plans = rows.iter().map(open_plan).collect::<Result<Vec<_>, _>>()?;
     let doses = sqlx::query(
-        "SELECT doses.plan_id, doses.id, doses.vessel, doses.material, doses.mash_check_id, doses.weighed_at
+        "SELECT doses.plan_id, doses.id, doses.vessel, doses.material, doses.planned, doses.mash_check_id, doses.weighed_at
          FROM json_each(?) AS wanted CROSS JOIN doses ON doses.plan_id = wanted.value
          ORDER BY doses.plan_id, doses.position",
     )
@@ -183,6 +185,7 @@ fn line(row: &SqliteRow, shelf: &[Option<MaterialId>]) -> Result<Line, Error> {
         id: row.try_get("id")?,
         vessel: Vessel::from_key(vessel).ok_or_else(|| unreadable(format!("vessel {vessel}")))?,
         material: shelf.get(place).copied().flatten(),
+        planned: DoseAmount::clamped(row.try_get("planned")?),
         step_of: row.try_get("mash_check_id")?,
         weighed_at: row.try_get("weighed_at")?,
     })
