@@ -96,6 +96,8 @@ ids! {
     DoseId;
     /// One mash check.
     MashCheckId;
+    /// One test of sparge liquor.
+    LiquorCheckId;
     /// A pH meter.
     MeterId;
     /// One calibration of a pH meter.

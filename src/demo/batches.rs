@@ -8,7 +8,7 @@ use jiff::civil::Date;
 use super::{Chance, days_before};
 use crate::db::Db;
 use crate::error::Error;
-use crate::id::{BeerId, PlanId};
+use crate::id::{BeerId, MeterId};
 use crate::people::Member;
 use crate::plans::closing::{self, Closing};
 use crate::plans::decisions;
@@ -22,6 +22,7 @@ pub(super) async fn fill_plans(
     by: &Member,
     today: Date,
     beers: &[BeerId],
+    meter: MeterId,
     chance: &mut Chance,
 ) -> Result<(), Error> {
     let way = |number: usize| Way::ALL[number % Way::ALL.len()];
@@ -40,7 +41,9 @@ pub(super) async fn fill_plans(
         .await?;
         let plan = decisions::approve(db, by, plan.id, None, None).await?;
         let plan = weighed(db, by, plan, usize::MAX).await?;
-        read(db, by, &plan, -0.045 + chance.about(0.035)).await?;
+        let off = -0.045 + chance.about(0.035);
+        let mash = read(db, by, &plan, meter, off).await?;
+        run_off(db, by, &plan, meter, mash, chance).await?;
         closing::close(
             db,
             by,
@@ -53,6 +56,10 @@ pub(super) async fn fill_plans(
             },
         )
         .await?;
+        for (stage, ph) in [(Stage::EndOfFermentation, 4.08), (Stage::Package, 4.24)] {
+            let shown = ph + chance.about(0.05);
+            read_stage(db, by, &plan, meter, stage, 0.0, shown).await?;
+        }
     }
     let given_up = drafted(
         db,
@@ -152,28 +159,59 @@ async fn weighed(db: &Db, by: &Member, plan: Plan, lines: usize) -> Result<Plan,
     Ok(after)
 }
 
-/// Reads the mash this far from what the balance expects of it.
-async fn read(db: &Db, by: &Member, plan: &Plan, off: f64) -> Result<PlanId, Error> {
+/// Reads the mash this far from what the balance expects of it. What the meter showed.
+async fn read(db: &Db, by: &Member, plan: &Plan, meter: MeterId, off: f64) -> Result<f64, Error> {
     let mut untrained = compute::mash_as_weighed(plan);
     untrained.offset.value = PhShift::constant(0.0);
     let expected = untrained
         .predict()
         .map_err(|error| Error::internal("A demo mash has no pH", error))?;
-    let shown = ((expected.ph.value.get() + off) * 100.0).round() / 100.0;
+    let shown = expected.ph.value.get() + off;
+    read_stage(db, by, plan, meter, Stage::Mash, 14.0, shown).await?;
+    Ok(shown)
+}
+
+/// Reads the runnings and the kettle of a mash that read so.
+async fn run_off(
+    db: &Db,
+    by: &Member,
+    plan: &Plan,
+    meter: MeterId,
+    mash: f64,
+    chance: &mut Chance,
+) -> Result<(), Error> {
+    for (stage, minute, above) in [
+        (Stage::FirstRunnings, 72.0, 0.01),
+        (Stage::LastRunnings, 118.0, 0.27),
+        (Stage::KettleFull, 0.0, -0.02),
+        (Stage::EndOfBoil, 0.0, -0.17),
+    ] {
+        let shown = mash + above + chance.about(0.02);
+        read_stage(db, by, plan, meter, stage, minute, shown).await?;
+    }
+    Ok(())
+}
+
+async fn read_stage(
+    db: &Db,
+    by: &Member,
+    plan: &Plan,
+    meter: MeterId,
+    stage: Stage,
+    minute: f64,
+    shown: f64,
+) -> Result<(), Error> {
     let new = NewMashCheck {
-        stage: Stage::Mash,
-        minute: Minutes::constant(14.0),
-        ph: Ph::clamped(shown),
+        stage,
+        minute: Minutes::clamped(minute),
+        ph: Ph::clamped((shown * 100.0).round() / 100.0),
         sample: Celsius::constant(20.0),
-        meter: MeterNamed::Another {
-            name: "Bench meter".into(),
-            sd: PhShift::constant(0.03),
-        },
+        meter: MeterNamed::Registered(meter),
         meter_checked: true,
         confirmed: true,
         wort: None,
         cast_out: None,
     };
     mash_checks::read(db, by, plan.id, new).await?;
-    Ok(plan.id)
+    Ok(())
 }

@@ -20,8 +20,12 @@ fn days() -> Vec<i64> {
 }
 
 /// Enters both meters and their calibrations; the last were made this morning and
-/// yesterday.
-pub(super) async fn fill_meters(db: &Db, by: &Member, chance: &mut Chance) -> Result<(), Error> {
+/// yesterday. The first is the one to read with.
+pub(super) async fn fill_meters(
+    db: &Db,
+    by: &Member,
+    chance: &mut Chance,
+) -> Result<MeterId, Error> {
     let bench = added(
         db,
         by,
@@ -53,7 +57,7 @@ pub(super) async fn fill_meters(db: &Db, by: &Member, chance: &mut Chance) -> Re
         });
         operations::calibrate(db, by, handheld, body(calibration)?).await?;
     }
-    Ok(())
+    Ok(bench)
 }
 
 async fn added(db: &Db, by: &Member, meter: serde_json::Value) -> Result<MeterId, Error> {

@@ -54,8 +54,8 @@ pub async fn fill(db: &Db, passwords: &Passwords) -> Result<(), Error> {
     fill_shelf(db, &manager, today).await?;
     let malts = fill_malts(db, &manager, today).await?;
     let beers = fill_beers(db, &manager, &malts).await?;
-    fill_plans(db, &manager, today, &beers, &mut chance).await?;
-    fill_meters(db, &manager, &mut chance).await
+    let meter = fill_meters(db, &manager, &mut chance).await?;
+    fill_plans(db, &manager, today, &beers, meter, &mut chance).await
 }
 
 fn account(login: &str, name: &str, role: &str) -> Result<NewAccount, Error> {
@@ -180,7 +180,7 @@ async fn fill_shelf(db: &Db, by: &Member, today: Date) -> Result<(), Error> {
             json!({"percent": 75, "density_g_per_ml": 1.579}),
             5.0,
             5.1,
-            &["mash", "sparge_liquor"],
+            &["mash", "sparge_liquor", "kettle"],
             "PH-05",
             None,
         ),

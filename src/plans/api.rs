@@ -78,6 +78,7 @@ pub fn routes() -> OpenApiRouter<App> {
         .routes(routes!(checks, check))
         .routes(routes!(withdraw_check))
         .routes(routes!(preview))
+        .merge(super::liquor_checks::api::routes())
         .merge(super::readiness::api::routes())
 }
 

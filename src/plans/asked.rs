@@ -326,7 +326,7 @@ fn shown_ph(value: f64) -> Result<Ph, String> {
         .map(|by| value / by)
         .find(|ph| (3.0..8.0).contains(ph));
     Err(match rather {
-        Some(ph) => format!("A pH lies between 0 and 14. Was it {ph}?"),
+        Some(ph) => format!("A pH lies between 0 and 14. Perhaps it was {ph}"),
         None => "A pH lies between 0 and 14. Read it again".into(),
     })
 }

@@ -28,6 +28,7 @@ pub mod decisions;
 pub mod gather;
 pub mod inputs;
 pub mod learning;
+pub mod liquor_checks;
 pub mod mash_checks;
 pub mod operations;
 pub mod pages;

@@ -8,7 +8,7 @@ use sqlx::{QueryBuilder, Row, Sqlite, SqliteConnection, sqlite::SqliteRow};
 use super::bodies::{InputsBody, ShelfItemBody};
 use super::{Choice, Deed, Dose, Inputs, Lot, Outcome, Plan, Prediction, State, Weighed, Witness};
 use crate::error::Error;
-use crate::id::{BeerId, PlanId, UtcTime};
+use crate::id::{BeerId, DoseId, PlanId, UtcTime};
 
 /// A plan as lists show it.
 #[derive(Clone, Debug, PartialEq)]
@@ -544,6 +544,15 @@ pub(super) async fn add_dose(
     dose: &Dose,
 ) -> Result<(), sqlx::Error> {
     insert_doses(db, plan, std::slice::from_ref(dose)).await
+}
+
+/// Removes one line that is not in.
+pub(super) async fn drop_dose(db: &mut SqliteConnection, id: DoseId) -> Result<(), sqlx::Error> {
+    sqlx::query("DELETE FROM doses WHERE id = ? AND weighed_at IS NULL")
+        .bind(id)
+        .execute(db)
+        .await?;
+    Ok(())
 }
 
 /// Removes first steps that were advised and not given.

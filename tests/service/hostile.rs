@@ -31,6 +31,7 @@ pub struct LivedIn {
     pub check: String,
     pub meter: String,
     pub calibration: String,
+    pub liquor_check: String,
 }
 
 fn first(list: &Value) -> String {
@@ -78,11 +79,15 @@ impl LivedIn {
             .await;
         assert_eq!(closing.status, 201, "{:?}", closing.body);
         let meter =
-            json!({"name": "Bench meter", "kind": "bench", "compensated": true, "in_use": true});
+            json!({"name": "Cellar meter", "kind": "bench", "compensated": true, "in_use": true});
         let meter = made(&program.post("/meters", &meter).await);
         let calibrations = format!("/meters/{meter}/calibrations");
         let calibration = made(&program.post(&calibrations, &calibration()).await);
+        let tested = json!({"alkalinity_mg_per_l_as_caco3": 60});
+        let tests = format!("/plans/{dosed}/liquor-checks");
+        let liquor_check = made(&program.post(&tests, &tested).await);
         Self {
+            liquor_check,
             house,
             material,
             material_lot,

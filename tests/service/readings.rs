@@ -669,3 +669,138 @@ async fn a_mash_step_teaches_the_kettle_and_a_step_nobody_gave_is_overtaken() {
         );
     }
 }
+
+#[tokio::test]
+async fn sparge_liquor_above_its_limit_gets_the_acid_that_its_alkalinity_asks_for() {
+    let house = Brewhouse::build().await;
+    let id = house.dosed("26-414").await;
+    let test = async |body: Value| {
+        house
+            .manager
+            .post(&format!("/plans/{id}/liquor-checks"), &body)
+            .await
+    };
+    // 4 drops of 10 mg/L are well below the 80 mg/L of this beer.
+    let fit = test(json!({"drops": 4, "mg_per_l_as_caco3_per_drop": 10})).await;
+    assert_eq!(advised(&fit)["advice"], "leave");
+    assert_eq!(fit.body["alkalinity_sd"], 5.0);
+    assert_eq!(fit.body["volume_l"], 1500.0);
+    let near = test(json!({"drops": 8, "mg_per_l_as_caco3_per_drop": 10})).await;
+    assert_eq!(advised(&near)["why"], "cannot_be_told");
+
+    // (200 − 71.8) mg/L as CaCO₃ over 50.04 are 2.56 meq/L; 500 L are still to run.
+    let high =
+        test(json!({"drops": "20", "mg_per_l_as_caco3_per_drop": "10", "volume_l": 500})).await;
+    let acid = &advised(&high)["acid"];
+    assert_eq!(advised(&high)["advice"], "acidify");
+    let target: f64 = 80.0 - 1.645 * 5.0;
+    let meq = (200.0 - target) / 50.0434 * 500.0;
+    // 80 % lactic acid, 1.19 g/mL: 10.57 mmol/mL by the table of strengths; to the 5 mL below.
+    let wanted = (meq / 10.57 / 5.0).floor() * 5.0;
+    assert!(
+        (number(&acid["amount"]) - wanted).abs() < 1e-9,
+        "{acid} {wanted}"
+    );
+    assert!(number(&acid["after_mg_per_l_as_caco3"]) < 80.0, "{acid}");
+    assert!(
+        number(&acid["ph_later"]) > number(&acid["ph_at_once"]) + 0.3,
+        "{acid}"
+    );
+    assert_eq!(house.plan(&id).await["state"], "approved");
+    let line = house.doses(&id).await.pop().unwrap();
+    assert_eq!(
+        (&line["vessel"], &line["id"]),
+        (&json!("sparge_liquor"), &high.body["dose_id"])
+    );
+
+    // A later test overtakes the line nobody gave.
+    let again = test(json!({"alkalinity_mg_per_l_as_caco3": 190, "volume_l": 500})).await;
+    let open = house
+        .doses(&id)
+        .await
+        .into_iter()
+        .filter(|dose| dose["actual"].is_null());
+    let open: Vec<Value> = open.collect();
+    assert_eq!(open.len(), 1);
+    assert_eq!(open[0]["id"], again.body["dose_id"]);
+    let path = format!(
+        "/plans/{id}/liquor-checks/{}/withdrawal",
+        again.body["id"].as_str().unwrap()
+    );
+    let gone = house
+        .manager
+        .post(&path, &json!({"reason": "The wrong tank."}))
+        .await;
+    assert_eq!(gone.status, 204, "{:?}", gone.body);
+    assert_eq!(house.plan(&id).await["state"], "dosed");
+
+    for (body, pointer) in [
+        (json!({}), "/drops"),
+        (json!({"drops": 4}), "/mg_per_l_as_caco3_per_drop"),
+        (
+            json!({"drops": 4, "mg_per_l_as_caco3_per_drop": 10, "alkalinity_mg_per_l_as_caco3": 40}),
+            "/alkalinity_mg_per_l_as_caco3",
+        ),
+        (
+            json!({"drops": "four", "mg_per_l_as_caco3_per_drop": 10}),
+            "/drops",
+        ),
+        (
+            json!({"alkalinity_mg_per_l_as_caco3": 40, "volume_l": 0}),
+            "/volume_l",
+        ),
+    ] {
+        let refused = test(body.clone()).await;
+        assert_eq!(
+            (refused.status, refused.pointers()),
+            (422, vec![pointer]),
+            "{body}"
+        );
+    }
+}
+
+#[tokio::test]
+async fn sparge_liquor_is_tested_on_the_tablet_and_its_acid_weighed_out() {
+    let house = Brewhouse::build().await;
+    let id = house.dosed("26-415").await;
+    let brewer = house.desk.browser("brewer").await;
+    let form = brewer.open(&format!("/plans/{id}/liquor-checks/new")).await;
+    assert!(
+        form.words().contains("At most 80 mg/L as CaCO₃"),
+        "{}",
+        form.words()
+    );
+    assert_eq!(form.field("volume_l"), "1500");
+    let action = format!("/plans/{id}/liquor-checks/new");
+    let refused = brewer.fill(&form, &action, &[("drops", "12")]).await;
+    assert_eq!(refused.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert_eq!(refused.field("drops"), "12");
+    let typed = [("mg_per_l_as_caco3_per_drop", "17,1")];
+    let seen = brewer.fill(&refused, &action, &typed).await;
+    for said in [
+        "Acidify the sparge liquor",
+        "into the sparge liquor",
+        "Weigh it out",
+        "12 drops of 17.1 mg/L each",
+    ] {
+        assert!(seen.words().contains(said), "{said}: {}", seen.words());
+    }
+    let again = brewer.open(&action).await;
+    assert_eq!(again.field("mg_per_l_as_caco3_per_drop"), "17.1");
+    let plan = brewer.open(&format!("/plans/{id}")).await;
+    assert!(
+        plan.words().contains("205 ± 8.6 mg/L as CaCO₃"),
+        "{}",
+        plan.words()
+    );
+    // The runnings lead here when they are above their limit.
+    let late = house
+        .read_with(&id, json!({"stage": "last_runnings", "ph": 6.3}))
+        .await;
+    let page = house.page_of(&id, &late).await;
+    assert!(
+        page.words().contains("Check the sparge liquor"),
+        "{}",
+        page.words()
+    );
+}

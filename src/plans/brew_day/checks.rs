@@ -7,6 +7,7 @@ use axum::extract::State;
 use axum::response::{IntoResponse, Redirect, Response};
 use axum::routing::{get, post};
 use chemistry::kettle;
+use chemistry::material::Vessel;
 use chemistry::reading::WARMEST_SAMPLE;
 
 use super::{check_page, read_again};
@@ -105,6 +106,7 @@ async fn new_check_page(
         .doses
         .iter()
         .filter(|dose| dose.weighed.is_none())
+        .filter(|dose| matches!(dose.vessel, Vessel::LiquorTank | Vessel::Mash))
         .filter_map(|dose| plan.inputs.problem.shelf.get(dose.material))
         .map(|item| item.name.clone())
         .collect();

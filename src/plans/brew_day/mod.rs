@@ -19,6 +19,7 @@ use crate::web::layout::{Framer, Page};
 
 mod check_page;
 mod checks;
+mod liquor_checks;
 mod weigh_out;
 
 /// The pages.
@@ -27,6 +28,7 @@ pub(super) fn routes() -> Router<App> {
         .route("/", get(brew_day))
         .merge(weigh_out::routes())
         .merge(checks::routes())
+        .merge(liquor_checks::routes())
 }
 
 #[derive(Template, WebTemplate)]

@@ -12,7 +12,7 @@ use chemistry::plan::{Outcome, Way};
 use crate::brewery::Units;
 use crate::db::Db;
 use crate::error::Error;
-use crate::id::{MashCheckId, PlanId};
+use crate::id::{LiquorCheckId, MashCheckId, PlanId};
 use crate::input::Problems;
 use crate::people::Permission;
 use crate::plans::asked::TreatmentBody;
@@ -21,6 +21,7 @@ use crate::plans::brew_day::{MissingRow, missing_rows, read_again};
 use crate::plans::closing::lesson;
 use crate::plans::decisions;
 use crate::plans::inputs::Inputs;
+use crate::plans::liquor_checks::{self, LiquorCheck};
 use crate::plans::operations::{self, Treatment};
 use crate::plans::sheet::{self, DoseRow, Facts, Group, WayCard, consequences};
 use crate::plans::{MashCheck, Plan, State as PlanState, mash_checks, readiness, words};
@@ -81,6 +82,8 @@ struct ShowPage {
     outside_potable: Vec<String>,
     assumed: Vec<String>,
     checks: Vec<CheckRow>,
+    /// Tests of the sparge liquor: identifier, when and by whom, what they say, what to do.
+    liquor: Vec<(LiquorCheckId, String, String, String)>,
     outcome: Option<OutcomeRow>,
     learned: Option<sheet::LearnedWords>,
     history: Vec<Line>,
@@ -156,6 +159,24 @@ fn check_row(check: MashCheck, time_zone: &str, units: Units) -> CheckRow {
             .map_or_else(String::new, |it| format::decimals(it.get(), 0)),
         check,
     }
+}
+
+fn liquor_row(check: &LiquorCheck, zone: &str) -> (LiquorCheckId, String, String, String) {
+    let when = format!(
+        "{}, {}",
+        format::moment(check.checked_at, zone),
+        check.checked_by
+    );
+    let says = format!(
+        "{} ± {} mg/L as CaCO₃",
+        format::figure(check.alkalinity.value.get()),
+        format::doubt(check.alkalinity.sd)
+    );
+    let advised = match check.withdrawn {
+        Some(_) => "withdrawn".into(),
+        None => check.advised.title.clone(),
+    };
+    (check.id, when, says, advised)
 }
 
 fn outcome_row(outcome: &crate::plans::Outcome) -> OutcomeRow {
@@ -271,6 +292,11 @@ async fn show_page(
         None => ("", Vec::new()),
     };
     let checks = mash_checks::list(db, &framer.member, id).await?;
+    let liquor_tests = liquor_checks::list(db, &framer.member, id).await?;
+    let liquor_tests = liquor_tests
+        .iter()
+        .map(|it| liquor_row(it, &zone))
+        .collect();
     let history =
         record::operations::of_subject(db, &framer.member, "plan", &id.to_string(), 20).await?;
     let typed = match refused {
@@ -371,6 +397,7 @@ async fn show_page(
             .doses
             .iter()
             .any(|dose| dose.mash_check.is_some() && dose.weighed.is_none()),
+        liquor: liquor_tests,
         checks: checks
             .into_iter()
             .map(|check| check_row(check, &zone, units))

@@ -22,7 +22,12 @@ pub fn address(lived: &LivedIn, operation: &Operation) -> String {
         "water-tests" => &lived.water_test,
         _ if path.ends_with("/approval") && !post => &lived.approved,
         _ if path.contains("/doses") || path.ends_with("/revisions") => &lived.approved,
-        _ if path.contains("/mash-checks") || path.ends_with("/closing") => &lived.dosed,
+        _ if path.contains("/mash-checks")
+            || path.contains("/liquor-checks")
+            || path.ends_with("/closing") =>
+        {
+            &lived.dosed
+        }
         _ => &lived.plan,
     };
     let lot = if path.starts_with("/malts") {
@@ -36,6 +41,7 @@ pub fn address(lived: &LivedIn, operation: &Operation) -> String {
         .replace("{calibration_id}", &lived.calibration)
         .replace("{check_id}", &lived.check)
         .replace("{dose_id}", &lived.dose)
+        .replace("{liquor_check_id}", &lived.liquor_check)
 }
 
 /// A body that the operation takes.
@@ -73,6 +79,9 @@ pub async fn good(lived: &LivedIn, operation: &Operation) -> Value {
         }
         "/plans/{id}/mash-checks" => {
             json!({"stage": "mash", "ph": 5.42, "minute": 15, "sample_c": 20, "meter": "Bench", "meter_sd": 0.03, "meter_checked": true})
+        }
+        "/plans/{id}/liquor-checks" => {
+            json!({"drops": 4, "mg_per_l_as_caco3_per_drop": "17,1", "volume_l": 1500})
         }
         "/plans/{id}/closing" => json!({"note": "", "mash_check_id": "", "counts": true}),
         _ if operation.method == "PUT" => kept(&here).await,

@@ -27,7 +27,12 @@ fn needed(method: &str, path: &str) -> Option<(usize, Vec<Scope>)> {
         "meters" => (QA, Scope::Readings),
         "malts" | "materials" if path.contains("/lots") => (QA, Scope::Plans),
         "malts" | "materials" | "beers" => (MANAGER, Scope::Plans),
-        _ if path.contains("/doses/") || path.contains("/mash-checks") => (BREWER, Scope::Readings),
+        _ if path.contains("/doses/")
+            || path.contains("/mash-checks")
+            || path.contains("/liquor-checks") =>
+        {
+            (BREWER, Scope::Readings)
+        }
         _ if path.ends_with("/closing") => (BREWER, Scope::Readings),
         _ if path.ends_with("/approval") => (QA, Scope::Plans),
         _ => (BREWER, Scope::Plans),
