@@ -98,6 +98,8 @@ ids! {
     MashCheckId;
     /// One test of sparge liquor.
     LiquorCheckId;
+    /// A correction of a closed batch.
+    PlanCorrectionId;
     /// A pH meter.
     MeterId;
     /// One calibration of a pH meter.

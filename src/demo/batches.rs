@@ -52,6 +52,7 @@ pub(super) async fn fill_plans(
             Closing {
                 mash_check_id: None,
                 counts: true,
+                reasons: Vec::new(),
                 note: None,
             },
         )

@@ -79,6 +79,7 @@ pub fn routes() -> OpenApiRouter<App> {
         .routes(routes!(withdraw_check))
         .routes(routes!(preview))
         .merge(super::liquor_checks::api::routes())
+        .merge(closing::api::routes())
         .merge(super::readiness::api::routes())
 }
 

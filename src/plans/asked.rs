@@ -426,8 +426,22 @@ pub struct ClosingBody {
     pub mash_check_id: String,
     /// Whether it counts for learning; yes when not given.
     pub counts: Option<Flag>,
+    /// Why things were not as planned. What has no reason yet needs one here or in the note.
+    pub reasons: Vec<DeviationReasonBody>,
     /// What else should be known.
     pub note: String,
+}
+
+/// Why something was not as planned.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct DeviationReasonBody {
+    /// Which deviation: a key of `/plans/{id}/deviations`.
+    #[schema(required = true, min_length = 1)]
+    pub deviation: String,
+    /// Why; left blank, the note stands for it.
+    #[schema(max_length = 500)]
+    pub reason: String,
 }
 
 impl TryFrom<ClosingBody> for Closing {
@@ -443,8 +457,15 @@ impl TryFrom<ClosingBody> for Closing {
             })
         };
         let note = problems.optional_text("note", &body.note, 2000);
+        let mut reasons = Vec::new();
+        for (index, given) in body.reasons.into_iter().enumerate() {
+            let field = format!("reasons.{index}.reason");
+            let reason = problems.optional_text(&field, &given.reason, 500);
+            reasons.extend(reason.map(|reason| (given.deviation, reason)));
+        }
         problems.finish()?;
         Ok(Self {
+            reasons,
             mash_check_id,
             counts: body.counts.is_none_or(|counts| counts.0),
             note,

@@ -569,11 +569,14 @@ pub(super) async fn drop_open_steps(
     Ok(())
 }
 
-/// The outcomes of closed plans, the earliest brewed first.
+/// The outcomes of closed plans, the earliest brewed first. One that a correction takes out of
+/// learning does not count.
 pub(super) async fn outcomes(db: &mut SqliteConnection) -> Result<Vec<Outcome>, Error> {
     let rows: Vec<String> = sqlx::query_scalar(
-        "SELECT outcome FROM (SELECT outcome, brewed_on, closed_at FROM plans WHERE state = 'closed'
-                              ORDER BY brewed_on DESC, closed_at DESC LIMIT 200)
+        "SELECT CASE WHEN EXISTS (SELECT 1 FROM plan_corrections WHERE plan_id = closed.id AND NOT teaches)
+                     THEN json_set(outcome, '$.counts', json('false')) ELSE outcome END
+         FROM (SELECT id, outcome, brewed_on, closed_at FROM plans WHERE state = 'closed'
+                              ORDER BY brewed_on DESC, closed_at DESC LIMIT 200) AS closed
          ORDER BY brewed_on, closed_at",
     )
     .fetch_all(db)

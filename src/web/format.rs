@@ -121,6 +121,7 @@ pub fn done_sentence(key: &str) -> Option<&'static str> {
         "measured" => "The reading is saved.",
         "calibrated" => "The calibration is saved.",
         "closed" => "The batch is closed.",
+        "corrected" => "The correction is written down.",
         "password" => "The password is changed. Sign in with it from now on.",
         "pin" => "The PIN is set. It opens Leat on every enrolled tablet.",
         "enrolled" => {

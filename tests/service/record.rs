@@ -395,3 +395,268 @@ async fn a_lot_leads_to_every_batch_and_a_batch_to_every_lot_test_and_person() {
         .await;
     assert_eq!(nobody.status, 404);
 }
+
+/// Weighs every dose as planned but the first, of which so much goes in.
+async fn weigh_all_but(house: &Brewhouse, id: &str, first: f64) -> serde_json::Value {
+    let doses = house.doses(id).await;
+    for (index, dose) in doses.iter().enumerate() {
+        let actual = if index == 0 {
+            json!(first)
+        } else {
+            dose["planned"].clone()
+        };
+        let path = format!("/plans/{id}/doses/{}", dose["id"].as_str().unwrap());
+        let reason = if index == 0 { "" } else { "As planned." };
+        let weighed = json!({"actual": actual, "lot": "A1", "reason": reason});
+        let answer = house.manager.put(&path, &weighed).await;
+        assert_eq!(answer.status, 200, "{:?}", answer.body);
+    }
+    doses[0].clone()
+}
+
+#[tokio::test]
+async fn closing_asks_why_a_dose_was_left_out_until_it_is_told() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-320").await;
+    let left_out = weigh_all_but(&house, &id, 0.0).await;
+    let path = format!("/plans/{id}/closing");
+    let refused = house.manager.post(&path, &json!({})).await;
+    assert_eq!(refused.status, 422, "{:?}", refused.body);
+    assert_eq!(refused.pointers(), ["/reasons/0/reason"]);
+    let told = refused.body["errors"][0].to_string();
+    assert!(
+        told.contains("Lactic acid into the mash: left out, 705 mL planned"),
+        "{told}"
+    );
+    let deviations = house
+        .manager
+        .get(&format!("/plans/{id}/deviations"))
+        .await
+        .body;
+    let key = deviations[0]["deviation"].as_str().unwrap();
+    assert_eq!(
+        key,
+        format!("left_out:{}", left_out["id"].as_str().unwrap())
+    );
+    assert!(deviations[0]["reason"].is_null(), "{deviations}");
+    let strange = json!({"reasons": [{"deviation": "left_out:x", "reason": "y"}]});
+    assert_eq!(house.manager.post(&path, &strange).await.status, 422);
+    // On the page: the field is there, what was typed stays, and the reason is kept.
+    let brewer = house.desk.browser("brewer").await;
+    let page = brewer.open(&path).await;
+    assert!(page.words().contains("−100.0 %"), "{}", page.words());
+    let asked = brewer.fill(&page, &path, &[]).await;
+    assert_eq!(asked.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert!(asked.error("reasons.0.reason").unwrap().contains("Say why"));
+    let why = ("reasons.0.reason", "The pump stood still.");
+    let closed = brewer.fill(&asked, &path, &[why]).await;
+    assert!(
+        closed.words().contains("The batch is closed"),
+        "{}",
+        closed.words()
+    );
+    let deviations = house
+        .manager
+        .get(&format!("/plans/{id}/deviations"))
+        .await
+        .body;
+    assert_eq!(deviations[0]["reason"], "The pump stood still.");
+    let book = house.manager.get("/record?kind=plan&limit=1").await.body;
+    assert!(book.to_string().contains("The pump stood still."), "{book}");
+    let page = brewer.open(&path).await;
+    assert!(
+        page.words().contains("The pump stood still."),
+        "{}",
+        page.words()
+    );
+}
+
+#[tokio::test]
+async fn the_note_of_a_closing_stands_for_every_reason_that_is_not_given() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-321").await;
+    // 705 mL are planned: 2 % are 14.1 mL, three steps of the scale less.
+    weigh_all_but(&house, &id, 720.0).await;
+    let path = format!("/plans/{id}/closing");
+    assert_eq!(house.manager.post(&path, &json!({})).await.status, 422);
+    let note = json!({"note": "Drained the can to its end."});
+    let closed = house.manager.post(&path, &note).await;
+    assert_eq!(closed.status, 201, "{:?}", closed.body);
+    let deviations = house
+        .manager
+        .get(&format!("/plans/{id}/deviations"))
+        .await
+        .body;
+    assert_eq!(deviations[0]["kind"], "outside_tolerance");
+    assert_eq!(deviations[0]["reason"], "See the closing note");
+    let inside = house.approved("26-322").await;
+    weigh_all_but(&house, &inside, 715.0).await;
+    let deviations = house
+        .manager
+        .get(&format!("/plans/{inside}/deviations"))
+        .await
+        .body;
+    assert_eq!(deviations, json!([]));
+    assert_eq!(
+        house
+            .manager
+            .post(&format!("/plans/{inside}/closing"), &json!({}))
+            .await
+            .status,
+        201
+    );
+}
+
+#[tokio::test]
+async fn a_mash_put_right_explains_its_own_reading_and_one_left_outside_is_asked_about() {
+    let house = Brewhouse::build().await;
+    let id = house.dosed("26-323").await;
+    let read = house.read(&id, 5.7, 12.0).await;
+    assert_eq!(read.body["advised"]["verdict"], "above");
+    let path = format!("/plans/{id}/deviations");
+    let deviations = house.manager.get(&path).await.body;
+    assert_eq!(deviations[0]["kind"], "outside_window");
+    assert!(deviations[0]["reason"].is_null(), "{deviations}");
+    let step = house.doses(&id).await.pop().unwrap();
+    let dose = format!("/plans/{id}/doses/{}", step["id"].as_str().unwrap());
+    let given = json!({"actual": step["planned"], "lot": "A1"});
+    assert_eq!(house.manager.put(&dose, &given).await.status, 200);
+    house.read(&id, 5.42, 25.0).await;
+    let deviations = house.manager.get(&path).await.body;
+    let reason = deviations[0]["reason"].as_str().unwrap();
+    assert!(
+        reason.starts_with("Put right with ") && reason.ends_with("Lactic acid, then read 5.42"),
+        "{reason}"
+    );
+}
+
+#[tokio::test]
+async fn a_closed_batch_is_corrected_beside_what_it_said_and_never_in_its_place() {
+    let house = Brewhouse::build().await;
+    let (acid, lot) = lot_of(&house, "Lactic acid", "LA-2232").await;
+    let id = house.dosed("26-324").await;
+    house.read(&id, 5.42, 15.0).await;
+    let path = format!("/plans/{id}/corrections");
+    let dose = house.doses(&id).await.remove(0);
+    let dose = dose["id"].as_str().unwrap();
+    let wrong_lot = json!({"what": "lot", "dose_id": dose, "lot": "LA-2232", "reason": "Seen at the stock-take."});
+    let early = house.manager.post(&path, &wrong_lot).await;
+    assert_eq!(early.status, 409, "{:?}", early.body);
+    let note = json!({"note": "As usual."});
+    assert_eq!(
+        house
+            .manager
+            .post(&format!("/plans/{id}/closing"), &note)
+            .await
+            .status,
+        201
+    );
+    let before = house.plan(&id).await;
+    let brewer = house.desk.full_program("brewer").await;
+    assert_eq!(brewer.post(&path, &wrong_lot).await.status, 403);
+    let qa = house.desk.full_program("qa").await;
+    let made = qa.post(&path, &wrong_lot).await;
+    assert_eq!(made.status, 201, "{:?}", made.body);
+    assert_eq!(
+        (&made.body["said_before"], &made.body["says_now"]),
+        (&json!("A1"), &json!("LA-2232"))
+    );
+    assert_eq!(
+        (&made.body["material_lot_id"], &made.body["teaches"]),
+        (&json!(lot), &json!(true))
+    );
+    for (wrong, pointer) in [
+        (
+            json!({"what": "lot", "dose_id": dose, "lot": "", "reason": "x"}),
+            "/lot",
+        ),
+        (
+            json!({"what": "amount", "dose_id": dose, "amount": "much", "reason": "x"}),
+            "/amount",
+        ),
+        (
+            json!({"what": "amount", "dose_id": "x", "amount": 5, "reason": "x"}),
+            "/dose_id",
+        ),
+        (json!({"what": "reading", "ph": 14, "reason": "x"}), "/ph"),
+        (json!({"what": "other", "words": "x"}), "/reason"),
+        (json!({"what": "all", "reason": "x"}), "/what"),
+    ] {
+        let answer = qa.post(&path, &wrong).await;
+        assert_eq!(
+            (answer.status, answer.pointers()),
+            (422, vec![pointer]),
+            "{wrong}"
+        );
+    }
+    // By the form: an amount, after which the batch teaches nothing.
+    let browser = house.desk.browser("qa").await;
+    let open = browser
+        .open(&format!("/plans/{}", house.draft("26-326").await))
+        .await;
+    assert!(
+        open.words().contains("What closed batches teach"),
+        "{}",
+        open.words()
+    );
+    let page = browser.open(&format!("/plans/{id}/closing")).await;
+    let subject = format!("amount:{dose}");
+    let typed = [
+        ("subject", subject.as_str()),
+        ("says", "7O0"),
+        ("reason", "The can was marked."),
+    ];
+    let refused = browser.fill(&page, &path, &typed).await;
+    assert_eq!(refused.status, StatusCode::UNPROCESSABLE_ENTITY);
+    assert_eq!(refused.field("says"), "7O0");
+    assert!(refused.error("says").is_some());
+    let seen = browser.fill(&refused, &path, &[("says", "700")]).await;
+    let words = seen.words();
+    assert!(
+        words.contains("Corrected after closing: 700 mL in place of 705 mL"),
+        "{words}"
+    );
+    assert!(
+        words.contains("Corrected after closing: lot LA-2232 in place of A1"),
+        "{words}"
+    );
+    assert!(words.contains("no longer teaches"), "{words}");
+    let after = house.plan(&id).await;
+    assert_eq!(before["doses"], after["doses"]);
+    assert_eq!(before["outcome"], after["outcome"]);
+    // The right lot leads here, and the book has it with what was said before.
+    let went = qa
+        .get(&format!("/materials/{acid}/lots/{lot}/batches"))
+        .await
+        .body;
+    assert_eq!(
+        (&went[0]["batch"], &went[0]["known"]),
+        (&json!("26-324"), &json!("by_correction"))
+    );
+    let book = qa.get("/record?lot=LA-2232&text=corrected").await.body;
+    assert_eq!(book["items"][0]["before"], json!({"lot": "A1"}));
+    assert_eq!(book["items"][0]["reason"], "Seen at the stock-take.");
+    // What it taught before, it teaches no more.
+    let taught = house.draft("26-325").await;
+    let inputs = house
+        .manager
+        .get(&format!("/plans/{taught}/inputs"))
+        .await
+        .body;
+    assert_eq!(inputs["learned"]["batches"], 0.0, "{}", inputs["learned"]);
+    let page = browser.open(&format!("/plans/{taught}")).await;
+    assert!(
+        !page.words().contains("What closed batches teach"),
+        "{}",
+        page.words()
+    );
+    let mut tx = house.desk.app.db.begin_unkeyed().await.unwrap();
+    for statement in [
+        "UPDATE plan_corrections SET says_now = 'x'",
+        "DELETE FROM plan_corrections",
+        "INSERT OR REPLACE INTO plan_corrections SELECT * FROM plan_corrections",
+    ] {
+        let error = sqlx::query(statement).execute(&mut *tx).await.unwrap_err();
+        assert!(error.to_string().contains("append-only"), "{error}");
+    }
+}

@@ -34,6 +34,7 @@ use crate::web::format;
 use crate::web::layout::{Framer, Page};
 use crate::web::units::{Measure, shown_in, typed_in_si};
 
+mod account;
 mod closing;
 mod list;
 mod new;
@@ -61,6 +62,7 @@ pub fn routes() -> Router<App> {
             "/plans/{id}/closing",
             get(closing::show_closing).post(closing::close),
         )
+        .route("/plans/{id}/corrections", post(closing::correct))
         .merge(crate::plans::brew_day::routes())
 }
 

@@ -252,12 +252,12 @@ pub struct PersonBehindBody {
     /// The name of that day.
     name: String,
     /// What.
-    deeds: Vec<DeedBody>,
+    deeds: Vec<PersonDeedBody>,
 }
 
 /// One kind of deed.
 #[derive(Debug, Serialize, utoipa::ToSchema)]
-pub struct DeedBody {
+pub struct PersonDeedBody {
     /// What, in the words of the record book.
     what: String,
     /// How often.
@@ -318,7 +318,7 @@ async fn trace(
         deeds: person
             .deeds
             .into_iter()
-            .map(|(what, times)| DeedBody { what, times })
+            .map(|(what, times)| PersonDeedBody { what, times })
             .collect(),
     });
     Ok(axum::Json(TraceBody {

@@ -83,7 +83,12 @@ pub async fn good(lived: &LivedIn, operation: &Operation) -> Value {
         "/plans/{id}/liquor-checks" => {
             json!({"drops": 4, "mg_per_l_as_caco3_per_drop": "17,1", "volume_l": 1500})
         }
-        "/plans/{id}/closing" => json!({"note": "", "mash_check_id": "", "counts": true}),
+        "/plans/{id}/closing" => {
+            json!({"note": "", "mash_check_id": "", "counts": true, "reasons": []})
+        }
+        "/plans/{id}/corrections" => {
+            json!({"what": "other", "words": "It was raining", "stop_learning": false, "reason": "Seen"})
+        }
         _ if operation.method == "PUT" => kept(&here).await,
         _ => json!({"reason": "As the sweep wants it"}),
     }

@@ -34,7 +34,7 @@ fn needed(method: &str, path: &str) -> Option<(usize, Vec<Scope>)> {
             (BREWER, Scope::Readings)
         }
         _ if path.ends_with("/closing") => (BREWER, Scope::Readings),
-        _ if path.ends_with("/approval") => (QA, Scope::Plans),
+        _ if path.ends_with("/approval") || path.ends_with("/corrections") => (QA, Scope::Plans),
         _ => (BREWER, Scope::Plans),
     };
     Some((role, vec![scope]))
@@ -120,7 +120,7 @@ fn least(action: &str) -> usize {
         }
         path if path.starts_with("/meters") => usize::from(!path.contains("/calibrations")),
         path if path.starts_with("/sources") || path.starts_with("/water-tests") => 1,
-        path if path.contains("/approval") => 1,
+        path if path.contains("/approval") || path.ends_with("/corrections") => 1,
         _ => 0,
     }
 }

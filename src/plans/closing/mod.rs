@@ -2,17 +2,26 @@
 //! from.
 
 use chemistry::quantity::{Estimate, PhShift};
+use serde_json::json;
 use sqlx::SqliteConnection;
 
 use super::inputs::Learned;
 use super::learning::Lesson;
 use super::operations::{about, same_version, title};
-use super::{Deed, Inputs, MashCheck, Outcome, Plan, Stage, State, compute, learning, store};
+use super::{
+    Deed, Inputs, MashCheck, Outcome, Plan, Stage, State, compute, learning, mash_checks,
+    store as plans_store,
+};
 use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MashCheckId, PlanId, UtcTime};
 use crate::people::{Member, Permission};
-use crate::record;
+use crate::{brewery, record};
+
+pub mod api;
+pub mod corrections;
+pub mod deviations;
+mod store;
 
 /// How a batch is closed.
 #[derive(Clone, Debug, PartialEq)]
@@ -21,6 +30,9 @@ pub struct Closing {
     pub mash_check_id: Option<MashCheckId>,
     /// Whether it counts for learning.
     pub counts: bool,
+    /// Why things were not as planned: the key of each deviation with its reason. The
+    /// note stands for those that are not here.
+    pub reasons: Vec<(String, String)>,
     /// What else should be known.
     pub note: Option<String>,
 }
@@ -34,8 +46,9 @@ pub async fn close(
     closing: Closing,
 ) -> Result<Plan, Error> {
     by.may(Permission::BrewBatches)?;
+    let settings = brewery::operations::settings(db).await?;
     let mut tx = db.begin().await?;
-    let before = store::find(&mut tx, id)
+    let before = plans_store::find(&mut tx, id)
         .await?
         .ok_or(Error::NotFound("plan"))?;
     same_version(&before, version)?;
@@ -45,7 +58,7 @@ pub async fn close(
             before.state.name().to_lowercase()
         )));
     }
-    if let Some((_, revision)) = store::successor(&mut tx, id).await? {
+    if let Some((_, revision)) = plans_store::successor(&mut tx, id).await? {
         return Err(Error::Conflict(format!(
             "Revision {revision} is being drafted. Approve or withdraw it first"
         )));
@@ -66,6 +79,9 @@ pub async fn close(
             missing.vessel.name()
         )));
     }
+    let tolerances = store::tolerances(&mut tx).await?;
+    let deviations = deviations::of(&mut tx, &before, &settings, &tolerances).await?;
+    let deviations = deviations::explained(deviations, &closing.reasons, closing.note.as_deref())?;
     let outcome = outcome(&mut tx, &before, &closing).await?;
     let after = Plan {
         state: State::Closed,
@@ -78,8 +94,13 @@ pub async fn close(
         version: before.version + 1,
         ..before.clone()
     };
-    store::update_state(&mut tx, &after).await?;
-    let after_json = serde_json::to_value(&after.outcome).unwrap_or_default();
+    plans_store::update_state(&mut tx, &after).await?;
+    store::write_deviations(&mut tx, id, &deviations).await?;
+    let mut after_json = serde_json::to_value(&after.outcome).unwrap_or_default();
+    after_json["deviations"] = deviations
+        .iter()
+        .map(|it| json!({"what": it.words, "reason": it.reason}))
+        .collect();
     let change = record::Change::of("closed", "plan", id, &title(&after), None, Some(after_json));
     let change = change.because(closing.note).about_each(about(&after));
     record::append(&mut tx, by, change).await?;
@@ -92,7 +113,7 @@ async fn outcome(
     plan: &Plan,
     closing: &Closing,
 ) -> Result<Outcome, Error> {
-    let checks = super::mash_checks::store::of_plan(tx, plan.id).await?;
+    let checks = mash_checks::store::of_plan(tx, plan.id).await?;
     let usable = |check: &&MashCheck| check.stage == Stage::Mash && check.withdrawn.is_none();
     let check = match closing.mash_check_id {
         Some(id) => Some(
