@@ -109,6 +109,11 @@ fn links(entry: &Entry) -> Vec<(String, String)> {
         "beer" => Some((format!("/beers/{id}"), "The beer")),
         "malt" => Some((format!("/malts/{id}"), "The malt")),
         "malt lot" => about("malt").map(|malt| (format!("/malts/{malt}/lots/{id}"), "The lot")),
+        "meter" => Some((format!("/meters/{id}"), "The meter")),
+        "meter calibration" => about("meter").map(|meter| {
+            let address = format!("/meters/{meter}/calibrations/{id}");
+            (address, "The calibration")
+        }),
         "malt titration" => about("malt")
             .zip(about("malt lot"))
             .map(|(malt, lot)| (format!("/malts/{malt}/lots/{lot}"), "The lot")),
