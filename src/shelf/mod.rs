@@ -15,6 +15,7 @@ use jiff::civil::Date;
 use crate::id::{MaterialId, MaterialLotId};
 
 pub mod api;
+pub mod attachments;
 pub mod entered;
 pub mod operations;
 pub mod pages;

@@ -76,6 +76,11 @@ pub async fn find(db: &Db, by: &Member, id: MaterialId) -> Result<Material, Erro
     known(store::find(&mut *db.reader().await?, id).await?)
 }
 
+/// One material. No permission is asked.
+pub async fn material(conn: &mut SqliteConnection, id: MaterialId) -> Result<Material, Error> {
+    known(store::find(conn, id).await?)
+}
+
 fn known(found: Option<Material>) -> Result<Material, Error> {
     found.ok_or(Error::NotFound("material"))
 }

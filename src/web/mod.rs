@@ -25,6 +25,7 @@ use crate::db::Db;
 use crate::people::Place;
 use crate::people::operations::Gate;
 use crate::people::passwords::Passwords;
+use crate::shelf::attachments;
 
 pub mod api;
 pub mod assets;
@@ -102,13 +103,18 @@ pub fn router(app: App) -> Router {
     let pages = guarded(pages)
         .layer(from_fn_with_state(app.clone(), repeat::layer))
         .merge(guarded(crate::people::pages::routes()))
+        .merge(guarded_up_to(
+            attachments::upload::READ_TO_THE_END,
+            attachments::pages::routes(),
+        ))
         .layer(from_fn(queued::layer))
         .layer(from_fn_with_state(app.clone(), session::cookie_layer))
         .layer(CsrfLayer::new())
         .layer(from_fn_with_state(app.clone(), problem::page_layer))
         .layer(never_kept());
 
-    let (api, description) = OpenApiRouter::with_openapi(api::description())
+    let (files, of_files) = attachments::api::routes().split_for_parts();
+    let (api, mut description) = OpenApiRouter::with_openapi(api::description())
         .merge(crate::people::api::routes())
         .merge(crate::record::api::routes())
         .merge(crate::brewery::api::routes())
@@ -120,8 +126,10 @@ pub fn router(app: App) -> Router {
         .merge(crate::sources::api::routes())
         .merge(crate::malts::api::routes())
         .split_for_parts();
+    description.merge(of_files);
     let api = guarded(api.fallback(problem::no_such_endpoint))
         .layer(from_fn_with_state(app.clone(), repeat::layer))
+        .merge(guarded_up_to(attachments::upload::READ_TO_THE_END, files))
         .layer(from_fn_with_state(app.clone(), session::token_layer))
         .layer(from_fn(problem::api_layer))
         .layer(never_kept());
@@ -167,11 +175,16 @@ fn never_kept() -> SetResponseHeaderLayer<HeaderValue> {
 /// What keeps one request from harming the others. It stands inside the layers that turn
 /// refusals into problem+json or a page, so that its answers are explained as well.
 fn guarded(router: Router<App>) -> Router<App> {
+    guarded_up_to(BODY_LIMIT, router)
+}
+
+/// The same for requests up to a size of their own, bytes.
+fn guarded_up_to(limit: usize, router: Router<App>) -> Router<App> {
     router
         .layer(CatchPanicLayer::custom(problem::panicked))
         .layer(TimeoutLayer::with_status_code(
             StatusCode::SERVICE_UNAVAILABLE,
             Duration::from_secs(30),
         ))
-        .layer(RequestBodyLimitLayer::new(BODY_LIMIT))
+        .layer(RequestBodyLimitLayer::new(limit))
 }

@@ -136,7 +136,11 @@ fn respond(problem: Problem) -> Response {
 /// A status that no handler explained, as a problem.
 fn unexplained(status: StatusCode) -> Problem {
     let (kind, title, detail) = match status {
-        StatusCode::PAYLOAD_TOO_LARGE => ("/problems/too-large", "Too large", "Send at most 1 MB."),
+        StatusCode::PAYLOAD_TOO_LARGE => (
+            "/problems/too-large",
+            "Too large",
+            "Send at most 1 MB, or a file of at most 5 MB.",
+        ),
         StatusCode::METHOD_NOT_ALLOWED => (
             "/problems/method",
             "Method not allowed",

@@ -11,6 +11,7 @@ use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MaterialId, MaterialLotId};
 use crate::people::Permission;
+use crate::shelf::attachments::{self, Attachment, Subject};
 use crate::shelf::entered::NewMaterialLotBody;
 use crate::shelf::stock::words::Line;
 use crate::shelf::stock::{self, Stock};
@@ -45,6 +46,7 @@ pub(super) struct ShowPage {
     lasts: Option<String>,
     reassay: Option<String>,
     cautions: Vec<&'static str>,
+    attached: Option<Attachment>,
     lines: Vec<Line>,
     pager: Option<Pager>,
 }
@@ -56,6 +58,8 @@ pub(super) async fn show(
     typed: Form,
 ) -> Result<ShowPage, Error> {
     let ledger = stock::operations::ledger(&db, &framer.member, id, lot_id).await?;
+    let subject = Subject::Lot(id, lot_id);
+    let attached = attachments::operations::newest(&db, &framer.member, subject).await?;
     let name = ledger.material.name_with(Some(&ledger.lot));
     let page = framer.page(name, "shelf").await;
     let zone = page.settings.time_zone.as_str();
@@ -88,6 +92,7 @@ pub(super) async fn show(
         counted_at: ledger.level.counted_at.map(|at| format::moment(at, zone)),
         lasts: stock::words::lasts(units, measures, there, ledger.recent_use),
         cautions: material.substance.cautions(),
+        attached,
         lines,
         pager,
         page,

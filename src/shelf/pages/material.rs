@@ -13,6 +13,7 @@ use crate::db::Db;
 use crate::error::Error;
 use crate::id::{MaterialId, MaterialLotId};
 use crate::people::Permission;
+use crate::shelf::attachments::{self, Attachment, Subject};
 use crate::shelf::entered::NewMaterialBody;
 use crate::shelf::stock::{self, Stock};
 use crate::shelf::warnings;
@@ -49,6 +50,7 @@ pub(super) struct ShowPage {
     draws_water: bool,
     reassay: String,
     cautions: Vec<&'static str>,
+    attached: Option<Attachment>,
     additive_number: Option<&'static str>,
     solubility: Option<&'static str>,
     per_batch: String,
@@ -107,6 +109,8 @@ pub(super) async fn show(
     let lots = operations::lots(&db, &framer.member, id).await?;
     let current = lots.iter().find(|lot| lot.current).cloned();
     let current = current.as_ref();
+    let attached =
+        attachments::operations::newest(&db, &framer.member, Subject::Material(id)).await?;
     let levels = stock::operations::all(&db, &framer.member).await?;
     let stock_of = |id| levels.lot(id).and_then(|level| level.stock);
     let level = levels.material(id);
@@ -143,6 +147,7 @@ pub(super) async fn show(
         draws_water: substance.opened_assay().is_some(),
         reassay: words::how_to_assay(substance).unwrap_or_default(),
         cautions: substance.cautions(),
+        attached,
         additive_number: substance.additive_number(),
         solubility: substance.solubility_note(),
         per_batch: words::amount(units, measures.per_batch, brought),

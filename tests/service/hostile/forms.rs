@@ -67,6 +67,8 @@ pub fn every_form(pages: &[Seen]) -> Vec<Offer> {
                     (_, Some("checkbox" | "radio")) => "box",
                     (_, Some("hidden")) => "hidden",
                     (_, Some("password")) => "password",
+                    // No form without parts sends a file; `shelf::attachments` does.
+                    (_, Some("file")) => "file",
                     _ => "text",
                 };
                 let name = element.attr("name").unwrap_or_default().to_owned();

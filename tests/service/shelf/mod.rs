@@ -7,6 +7,7 @@ use reqwest::StatusCode;
 
 use crate::desk::{Answer, Browser, Desk, Program, Seen, offered};
 
+mod attachments;
 mod stock;
 
 fn gypsum() -> Value {
