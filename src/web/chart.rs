@@ -75,6 +75,11 @@ impl Scale {
         ((100.0 - self.place(value)) * 100.0).round() / 100.0
     }
 
+    /// Whether a value lies on it.
+    pub fn holds(self, value: f64) -> bool {
+        (self.from..=self.to).contains(&value)
+    }
+
     /// A mark on it.
     pub fn mark(self, value: f64, text: impl Into<String>) -> Mark {
         Mark {

@@ -8,7 +8,10 @@ use axum::response::IntoResponse;
 use axum::routing::get;
 use axum::{Extension, Router, extract::State};
 use chemistry::material::{Role, Substance};
+use chemistry::put_right::Aim;
+use chemistry::quantity::Ph;
 use chemistry::references::{self, Reference};
+use chemistry::stages::Stage;
 
 use super::App;
 use super::format::decimals;
@@ -31,6 +34,8 @@ struct HelpPage {
     calcium_share_sd: String,
     co2_lost_share: String,
     co2_lost_share_sd: String,
+    /// Stage, window and where it comes from.
+    stages: Vec<(&'static str, String, &'static str)>,
     cautions: Vec<Cautions>,
     references: &'static [Reference],
 }
@@ -39,6 +44,31 @@ struct HelpPage {
 struct Cautions {
     substances: String,
     sentences: Vec<&'static str>,
+}
+
+/// Where the pH should be at each stage. The mash has the window of each beer.
+fn stages() -> Vec<(&'static str, String, &'static str)> {
+    let any = Aim {
+        target: Ph::constant(5.4),
+        low: Ph::constant(5.2),
+        high: Ph::constant(5.6),
+    };
+    let later = Stage::ALL
+        .into_iter()
+        .filter(|stage| !matches!(stage, Stage::Mash | Stage::FirstRunnings));
+    later
+        .map(|stage| {
+            let window = stage.window(any);
+            let edge = |edge: Option<Ph>| edge.map(|ph| decimals(ph.get(), 1));
+            let between = match (edge(window.low), edge(window.high)) {
+                (Some(low), Some(high)) => format!("{low} to {high}"),
+                (Some(low), None) => format!("from {low}"),
+                (None, Some(high)) => format!("up to {high}"),
+                (None, None) => String::new(),
+            };
+            (stage.name(), between, window.source)
+        })
+        .collect()
 }
 
 /// Every substance that can burn, those with the same sentences together.
@@ -79,6 +109,7 @@ async fn help(State(db): State<Db>, place: Place, member: Option<Extension<Membe
         calcium_share_sd: share(mash.calcium_release.sd),
         co2_lost_share: share(mash.carbon_dioxide_lost.value.get()),
         co2_lost_share_sd: share(mash.carbon_dioxide_lost.sd),
+        stages: stages(),
         cautions: cautions(),
         references: &references::ALL,
         page,

@@ -350,6 +350,33 @@ async fn a_step_is_taken_from_what_stands_on_the_shelf_and_may_be_exchanged() {
 }
 
 #[tokio::test]
+async fn what_was_counted_down_to_nothing_is_not_advised() {
+    let house = Brewhouse::build().await;
+    let acid = house
+        .material("Phosphoric acid", "phosphoric_acid", json!({"mash": true}))
+        .await;
+    let lots = format!("/materials/{acid}/lots");
+    let lot = json!({"code": "P-1", "current": true, "in_use": true});
+    let lot = made(&house.manager.post(&lots, &lot).await);
+    let id = house.dosed("26-416").await;
+    let offered = async |minute: f64| {
+        let seen = house.read(&id, 5.6, minute).await;
+        let told = advised(&seen);
+        let others = told["others"].as_array().unwrap().iter();
+        let names = others.chain([&told["step"]]);
+        names
+            .map(|it| it["name"].to_string())
+            .collect::<Vec<_>>()
+            .join(" ")
+    };
+    assert!(offered(12.0).await.contains("Phosphoric"));
+    let count = json!({"kind": "count", "amount_g_or_ml": 0});
+    let movements = format!("{lots}/{lot}/movements");
+    made(&house.manager.post(&movements, &count).await);
+    assert!(!offered(25.0).await.contains("Phosphoric"));
+}
+
+#[tokio::test]
 async fn after_a_step_the_plan_the_table_and_the_chart_say_what_is_expected_now() {
     let house = Brewhouse::build().await;
     let id = house.dosed("26-407").await;

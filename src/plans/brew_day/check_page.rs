@@ -248,6 +248,7 @@ async fn check_page(
         .map_or(600.0, |step| step.reread_after_minutes * 60.0);
     // Whole seconds of a few minutes: no digit is lost.
     let ends = given.map(|at| at.plus_seconds(wait as i64));
+    let again = advised.advice == "read_again";
     let (step, others) = steps(&plan, &check, units);
     let meter = match check.meter.as_str() {
         "" => "The meter".to_owned(),
@@ -269,6 +270,11 @@ async fn check_page(
         ),
         hot: hot(&check),
         verdict: match (advised.verdict.as_str(), check.stage) {
+            // Nothing rests on it, so it is shown as no more than what was read.
+            ("inside", _) if again => ("unknown", "inside, if it holds"),
+            ("cannot_be_told", _) if again => ("unknown", "near, if it holds"),
+            ("below", _) if again => ("unknown", "below, if it holds"),
+            ("above", _) if again => ("unknown", "above, if it holds"),
             ("inside", _) => ("within", "inside the window"),
             ("cannot_be_told", Stage::Mash) => ("within", "cannot be told from the target"),
             ("cannot_be_told", _) => ("unknown", "cannot be told: near an edge"),
@@ -276,10 +282,15 @@ async fn check_page(
             ("above", _) => ("above", "above the window"),
             _ => ("unknown", "written down"),
         },
-        chance: chance(advised),
+        chance: if again {
+            String::new()
+        } else {
+            chance(advised)
+        },
         kind: match advised.advice.as_str() {
             "step" => "step",
             "stop" => "stop",
+            "read_again" => "again",
             _ => "leave",
         },
         again: ends.map(|ends| (ends.to_string(), format::clock(ends, zone))),

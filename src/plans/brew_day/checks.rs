@@ -127,7 +127,11 @@ async fn new_check_page(
             Vec::new()
         },
         asked: typed.problem("confirmed").is_some() || typed.ticked("confirmed"),
-        warmest: units.show(Measure::Temperature, WARMEST_SAMPLE.get()),
+        warmest: format!(
+            "{} {}",
+            format::decimals(units.shown(Measure::Temperature, WARMEST_SAMPLE.get()), 0),
+            units.label(Measure::Temperature)
+        ),
         usual_cast_out: format::ph(kettle::USUAL_TARGET.get()),
         stage,
         page,

@@ -131,7 +131,7 @@ pub async fn check(
             "This beer is not sparged by its plan. Enter how much liquor is to run.",
         ));
     }
-    let shelf = mash_checks::store::on_the_shelf(&mut tx).await?;
+    let shelf = mash_checks::remedies::on_the_shelf(&mut tx).await?;
     let alkalinity = new.tested.alkalinity();
     // A line of an earlier check that nobody gave is overtaken by this one.
     let earlier = store::of_plan(&mut tx, plan_id).await?;
@@ -274,6 +274,14 @@ pub fn limit(plan: &Plan) -> (MgPerLAsCaCO3, bool) {
         .map_or((sparge::USUAL_LIMIT, true), |high| (high, false))
 }
 
+/// How well the plan knows the alkalinity of its sparge liquor, relative and of at least
+/// this much, mg/L. Source: assumed; a source drifts and acid is poured to a step.
+const PLANNED_RELATIVE_SD: f64 = 0.15;
+const LEAST_PLANNED: f64 = 30.0;
+
+/// Further from it than this many standard deviations is a surprise.
+const SURPRISING: f64 = 3.0;
+
 fn advise(
     plan: &Plan,
     shelf: &[MaterialId],
@@ -333,6 +341,11 @@ fn advise(
             ""
         }
     );
+    let planned = outcome.sparge_liquor.alkalinity_as_caco3().get();
+    let surprise = (alkalinity.value.get() - planned).abs();
+    let doubt = alkalinity
+        .sd
+        .hypot(PLANNED_RELATIVE_SD * planned.abs().max(LEAST_PLANNED));
     let mut acid = None;
     let (kind, why, title, words) = match (advice, index) {
         (SpargeAdvice::LeaveIt, _) => (
@@ -376,7 +389,16 @@ fn advise(
         advice: kind.into(),
         why: why.into(),
         title: title.into(),
-        words: vec![read, words],
+        words: [read, words]
+            .into_iter()
+            .chain((surprise > SURPRISING * doubt).then(|| {
+                format!(
+                    "The plan expects {} mg/L here. Count once more before anything goes in: a kit with other drops is the \
+                     usual slip, a changed water the next.",
+                    format::figure(planned)
+                )
+            }))
+            .collect(),
         acid,
     })
 }

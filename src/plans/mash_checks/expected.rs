@@ -15,13 +15,18 @@ pub struct Now {
     pub since: UtcTime,
 }
 
+/// The last reading of the mash that something may rest on.
+pub fn last_reading(checks: &[MashCheck]) -> Option<&MashCheck> {
+    checks
+        .iter()
+        .rev()
+        .find(|check| check.stage == Stage::Mash && check.stands())
+}
+
 /// What is expected of the mash now. `None` where it was not read yet, or nothing went in
 /// since.
 pub fn now(plan: &Plan, checks: &[MashCheck]) -> Option<Now> {
-    let last = checks
-        .iter()
-        .rev()
-        .find(|check| check.stage == Stage::Mash && check.stands())?;
+    let last = last_reading(checks)?;
     let went_in = |dose: &Dose| dose.weighed.as_ref().map(|weighed| weighed.at);
     let with = |counts: &dyn Fn(UtcTime) -> bool| {
         let mut plan = plan.clone();

@@ -23,7 +23,7 @@ use crate::record::{self, Change};
 mod advice;
 pub mod expected;
 mod mistyped;
-mod remedies;
+pub(super) mod remedies;
 mod repeats;
 mod said;
 mod stages;
@@ -141,7 +141,7 @@ pub async fn read(
     let at = UtcTime::now();
     let earlier = store::of_plan(&mut tx, plan_id).await?;
     let meter = Metered::find(&mut tx, &new.meter, at).await?;
-    let shelf = store::on_the_shelf(&mut tx).await?;
+    let shelf = remedies::on_the_shelf(&mut tx).await?;
     let taken = Taken {
         plan: &plan,
         earlier: &earlier,

@@ -7,16 +7,34 @@ use chemistry::plan::{Outcome, Preference};
 use chemistry::put_right::{Direction, FirstStep, Remedy};
 use chemistry::quantity::{DoseAmount, MgPerL};
 
-use super::Taken;
+use sqlx::SqliteConnection;
+
+use super::{Taken, store};
 use crate::error::Error;
-use crate::id::DoseId;
+use crate::id::{DoseId, MaterialId};
 use crate::plans::{Added, Dose, Plan, Step, compute, words};
+use crate::shelf::{self, stock::Stock};
 
 /// As many materials are offered beside the first.
 const MOST_OTHERS: usize = 3;
 
 /// A change of an ion smaller than this is not told, mg/L.
 const LEAST_TOLD: f64 = 0.05;
+
+/// What stands on the shelf today: in use, and not counted down to nothing. What was never
+/// counted may be there.
+pub(in crate::plans) async fn on_the_shelf(
+    conn: &mut SqliteConnection,
+) -> Result<Vec<MaterialId>, Error> {
+    let levels = shelf::stock::operations::levels(conn).await?;
+    let mut there = store::on_the_shelf(conn).await?;
+    let is_empty = |stock: Stock| stock.get().abs() < LEAST_STOCK;
+    there.retain(|id| !levels.material(*id).stock.is_some_and(is_empty));
+    Ok(there)
+}
+
+/// Less than this is nothing, g or mL: the rounding of sums.
+const LEAST_STOCK: f64 = 1e-6;
 
 /// Places on the plan's shelf of what may go into `vessel` in this role: what was used for it
 /// before, then what the plan doses, then the rest of the shelf.

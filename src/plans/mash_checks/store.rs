@@ -117,8 +117,8 @@ pub(super) async fn withdraw(
     Ok(())
 }
 
-/// The materials that are on the shelf today.
-pub(in crate::plans) async fn on_the_shelf(
+/// The materials that are in use today.
+pub(super) async fn on_the_shelf(
     db: &mut SqliteConnection,
 ) -> Result<Vec<MaterialId>, sqlx::Error> {
     sqlx::query_scalar("SELECT id FROM materials WHERE in_use")

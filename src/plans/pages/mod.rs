@@ -94,9 +94,8 @@ struct ShowPage {
     grist: Vec<(String, String, String)>,
     volumes: Vec<(&'static str, String)>,
     unweighed_steps: bool,
-    /// What is expected of the mash now, since when, and the chance that it lies inside;
-    /// only where something went in after a reading.
-    mash_now: Option<(String, String, String)>,
+    /// Where the mash is by its readings, in a sentence; empty before the first.
+    mash_now: String,
     cautions: Vec<(String, Vec<&'static str>)>,
     trial: bool,
     /// What it lacks, under these words.
@@ -161,6 +160,32 @@ fn check_row(check: MashCheck, time_zone: &str, units: Units) -> CheckRow {
             .map_or_else(String::new, |it| format::decimals(it.get(), 0)),
         check,
     }
+}
+
+/// Where the mash is by its readings and what went in since.
+fn mash_now(plan: &Plan, checks: &[MashCheck], zone: &str) -> String {
+    let aim = &plan.inputs.problem.spec.mash_ph;
+    let figure = |ph: f64, sd: f64| {
+        format!(
+            "{} ± {}, {} the window",
+            format::ph(ph),
+            format::ph(sd),
+            sheet::chance(aim, ph, sd)
+        )
+    };
+    if let Some(now) = mash_checks::expected::now(plan, checks) {
+        return format!(
+            "After what went in at {} the mash is expected at {}. The prediction below is the plan’s own.",
+            format::clock(now.since, zone),
+            figure(now.ph.value.get(), now.ph.sd)
+        );
+    }
+    mash_checks::expected::last_reading(checks).map_or_else(String::new, |last| {
+        format!(
+            "The mash was last read at {}. The prediction below is the plan’s own.",
+            figure(last.advised.reading_ph, last.advised.reading_sd)
+        )
+    })
 }
 
 fn liquor_row(check: &LiquorCheck, zone: &str) -> (LiquorCheckId, String, String, String) {
@@ -380,21 +405,7 @@ async fn show_page(
         trial: tried.is_some(),
         missing,
         again,
-        mash_now: mash_checks::expected::now(&plan, &checks).map(|now| {
-            (
-                format!(
-                    "{} ± {}",
-                    format::ph(now.ph.value.get()),
-                    format::ph(now.ph.sd)
-                ),
-                format::clock(now.since, &zone),
-                sheet::chance(
-                    &plan.inputs.problem.spec.mash_ph,
-                    now.ph.value.get(),
-                    now.ph.sd,
-                ),
-            )
-        }),
+        mash_now: mash_now(&plan, &checks, &zone),
         unweighed_steps: plan
             .doses
             .iter()

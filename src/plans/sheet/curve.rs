@@ -86,7 +86,7 @@ pub(in crate::plans) fn dose_curve(
         .chain(step.map(|step| step.expected_ph)),
         0.4,
     );
-    let across = Scale::around([0.0, units.shown(shown, most.get())], 1e-6).from_zero();
+    let across = Scale::around([0.0, units.shown(shown, most.get())], 1e-6);
     let dose = |amount: f64| across.place(units.shown(shown, amount));
     let point = |amount: f64, ph: f64, sd: f64, text: String| {
         let (top, bottom) = (
@@ -104,6 +104,7 @@ pub(in crate::plans) fn dose_curve(
     let line = |points: &[(DoseAmount, Ph)]| {
         let placed = points
             .iter()
+            .take_while(|(_, ph)| heights.holds(ph.get()))
             .map(|(amount, ph)| format!("{},{}", dose(amount.get()), heights.height(ph.get())));
         placed.collect::<Vec<_>>().join(" ")
     };
