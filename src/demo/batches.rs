@@ -14,7 +14,7 @@ use crate::plans::closing::{self, Closing};
 use crate::plans::decisions;
 use crate::plans::mash_checks::{self, MeterNamed, NewMashCheck};
 use crate::plans::operations::{self as plans, NewPlan};
-use crate::plans::weigh_out::{self, LotNamed, NewWeighed};
+use crate::plans::weigh_out::{self, Actual, LotNamed, NewWeighed};
 use crate::plans::{Plan, Stage, compute};
 
 pub(super) async fn fill_plans(
@@ -149,11 +149,12 @@ async fn weighed(db: &Db, by: &Member, plan: Plan, lines: usize) -> Result<Plan,
     for dose in plan.doses.iter().take(lines) {
         let label = plan.inputs.shelf.get(dose.material);
         let new = NewWeighed {
-            actual: dose.planned,
+            actual: Actual::AsPlanned,
             lot: label
                 .and_then(|label| label.lot_id)
                 .map_or(LotNamed::Untold, LotNamed::Picked),
             reason: None,
+            witness: None,
         };
         after = weigh_out::weigh(db, by, plan.id, dose.id, new).await?;
     }

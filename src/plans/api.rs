@@ -11,8 +11,8 @@ use super::answers::{
     DoseBody, ListingBody, MashCheckBody, OutcomeBody, PlanBody, PreviewBody, ShownBody, WayBody,
 };
 use super::asked::{
-    ApprovalBody, ClosingBody, NewMashCheckBody, NewPlanBody, PreviewInputBody, TreatmentBody,
-    WeighedBody,
+    ApprovalBody, ClosingBody, CorrectionBody, NewMashCheckBody, NewPlanBody, PreviewInputBody,
+    TreatmentBody, WeighedBody,
 };
 use super::bodies::InputsBody;
 use super::inputs::Inputs;
@@ -75,6 +75,7 @@ pub fn routes() -> OpenApiRouter<App> {
         .routes(routes!(close))
         .routes(routes!(doses))
         .routes(routes!(weigh, take_back_weighing))
+        .routes(routes!(correct_weighing))
         .routes(routes!(checks, check))
         .routes(routes!(withdraw_check))
         .routes(routes!(preview))
@@ -338,12 +339,13 @@ async fn doses(
     ))
 }
 
-/// Write down that a dose is in. It is refused when it is in already.
+/// Write down that a dose is in. It is refused when it is in already, and asked about at
+/// `/reason`, with what it does, where it is outside the tolerance of the material.
 #[utoipa::path(put, path = "/plans/{id}/doses/{dose_id}", tag = "plans",
     params(("id" = PlanId, Path), ("dose_id" = DoseId, Path)), request_body = WeighedBody, responses(
     (status = 200, description = "It is in", body = PlanBody),
     (status = 401, description = "No valid token", body = Problem),
-    (status = 403, description = "Not allowed", body = Problem),
+    (status = 403, description = "Not allowed, or a second person is needed", body = Problem),
     (status = 404, description = "There is no such dose", body = Problem),
     (status = 409, description = "It is in already, or the plan is not approved", body = Problem),
     (status = 422, description = "Some fields need mending", body = Problem),
@@ -357,6 +359,31 @@ async fn weigh(
     by.may(Permission::BrewBatches)?;
     let plan = weigh_out::weigh(&db, &by, id, dose, body.try_into()?).await?;
     Ok(tagged(plan.version, PlanBody::from(&plan)))
+}
+
+/// Correct what was written down about a dose. What stood there before stays in its
+/// `corrections`.
+#[utoipa::path(post, path = "/plans/{id}/doses/{dose_id}/correction", tag = "plans",
+    params(("id" = PlanId, Path), ("dose_id" = DoseId, Path)), request_body = CorrectionBody, responses(
+    (status = 201, description = "Corrected", body = PlanBody),
+    (status = 401, description = "No valid token", body = Problem),
+    (status = 403, description = "Not allowed, or a second person is needed", body = Problem),
+    (status = 404, description = "There is no such dose", body = Problem),
+    (status = 409, description = "It is not in, was corrected meanwhile, or the batch is closed", body = Problem),
+    (status = 422, description = "Some fields need mending", body = Problem),
+))]
+async fn correct_weighing(
+    State(db): State<Db>,
+    by: Member,
+    At((id, dose)): At<(PlanId, DoseId)>,
+    Json(body): Json<CorrectionBody>,
+) -> Result<impl IntoResponse, Error> {
+    by.may(Permission::BrewBatches)?;
+    let plan = weigh_out::correct(&db, &by, id, dose, body.try_into()?).await?;
+    Ok((
+        StatusCode::CREATED,
+        tagged(plan.version, PlanBody::from(&plan)),
+    ))
 }
 
 /// Take back that a dose is in: it was a slip.

@@ -11,7 +11,7 @@ use super::bodies::InputsBody;
 use super::closing::Closing;
 use super::mash_checks::{MeterNamed, NewMashCheck};
 use super::operations::{NewPlan, SourceChoice, Treatment};
-use super::weigh_out::{LotNamed, NewWeighed};
+use super::weigh_out::{Actual, LotNamed, NewCorrection, NewWeighed};
 use crate::error::Error;
 use crate::id::{BeerId, MashCheckId};
 use crate::input::{Flag, Number, Problems};
@@ -237,18 +237,50 @@ impl ApprovalBody {
 #[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
 #[serde(default)]
 pub struct WeighedBody {
-    /// How much went in, g or mL.
+    /// How much went in, g or mL. 0 where the line was left out, which needs a reason.
     #[schema(required = true)]
     pub actual: Number,
+    /// Whether it was what was planned, to the last digit: then `actual` is not read.
+    pub as_planned: Flag,
     /// Of which lot: an identifier of `/materials/{id}/lots`.
     pub material_lot_id: String,
     /// The code on its pack, or what its label reads: `LEAT:LOT:` and the identifier.
-    /// Counts before `material_lot_id`.
+    /// Counts before `material_lot_id`. A code that the shelf does not know is kept.
     #[schema(max_length = 80)]
     pub lot: String,
-    /// Why it is not what was planned.
+    /// Why it is further from what was planned than the tolerance of the material or one
+    /// step of its scale.
     #[schema(max_length = 500)]
     pub reason: String,
+}
+
+impl WeighedBody {
+    fn check(&self, problems: &mut Problems) -> NewWeighed {
+        let actual = if self.as_planned.0 {
+            Some(Actual::AsPlanned)
+        } else {
+            let amount = problems.quantity("actual", &self.actual, DoseAmount::new);
+            amount.map(Actual::Amount)
+        };
+        let lot = match problems.optional_text("lot", &self.lot, 80) {
+            Some(text) => LotNamed::read(&text).unwrap_or_else(|message| {
+                problems.add("lot", message);
+                LotNamed::Untold
+            }),
+            None if self.material_lot_id.trim().is_empty() => LotNamed::Untold,
+            None => problems
+                .choice("material_lot_id", &self.material_lot_id, |key| {
+                    key.parse().ok()
+                })
+                .map_or(LotNamed::Untold, LotNamed::Picked),
+        };
+        NewWeighed {
+            actual: actual.unwrap_or(Actual::AsPlanned),
+            lot,
+            reason: problems.optional_text("reason", &self.reason, 500),
+            witness: None,
+        }
+    }
 }
 
 impl TryFrom<WeighedBody> for NewWeighed {
@@ -256,25 +288,55 @@ impl TryFrom<WeighedBody> for NewWeighed {
 
     fn try_from(body: WeighedBody) -> Result<Self, Error> {
         let mut problems = Problems::new();
-        let actual = problems.quantity("actual", &body.actual, DoseAmount::new);
-        let typed = problems.optional_text("lot", &body.lot, 80);
-        let lot = if let Some(text) = typed {
-            LotNamed::read(&text)
-        } else if body.material_lot_id.trim().is_empty() {
-            Ok(LotNamed::Untold)
-        } else {
-            let picked = problems.choice("material_lot_id", &body.material_lot_id, |key| {
-                key.parse().ok()
-            });
-            Ok(picked.map_or(LotNamed::Untold, LotNamed::Picked))
-        };
-        let reason = problems.optional_text("reason", &body.reason, 500);
+        let new = body.check(&mut problems);
         problems.finish()?;
-        Ok(Self {
-            actual: actual.unwrap_or(DoseAmount::constant(0.0)),
-            lot: lot?,
-            reason,
-        })
+        Ok(new)
+    }
+}
+
+/// What should have been written down about a dose.
+#[derive(Clone, Debug, Default, Serialize, Deserialize, utoipa::ToSchema)]
+#[serde(default)]
+pub struct CorrectionBody {
+    /// How much really went in, g or mL.
+    #[schema(required = true)]
+    pub actual: Number,
+    /// Of which lot: an identifier of `/materials/{id}/lots`.
+    pub material_lot_id: String,
+    /// The code on its pack, or what its label reads. Counts before `material_lot_id`.
+    #[schema(max_length = 80)]
+    pub lot: String,
+    /// What was wrong.
+    #[schema(required = true, min_length = 1, max_length = 500)]
+    pub reason: String,
+    /// How many `corrections` the dose had when it was read; more of them by now are
+    /// answered with a conflict.
+    pub corrections: Number,
+}
+
+impl TryFrom<CorrectionBody> for NewCorrection {
+    type Error = Error;
+
+    fn try_from(body: CorrectionBody) -> Result<Self, Error> {
+        let mut problems = Problems::new();
+        problems.text("reason", &body.reason, 500);
+        let seen = problems.optional_quantity("corrections", &body.corrections, |value| {
+            if (0.0..1e6).contains(&value) && value.fract() == 0.0 {
+                Ok(value as usize)
+            } else {
+                Err("Enter how many there were")
+            }
+        });
+        let weighed = WeighedBody {
+            actual: body.actual,
+            as_planned: Flag(false),
+            material_lot_id: body.material_lot_id,
+            lot: body.lot,
+            reason: body.reason,
+        };
+        let weighed = weighed.check(&mut problems);
+        problems.finish()?;
+        Ok(Self { weighed, seen })
     }
 }
 

@@ -228,31 +228,31 @@ pub async fn lot_of_material(
     Ok((material, lot))
 }
 
-/// A lot and its material, for an operation of another group that has asked for its own
-/// permission.
-pub async fn lot_of_dose(
+/// A material, for an operation of another group that has asked for its own permission.
+pub async fn material_of_dose(
     conn: &mut SqliteConnection,
-    lot: MaterialLotId,
-) -> Result<Option<(Material, MaterialLot)>, Error> {
-    let Some(lot) = store::find_lot(conn, lot).await? else {
-        return Ok(None);
-    };
-    let material = known(store::find(conn, lot.material_id).await?)?;
-    Ok(Some((material, lot)))
+    id: MaterialId,
+) -> Result<Option<Material>, Error> {
+    store::find(conn, id).await
 }
 
-/// The lot of a material with this code, upper or lower case, likewise.
+/// A lot, likewise.
+pub async fn lot_of_dose(
+    conn: &mut SqliteConnection,
+    id: MaterialLotId,
+) -> Result<Option<MaterialLot>, Error> {
+    store::find_lot(conn, id).await
+}
+
+/// The lot of a material with this code in upper or lower case, likewise.
 pub async fn lot_by_code(
     conn: &mut SqliteConnection,
     material: MaterialId,
     code: &str,
-) -> Result<Option<MaterialLotId>, Error> {
+) -> Result<Option<MaterialLot>, Error> {
     let code = code.to_lowercase();
     let lots = store::lots(conn, material).await?;
-    Ok(lots
-        .into_iter()
-        .find(|lot| lot.code.to_lowercase() == code)
-        .map(|lot| lot.id))
+    Ok(lots.into_iter().find(|lot| lot.code.to_lowercase() == code))
 }
 
 fn known_lot(found: Option<MaterialLot>) -> Result<MaterialLot, Error> {

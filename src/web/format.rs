@@ -118,6 +118,10 @@ pub fn done_sentence(key: &str) -> Option<&'static str> {
         "read" => "Read anew: water, beer, malts and shelf are as they are now.",
         "taken_back" => "Taken back: that line is not in.",
         "dosed" => "Saved: that dose is in.",
+        "dosed_of_unknown" => {
+            "Saved: that dose is in. The shelf has no lot of that code: it is kept as it was typed."
+        }
+        "dose_corrected" => "Corrected. What stood there before stays to be read.",
         "measured" => "The reading is saved.",
         "calibrated" => "The calibration is saved.",
         "closed" => "The batch is closed.",

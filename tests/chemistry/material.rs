@@ -330,6 +330,28 @@ fn dihydrate_taken_for_anhydrous_is_a_quarter_short() {
 }
 
 #[test]
+fn a_stronger_lot_takes_the_place_of_a_weaker_in_proportion_to_what_a_litre_holds() {
+    let close = |this: &Material, that: &Material, amount: f64, expected: f64| {
+        let instead = this.in_place_of(that, DoseAmount::constant(amount));
+        let instead = instead.expect("the same substance").get();
+        assert!((instead / expected - 1.0).abs() < 1e-9, "{instead}");
+    };
+    // By hand: 88 % at 1.21 g/mL holds 1064.8 g/L, 80 % at 1.19 g/mL 952 g/L.
+    let strong = liquid(Substance::LacticAcid, 88.0, 1.21);
+    let weak = liquid(Substance::LacticAcid, 80.0, 1.19);
+    close(&strong, &weak, 121.0, 121.0 * 952.0 / 1064.8);
+    close(&weak, &weak, 121.0, 121.0);
+    let share = |percent: f64| Estimate::new(Fraction::clamped(percent / 100.0), 0.0);
+    let salt = |percent| {
+        Material::solid(Substance::CalciumChlorideDihydrate, share(percent)).expect("a solid")
+    };
+    close(&salt(75.0), &salt(100.0), 300.0, 400.0);
+    let anhydrous = solid(Substance::CalciumChlorideAnhydrous);
+    let other = anhydrous.in_place_of(&salt(100.0), DoseAmount::constant(1.0));
+    assert_eq!(other, None, "another hydration is another substance");
+}
+
+#[test]
 fn ten_grams_bring_ten_times_one_gram() {
     let bicarbonate = solid(Substance::SodiumBicarbonate);
     let ten = bicarbonate.contribution(DoseAmount::constant(10.0));

@@ -3,7 +3,7 @@
 
 use serde_json::{Value, json};
 
-use crate::desk::{Answer, Desk, Program};
+use crate::desk::{Answer, Browser, Desk, Program, Seen, offered};
 
 /// A water whose ions balance: 96/20.039 + 11/12.1525 + 28/22.99 + 3.5/39.098 = 7.00 meq/L
 /// of cations, 215/50.043 + 62/48.028 + 38/35.45 + 22/62.004 = 7.01 of anions (by hand).
@@ -189,6 +189,27 @@ impl Brewhouse {
             .post(&format!("/plans/{id}/mash-checks"), &body)
             .await
     }
+}
+
+/// Where the form of the first line still to be weighed posts to.
+pub fn weigh_form(page: &Seen) -> String {
+    let html = page.html();
+    let forms = scraper::Selector::parse("form[action]").unwrap();
+    html.select(&forms)
+        .map(|form| form.value().attr("action").unwrap().to_owned())
+        .find(|action| {
+            let after = action.split("/doses/").nth(1);
+            after.is_some_and(|after| !after.contains('/'))
+        })
+        .unwrap_or_else(|| panic!("nothing to weigh on {}: {}", page.path, page.words()))
+}
+
+/// Taps “As planned” on the first line still to be weighed, with these fields filled in.
+pub async fn as_planned(browser: &Browser, page: &Seen, typed: &[(&str, &str)]) -> Seen {
+    let action = weigh_form(page);
+    let mut fields = offered(page, &action, typed);
+    fields.push(("as_planned".into(), "yes".into()));
+    browser.post(&action, &fields).await
 }
 
 pub fn expected_ph(plan: &Value) -> f64 {

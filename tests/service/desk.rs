@@ -413,6 +413,11 @@ impl Program {
         Answer::of(request.send().await.unwrap()).await
     }
 
+    /// The token itself.
+    pub fn token(&self) -> &str {
+        &self.token
+    }
+
     /// A request with the token, yet to be sent.
     pub fn request(&self, method: &str, path: &str) -> reqwest::RequestBuilder {
         let url = format!("{}/api/v1{path}", self.address);

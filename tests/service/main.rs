@@ -27,3 +27,4 @@ mod shelf;
 mod source_pages;
 mod sources;
 mod tablets;
+mod weigh_out;

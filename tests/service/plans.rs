@@ -272,7 +272,7 @@ async fn a_change_of_an_approved_plan_is_a_new_revision_that_takes_what_is_in_wi
         .manager
         .put(
             &format!("/plans/{id}/doses/{}", dose["id"].as_str().unwrap()),
-            &json!({"actual": 7}),
+            &json!({"actual": 7, "reason": "The tin was empty"}),
         )
         .await;
     let next = house

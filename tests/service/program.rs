@@ -15,6 +15,7 @@ use leat::people::{Member, Role, Scope};
 use reqwest::Client;
 use serde_json::json;
 
+use crate::brewhouse::Brewhouse;
 use crate::desk::{Desk, PASSWORD, sign_in};
 
 fn leat(file: &Path) -> Command {
@@ -333,6 +334,65 @@ fn a_certificate_that_cannot_be_used_is_refused_with_the_names_of_its_settings()
         assert!(words(&output).contains(name), "{}", words(&output));
     }
     assert!(!file.exists());
+}
+
+#[tokio::test(flavor = "multi_thread", worker_threads = 2)]
+async fn killed_between_a_tick_and_its_answer_every_tick_sent_again_is_in_exactly_once() {
+    let house = Brewhouse::build().await;
+    let mut ticks = Vec::new();
+    for batch in 0..6 {
+        let id = house.approved(&format!("26-8{batch:02}")).await;
+        for dose in house.doses(&id).await {
+            let path = format!("/plans/{id}/doses/{}", dose["id"].as_str().unwrap());
+            ticks.push((path, json!({"actual": dose["planned"], "lot": "A1"})));
+        }
+    }
+    let token = house.manager.token().to_owned();
+    let file = house.desk.file.clone();
+    house.desk.app.db.close().await;
+    let send = async |address: &str, (path, body): &(String, serde_json::Value)| {
+        Client::new()
+            .put(format!("{address}/api/v1{path}"))
+            .bearer_auth(&token)
+            .header("idempotency-key", path)
+            .json(body)
+            .send()
+            .await
+    };
+    // Each tick of a round is sent and the program killed a little later each time; what
+    // was not answered is sent again after the restart, and once more for good measure.
+    for (round, tick) in ticks.iter().enumerate() {
+        let mut running = Running::start(&file);
+        let address = running.address.clone();
+        let wait = Duration::from_micros(700 * u64::try_from(round).unwrap());
+        let killer = async {
+            tokio::time::sleep(wait).await;
+            running.process.kill().unwrap();
+            running.process.wait().unwrap();
+        };
+        let (answer, ()) = tokio::join!(send(&address, tick), killer);
+        let answered = answer.is_ok();
+        let running = Running::start(&file);
+        for _ in 0..2 {
+            let again = send(&running.address, tick).await.unwrap();
+            let status = again.status().as_u16();
+            // Killed after the tick was saved and before its answer was: that it is in is
+            // all there is to tell.
+            assert!([200, 409].contains(&status), "{answered} {status}");
+        }
+    }
+    let db = Db::open(&file).await.unwrap();
+    let mut reader = db.reader().await.unwrap();
+    let (weighed, told): (i64, i64) = sqlx::query_as(
+        "SELECT (SELECT count(*) FROM doses WHERE weighed_at IS NOT NULL),
+                (SELECT count(*) FROM record_entries WHERE action = 'weighed in')",
+    )
+    .fetch_one(&mut *reader)
+    .await
+    .unwrap();
+    let sent = i64::try_from(ticks.len()).unwrap();
+    assert!(sent >= 12, "{sent}");
+    assert_eq!((weighed, told), (sent, sent));
 }
 
 async fn enter(

@@ -3,20 +3,16 @@
 use reqwest::{StatusCode, header};
 use serde_json::Value;
 
-use crate::brewhouse::Brewhouse;
+use crate::brewhouse::{Brewhouse, weigh_form};
 use crate::desk::{Answer, Browser, Seen, offered};
 
-/// The form of the line to be weighed, as the page offers it.
+/// The form of the line to be weighed, as the page offers it; as planned if nothing is typed.
 fn line(page: &Seen, typed: &[(&str, &str)]) -> (String, Vec<(String, String)>) {
-    let html = page.html();
-    let forms = scraper::Selector::parse("form[action]").unwrap();
-    let action = html
-        .select(&forms)
-        .filter_map(|form| form.value().attr("action"))
-        .find(|action| action.contains("/doses/") && !action.ends_with("taking-back"))
-        .unwrap_or_else(|| panic!("nothing to weigh: {}", page.words()))
-        .to_owned();
-    let fields = offered(page, &action, typed);
+    let action = weigh_form(page);
+    let mut fields = offered(page, &action, typed);
+    if typed.is_empty() {
+        fields.push(("as_planned".into(), "yes".into()));
+    }
     (action, fields)
 }
 

@@ -196,6 +196,25 @@ impl Material {
         self.per_unit().times(amount)
     }
 
+    /// How much of this does what `amount` of `other` does, where both are the same
+    /// substance in another strength. Acids and bases by their equivalents, salts by their
+    /// ions. `None` for another substance, and where this does nothing at all.
+    #[must_use]
+    pub fn in_place_of(&self, other: &Self, amount: DoseAmount) -> Option<DoseAmount> {
+        if self.substance != other.substance {
+            return None;
+        }
+        let acting = |material: &Self| {
+            let unit = material.per_unit();
+            match unit.alkalinity.get().abs() {
+                0.0 => unit.ions.iter().map(|(_, ion)| ion.get()).sum(),
+                equivalents => equivalents,
+            }
+        };
+        let (this, that) = (acting(self), acting(other));
+        (this > 0.0).then(|| DoseAmount::clamped(amount.get() * that / this))
+    }
+
     fn holding(&self, acting_share: f64) -> Contribution {
         if let Some(Strength::Titrated {
             acid,

@@ -310,7 +310,10 @@ async fn lot(
     code: &str,
 ) -> Result<Option<MaterialLotId>, Error> {
     match plan.inputs.shelf.get(dose.material).and_then(|it| it.id) {
-        Some(material) => shelf::operations::lot_by_code(tx, material, code).await,
+        Some(material) => {
+            let lot = shelf::operations::lot_by_code(tx, material, code).await?;
+            Ok(lot.map(|lot| lot.id))
+        }
         None => Ok(None),
     }
 }

@@ -203,7 +203,9 @@ fn treated_sd(plan: &Plan, ion: Ion, diluted: &dyn Fn(Vessel) -> Option<Litres>)
             .filter(|dose| dose.material == index)
             .filter_map(|dose| Some((dose, diluted(dose.vessel)?)))
             .map(|(dose, volume)| {
-                let brought = item.material.contribution(dose.amount());
+                let lot = dose.weighed.as_ref().and_then(|it| it.lot.material);
+                let material = lot.unwrap_or(item.material);
+                let brought = material.contribution(dose.amount());
                 brought.added_to(&Water::pure(), volume).ions[ion].get()
             })
             .sum();

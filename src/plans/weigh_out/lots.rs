@@ -1,13 +1,12 @@
 //! Which lot a dose was taken from: picked, scanned or typed.
 
+use jiff::civil::Date;
 use sqlx::SqliteConnection;
 
-use crate::db::Db;
 use crate::error::Error;
-use crate::id::{MaterialId, MaterialLotId};
-use crate::people::Member;
-use crate::plans::{Dose, Lot, Plan};
-use crate::shelf::{self, MaterialLot};
+use crate::id::MaterialLotId;
+use crate::plans::Lot;
+use crate::shelf::{self, Material, MaterialLot};
 
 /// A lot as somebody names it.
 #[derive(Clone, Debug, Default, PartialEq, Eq)]
@@ -28,7 +27,7 @@ pub const LABEL: &str = "LEAT:LOT:";
 
 impl LotNamed {
     /// What was typed or scanned: a label of the shelf, or the code on a pack.
-    pub fn read(text: &str) -> Result<Self, Error> {
+    pub fn read(text: &str) -> Result<Self, &'static str> {
         let text = text.trim();
         let label = text
             .get(..LABEL.len())
@@ -41,35 +40,32 @@ impl LotNamed {
                 .parse()
                 .map(Self::Scanned)
                 .map_err(|_| {
-                    Error::field(
-                        "lot",
-                        "This label could not be read whole. Scan it again, or type the code on the pack.",
-                    )
+                    "This label could not be read whole. Scan it again, or type the code on the pack."
                 }),
         }
     }
 }
 
 /// The lot of a dose, with what it is on the day of the brew. A code that the
-/// shelf does not know is kept as it is told.
+/// shelf does not know is kept as it is told. `wanted`: the material of the dose.
 pub(super) async fn find(
     conn: &mut SqliteConnection,
-    plan: &Plan,
-    dose: &Dose,
+    wanted: Option<&Material>,
+    name: &str,
+    on: Date,
     named: LotNamed,
 ) -> Result<Lot, Error> {
-    let wanted = plan.inputs.shelf.get(dose.material).and_then(|it| it.id);
-    let (id, field) = match named {
+    let (lot, field) = match named {
         LotNamed::Untold => return Ok(Lot::default()),
-        LotNamed::Picked(id) => (id, "material_lot_id"),
-        LotNamed::Scanned(id) => (id, "lot"),
+        LotNamed::Picked(id) => (by_id(conn, id, "material_lot_id").await?, "material_lot_id"),
+        LotNamed::Scanned(id) => (by_id(conn, id, "lot").await?, "lot"),
         LotNamed::Code(code) => {
             let known = match wanted {
-                Some(material) => shelf::operations::lot_by_code(conn, material, &code).await?,
+                Some(wanted) => shelf::operations::lot_by_code(conn, wanted.id, &code).await?,
                 None => None,
             };
             match known {
-                Some(id) => (id, "lot"),
+                Some(lot) => (lot, "lot"),
                 None => {
                     return Ok(Lot {
                         code,
@@ -79,41 +75,42 @@ pub(super) async fn find(
             }
         }
     };
-    let found = shelf::operations::lot_of_dose(conn, id).await?;
-    let (material, lot) = found.ok_or_else(|| {
-        Error::field(
-            field,
-            "The shelf has no such lot. Type the code on the pack instead.",
-        )
-    })?;
-    if wanted != Some(material.id) {
-        let wanted = plan.inputs.problem.shelf.get(dose.material);
-        let wanted = wanted.map_or("another material", |item| item.name.as_str());
-        return Err(Error::field(
-            field,
-            format!(
-                "That is lot {} of {}. This line takes {wanted}: put it back and fetch the right pack.",
-                lot.code, material.name
-            ),
-        ));
+    match wanted.filter(|wanted| wanted.id == lot.material_id) {
+        Some(wanted) => Ok(Lot {
+            material: Some(wanted.chemistry(Some(&lot), on)),
+            id: Some(lot.id),
+            code: lot.code,
+        }),
+        None => {
+            let other = shelf::operations::material_of_dose(conn, lot.material_id).await?;
+            let other = other.map_or("another material".to_owned(), |other| other.name);
+            Err(Error::field(
+                field,
+                format!(
+                    "That is lot {} of {other}. This line takes {name}: put it back and fetch the right pack.",
+                    lot.code
+                ),
+            ))
+        }
     }
-    Ok(Lot {
-        material: Some(material.chemistry(Some(&lot), plan.brewed_on)),
-        id: Some(lot.id),
-        code: lot.code,
-    })
 }
 
-/// The lots of a material that a dose may be taken from, the current one first.
-pub async fn to_choose_from(
-    db: &Db,
-    by: &Member,
-    material: Option<MaterialId>,
-) -> Result<Vec<MaterialLot>, Error> {
-    let Some(material) = material else {
-        return Ok(Vec::new());
-    };
-    let mut lots = shelf::operations::lots(db, by, material).await?;
-    lots.retain(|lot| lot.in_use);
-    Ok(lots)
+async fn by_id(
+    conn: &mut SqliteConnection,
+    id: MaterialLotId,
+    field: &str,
+) -> Result<MaterialLot, Error> {
+    shelf::operations::lot_of_dose(conn, id)
+        .await?
+        .ok_or_else(|| {
+            Error::field(
+                field,
+                "The shelf has no such lot. Type the code on the pack instead.",
+            )
+        })
+}
+
+/// The lots that a dose may be taken from, of all of its material.
+pub fn to_choose_from(lots: &[MaterialLot]) -> impl Iterator<Item = &MaterialLot> {
+    lots.iter().filter(|lot| lot.in_use)
 }

@@ -75,7 +75,10 @@ pub async fn good(lived: &LivedIn, operation: &Operation) -> Value {
             json!({"shares_percent": ["100"], "doses": [{"material": 1, "vessel": "mash", "amount": "5,5"}]})
         }
         "/plans/{id}/doses/{dose_id}" if operation.method == "PUT" => {
-            json!({"actual": 5, "lot": "A"})
+            json!({"actual": 5, "lot": "A", "reason": "As the sweep wants it"})
+        }
+        "/plans/{id}/doses/{dose_id}/correction" => {
+            json!({"actual": 4, "lot": "B", "reason": "As the sweep wants it"})
         }
         "/plans/{id}/mash-checks" => {
             json!({"stage": "mash", "ph": 5.42, "minute": 15, "sample_c": 20, "meter": "Bench", "meter_sd": 0.03, "meter_checked": true})

@@ -59,7 +59,7 @@ async fn of_many_who_do_the_same_thing_at_once_exactly_one_has_done_it() {
         (
             "PUT",
             format!("/plans/{}/doses/{}", lived.approved, lived.dose),
-            json!({"actual": 5}),
+            json!({"actual": 5, "reason": "Everybody says so"}),
         ),
         (
             "PUT",
