@@ -20,6 +20,7 @@ pub struct LivedIn {
     pub house: Brewhouse,
     pub material: String,
     pub material_lot: String,
+    pub movement: String,
     pub malt: String,
     pub malt_lot: String,
     pub titration: String,
@@ -46,6 +47,9 @@ impl LivedIn {
         let lot = json!({"code": "G-1", "current": true, "in_use": true});
         let lots = format!("/materials/{material}/lots");
         let material_lot = made(&program.post(&lots, &lot).await);
+        let delivery = json!({"kind": "delivery", "amount_g_or_ml": 1000});
+        let movements = format!("{lots}/{material_lot}/movements");
+        let movement = made(&program.post(&movements, &delivery).await);
         let malt = first(&program.get("/malts").await.body);
         let lot = json!({"code": "M-1", "wort_ph": 5.9, "in_use": true});
         let malt_lot = made(&program.post(&format!("/malts/{malt}/lots"), &lot).await);
@@ -91,6 +95,7 @@ impl LivedIn {
             house,
             material,
             material_lot,
+            movement,
             malt,
             malt_lot,
             titration,

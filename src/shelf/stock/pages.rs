@@ -170,6 +170,11 @@ async fn enter(
     match entered.await {
         Ok(_) => Ok(Redirect::to(&format!("/shelf/{id}/lots/{lot_id}?done=saved")).into_response()),
         Err(error) => {
+            // Nobody types which movement is corrected: there is no field to lead to.
+            let error = error.renamed(|field| match field {
+                "corrects" => String::new(),
+                other => other.into(),
+            });
             let (status, typed) = typed.refused(error)?;
             let kind = match MovementKind::from_key(typed.value("kind")) {
                 Some(MovementKind::Count) => MovementKind::Count,

@@ -37,6 +37,7 @@ pub fn address(lived: &LivedIn, operation: &Operation) -> String {
     };
     path.replace("{id}", id)
         .replace("{lot_id}", lot)
+        .replace("{movement_id}", &lived.movement)
         .replace("{titration_id}", &lived.titration)
         .replace("{calibration_id}", &lived.calibration)
         .replace("{check_id}", &lived.check)
