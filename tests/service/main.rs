@@ -23,6 +23,7 @@ mod queued;
 mod readiness;
 mod readings;
 mod record;
+mod runnings;
 mod shelf;
 mod source_pages;
 mod sources;
