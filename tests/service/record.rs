@@ -667,3 +667,73 @@ async fn a_closed_batch_is_corrected_beside_what_it_said_and_never_in_its_place(
         assert!(error.to_string().contains("append-only"), "{error}");
     }
 }
+
+#[tokio::test]
+async fn a_batch_sheet_holds_what_an_auditor_asks_for() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-330").await;
+    weigh_all_but(&house, &id, 720.0).await;
+    house.read(&id, 5.42, 15.0).await;
+    let note = json!({"note": "Drained the can to its end."});
+    let closed = house
+        .manager
+        .post(&format!("/plans/{id}/closing"), &note)
+        .await;
+    assert_eq!(closed.status, 201, "{:?}", closed.body);
+    let correction =
+        json!({"what": "other", "words": "The can held 721 mL.", "reason": "Weighed empty."});
+    let path = format!("/plans/{id}/corrections");
+    assert_eq!(house.manager.post(&path, &correction).await.status, 201);
+    let page = house.desk.browser("brewer").await;
+    let sheet = page.open(&format!("/plans/{id}/sheet")).await;
+    assert_eq!(sheet.status, StatusCode::OK);
+    let words = sheet.words();
+    for expected in [
+        "Batch sheet 26-330",
+        "Sluice Pale, brewed on 2026-12-02",
+        "Printed ",
+        concat!("from Leat ", env!("CARGO_PKG_VERSION")),
+        "Metric: hectolitres",
+        "Approved Mara Manager",
+        // The source with its test, the grist, the liquor.
+        "Town mains100.0 %2700 L2026-11-02, Fen Analytical",
+        "Pale malt",
+        "400 kg",
+        "Liquor2700 L",
+        // Planned against actual, 15 of 705 mL more; who and of which lot.
+        "705 mL 720 mL +2.1 %outside tolerance",
+        "A1",
+        "5.42 at 20 °C",
+        "Bench meter, calibrated ",
+        "Measured, cooled sample",
+        "reading 5.42",
+        "Lactic acid into the mash: 720 mL in place of 705 mL",
+        "See the closing note",
+        "Drained the can to its end.",
+        "The can held 721 mL.",
+        "Weighed empty.",
+        "closed plan",
+        "corrected after closing plan",
+    ] {
+        assert!(words.contains(expected), "{expected}: {words}");
+    }
+    let entries = house
+        .manager
+        .get("/record?batch=26-330&limit=200")
+        .await
+        .body;
+    let written = entries["items"].as_array().unwrap().len();
+    let tables = sheet.texts("table");
+    let book = tables
+        .iter()
+        .filter(|table| table.starts_with("EntryWhenWhoWhat"));
+    assert_eq!(book.count(), 1, "{tables:?}");
+    assert!(
+        written >= 6 && words.contains("weighed in dose"),
+        "{written}: {words}"
+    );
+    assert_eq!(
+        page.open("/plans/none/sheet").await.status,
+        StatusCode::NOT_FOUND
+    );
+}

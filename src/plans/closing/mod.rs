@@ -21,6 +21,7 @@ use crate::{brewery, record};
 pub mod api;
 pub mod corrections;
 pub mod deviations;
+pub mod revisions;
 mod store;
 
 /// How a batch is closed.

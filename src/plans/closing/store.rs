@@ -6,10 +6,11 @@ use sqlx::{Row, SqliteConnection, sqlite::SqliteRow};
 
 use super::corrections::{PlanCorrection, What};
 use super::deviations::{Deviation, Kind, Tolerances};
+use super::revisions::{Calibrated, Revision};
 use crate::error::Error;
-use crate::id::{MaterialId, PlanId};
-use crate::plans::Deed;
+use crate::id::{MaterialId, PlanId, UtcTime};
 use crate::plans::store::unreadable;
+use crate::plans::{Deed, State};
 
 #[derive(Serialize, Deserialize)]
 struct DeviationRow {
@@ -140,4 +141,71 @@ fn correction(row: &SqliteRow) -> Result<PlanCorrection, Error> {
             reason: row.try_get("reason")?,
         },
     })
+}
+
+/// Every revision of a batch's plan, the first one first.
+pub(super) async fn revisions(
+    db: &mut SqliteConnection,
+    batch: &str,
+) -> Result<Vec<Revision>, Error> {
+    let rows = sqlx::query(
+        "SELECT revision, state, created_at, created_by, approved_at, approved_by, approval_reason, withdrawn_at,
+                withdrawn_by, withdrawal_reason, closed_at, closed_by, closing_note
+         FROM plans WHERE batch = ? ORDER BY revision",
+    )
+    .bind(batch)
+    .fetch_all(db)
+    .await?;
+    let deed = |row: &SqliteRow, at: &str, by: &str, reason: &str| -> Result<Option<Deed>, Error> {
+        let Some(at) = row.try_get::<Option<UtcTime>, _>(at)? else {
+            return Ok(None);
+        };
+        let text = |column: &str| row.try_get::<Option<String>, _>(column);
+        Ok(Some(Deed {
+            at,
+            by: text(by)?.unwrap_or_default(),
+            reason: text(reason)?.unwrap_or_default(),
+        }))
+    };
+    rows.iter()
+        .map(|row| {
+            Ok(Revision {
+                revision: row.try_get("revision")?,
+                state: State::from_key(row.try_get("state")?)
+                    .ok_or_else(|| unreadable("unknown state"))?,
+                drafted: Deed {
+                    at: row.try_get("created_at")?,
+                    by: row.try_get("created_by")?,
+                    reason: String::new(),
+                },
+                approved: deed(row, "approved_at", "approved_by", "approval_reason")?,
+                withdrawn: deed(row, "withdrawn_at", "withdrawn_by", "withdrawal_reason")?,
+                closed: deed(row, "closed_at", "closed_by", "closing_note")?,
+            })
+        })
+        .collect()
+}
+
+/// The calibrations that the readings of a plan rest on.
+pub(super) async fn calibrations(
+    db: &mut SqliteConnection,
+    plan: PlanId,
+) -> Result<Vec<Calibrated>, Error> {
+    let rows = sqlx::query(
+        "SELECT DISTINCT meter_calibrations.id, calibrated_at, slope_percent
+         FROM mash_checks JOIN meter_calibrations ON meter_calibrations.id = calibration_id
+         WHERE plan_id = ?",
+    )
+    .bind(plan)
+    .fetch_all(db)
+    .await?;
+    rows.iter()
+        .map(|row| {
+            Ok(Calibrated {
+                id: row.try_get("id")?,
+                at: row.try_get("calibrated_at")?,
+                slope_percent: row.try_get("slope_percent")?,
+            })
+        })
+        .collect()
 }

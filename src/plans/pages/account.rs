@@ -189,7 +189,7 @@ pub(super) fn interval(plan: &Plan, check: Option<&MashCheck>) -> Option<Interva
         .map(|check| (check.advised.reading_ph, check.advised.reading_sd))
         .or(closed);
     let aim = plan.inputs.problem.spec.mash_ph;
-    Some(sheet::interval(plan.prediction?, aim, None, reading))
+    Some(sheet::interval(plan.prediction?, aim, reading, None))
 }
 
 /// A deviation with the place of the reason it is asked for, if it is.

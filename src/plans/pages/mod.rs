@@ -35,6 +35,7 @@ use crate::web::layout::{Framer, Page};
 use crate::web::units::{Measure, shown_in, typed_in_si};
 
 mod account;
+mod batch_sheet;
 mod closing;
 mod list;
 mod new;
@@ -63,6 +64,7 @@ pub fn routes() -> Router<App> {
             get(closing::show_closing).post(closing::close),
         )
         .route("/plans/{id}/corrections", post(closing::correct))
+        .route("/plans/{id}/sheet", get(batch_sheet::show))
         .merge(crate::plans::brew_day::routes())
 }
 
