@@ -8,7 +8,7 @@ use jiff::civil::Date;
 use super::{Chance, days_before};
 use crate::db::Db;
 use crate::error::Error;
-use crate::id::{BeerId, MeterId};
+use crate::id::{BeerId, MeterId, UtcTime};
 use crate::people::Member;
 use crate::plans::closing::{self, Closing};
 use crate::plans::decisions;
@@ -155,6 +155,7 @@ async fn weighed(db: &Db, by: &Member, plan: Plan, lines: usize) -> Result<Plan,
                 .map_or(LotNamed::Untold, LotNamed::Picked),
             reason: None,
             witness: None,
+            at: UtcTime::now(),
         };
         after = weigh_out::weigh(db, by, plan.id, dose.id, new).await?;
     }

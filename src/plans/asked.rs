@@ -13,7 +13,7 @@ use super::mash_checks::{MeterNamed, NewMashCheck};
 use super::operations::{NewPlan, SourceChoice, Treatment};
 use super::weigh_out::{Actual, LotNamed, NewCorrection, NewWeighed};
 use crate::error::Error;
-use crate::id::{BeerId, MashCheckId};
+use crate::id::{BeerId, MashCheckId, UtcTime};
 use crate::input::{Flag, Number, Problems};
 
 /// A plan to be drafted.
@@ -279,6 +279,7 @@ impl WeighedBody {
             lot,
             reason: problems.optional_text("reason", &self.reason, 500),
             witness: None,
+            at: UtcTime::now(),
         }
     }
 }

@@ -3,10 +3,13 @@
 //! A tablet without network keeps its ticks and sends the same forms again later, by
 //! script (`templates/assets/queue.js`). Such a request asks for JSON: it is answered
 //! with what became of it instead of a page. It names the person who made the tick,
-//! because meanwhile another may have signed in on that tablet.
+//! because meanwhile another may have signed in on that tablet, and how long ago that was.
+
+use std::convert::Infallible;
 
 use axum::Json;
-use axum::extract::Request;
+use axum::extract::{FromRequestParts, Request};
+use axum::http::request::Parts;
 use axum::http::{HeaderMap, HeaderName, HeaderValue, StatusCode, header};
 use axum::middleware::Next;
 use axum::response::{IntoResponse, Response};
@@ -14,10 +17,18 @@ use serde_json::json;
 use tower_http::set_header::SetResponseHeaderLayer;
 
 use crate::error::Error;
+use crate::id::UtcTime;
 use crate::people::Member;
 
 /// Who made what is sent; nobody else's session may carry it.
 const MADE_BY: HeaderName = HeaderName::from_static("x-leat-member");
+
+/// How long ago it was made, whole seconds. Not a moment: the clock of a tablet may be
+/// wrong.
+const MADE_AGO: HeaderName = HeaderName::from_static("x-leat-made-ago");
+
+/// A week: after that the key of the request is forgotten as well.
+const LONGEST_AGO_SECONDS: i64 = 7 * 24 * 3600;
 
 /// Whether a script reads the answer.
 pub fn by_script(headers: &HeaderMap) -> bool {
@@ -57,4 +68,23 @@ pub fn may_be_kept() -> SetResponseHeaderLayer<HeaderValue> {
         HeaderName::from_static("x-leat-keep"),
         HeaderValue::from_static("weigh-out"),
     )
+}
+
+/// When something was done at the bench: now, or when the tablet without network was told.
+#[derive(Clone, Copy, Debug)]
+pub struct Made(pub UtcTime);
+
+impl<S: Send + Sync> FromRequestParts<S> for Made {
+    type Rejection = Infallible;
+
+    async fn from_request_parts(parts: &mut Parts, _: &S) -> Result<Self, Infallible> {
+        let ago = parts
+            .headers
+            .get(MADE_AGO)
+            .and_then(|value| value.to_str().ok())
+            .and_then(|value| value.parse::<i64>().ok())
+            .unwrap_or(0)
+            .clamp(0, LONGEST_AGO_SECONDS);
+        Ok(Self(UtcTime::now().plus_seconds(-ago)))
+    }
 }

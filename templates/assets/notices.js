@@ -51,6 +51,14 @@ export function toBeSeen(box, seen) {
   box.firstElementChild.append(press("I have seen this", seen));
 }
 
+/** A tick that is no line of a list, below its button. */
+export function waits(form, tick) {
+  if (form.querySelector(".queue-waits")) return;
+  const told = make("p", "queue-waits", `Ticked at ${clock(tick.made)}. It is kept on this tablet until the server has it.`);
+  told.setAttribute("role", "status");
+  form.append(told);
+}
+
 const STATES = { waiting: "waits", saved: "saved", refused: "not accepted" };
 
 /** Marks the lines in the list of lines, and the stones of the way above. `lines`: { id, state, now }. */
@@ -101,11 +109,12 @@ export function tell(list, about) {
 
 function band(said, first, trouble) {
   let chip = document.querySelector(".queue-chip");
-  if (!said) { chip?.remove(); return; }
+  if (!said) { chip?.parentElement.remove(); return; }
   if (!chip) {
     chip = make("a", "queue-chip");
-    chip.setAttribute("role", "status");
-    document.querySelector(".band .mark")?.after(chip);
+    const status = make("p", "queue-band", "", chip);
+    status.setAttribute("role", "status");
+    document.querySelector(".band .mark")?.after(status);
   }
   chip.href = trouble === "sign-in" ? `/sign-in?next=${encodeURIComponent(first.page)}` : first.page;
   if (chip.textContent !== said) chip.textContent = said;

@@ -7,7 +7,7 @@
 //       data-planned, data-tolerance in the unit of the field: outside, the line stays until the server has answered
 //   <li data-line-state="{dose}">    says waiting, saved or not accepted
 //   A form in a line without data-queued needs a second person: it is sent, never kept, because no PIN is stored.
-import { describe, problem, states, tell, toBeSeen } from "./notices.js";
+import { describe, problem, states, tell, toBeSeen, waits } from "./notices.js";
 import { post, send, start, trouble } from "./sender.js";
 import * as ticks from "./ticks.js";
 
@@ -180,7 +180,10 @@ function alone() {
     if (form.closest("[data-line]")) continue;
     const tick = tickOf(form.action);
     for (const button of form.querySelectorAll("button")) button.disabled = tick?.state === "waiting" || tick?.state === "saved";
-    if (tick?.state === "refused") refuse(form, tick);
+    if (tick?.state === "waiting") waits(form, tick);
+    // The question has a page of its own; there is a network, for the server has just answered.
+    if (tick?.state === "refused" && tick.status === 422 && new FormData(form).get("_key") === tick.key) ticks.forget(tick.id, ({ state }) => state === "refused").then(() => HTMLFormElement.prototype.submit.call(form));
+    else if (tick?.state === "refused") refuse(form, tick);
     if (tick?.state === "saved") leave(tick.next ?? location.pathname, true);
   }
 }

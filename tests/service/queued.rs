@@ -91,6 +91,33 @@ async fn a_tick_made_by_one_person_is_never_taken_in_the_session_of_another() {
 }
 
 #[tokio::test]
+async fn a_tick_that_waited_for_the_network_counts_from_when_it_was_made() {
+    let house = Brewhouse::build().await;
+    let id = house.approved("26-606").await;
+    let brewer = house.desk.browser("brewer").await;
+    let page = brewer.open(&format!("/plans/{id}/weigh-out")).await;
+    let (action, fields) = line(&page, &[]);
+    let request = brewer.request("POST", &action).form(&fields);
+    let request = request
+        .header(header::ORIGIN, &house.desk.address)
+        .header(header::ACCEPT, "application/json")
+        .header("x-leat-made-ago", "1500");
+    let answer = Answer::of(request.send().await.unwrap()).await;
+    assert_eq!(answer.status, 200, "{:?}", answer.body);
+    let doses = house.doses(&id).await;
+    let at = doses.iter().find_map(|dose| dose["weighed_at"].as_str());
+    let at: jiff::Timestamp = at.unwrap().parse().unwrap();
+    let ago = jiff::Timestamp::now().as_second() - at.as_second();
+    assert!((1500..1530).contains(&ago), "{ago} s ago");
+    // The record book says when the server was told.
+    let book = house.manager.get("/record?limit=1").await;
+    let told = book.body["items"][0]["at"].as_str().unwrap().parse();
+    let told: jiff::Timestamp = told.unwrap();
+    let ago = jiff::Timestamp::now().as_second() - told.as_second();
+    assert!(ago < 60, "{ago} s ago");
+}
+
+#[tokio::test]
 async fn a_refused_tick_is_told_why_and_may_be_mended_under_its_own_key() {
     let house = Brewhouse::build().await;
     let id = house.approved("26-603").await;

@@ -14,6 +14,7 @@ use crate::error::Error;
 use crate::id::{DoseId, MashCheckId, PlanId};
 use crate::input::{Number, Problems};
 use crate::plans::pages::check_address;
+use crate::plans::weigh_out::needs_second_person;
 use crate::plans::{
     Added, Advised, MashCheck, Plan, Prediction, Stage, State as PlanState, Step, mash_checks,
     operations, sheet, words,
@@ -45,6 +46,8 @@ pub(super) struct CheckPage {
     kind: &'static str,
     /// When to read again, once the step is in: the moment and the brewery's clock.
     again: Option<(String, String)>,
+    /// Whether a tablet without network may keep the tick of the step.
+    queued: bool,
     open: bool,
     weigh_in_first: bool,
     withdrawn: String,
@@ -293,6 +296,10 @@ async fn check_page(
             "read_again" => "again",
             _ => "leave",
         },
+        queued: step
+            .as_ref()
+            .and_then(|step| plan.inputs.problem.shelf.get(step.material))
+            .is_some_and(|item| !needs_second_person(&page.settings, item.material.substance())),
         again: ends.map(|ends| (ends.to_string(), format::clock(ends, zone))),
         open: matches!(plan.state, PlanState::Approved | PlanState::Dosed)
             && check.withdrawn.is_none(),

@@ -47,6 +47,8 @@ pub struct NewWeighed {
     pub reason: Option<String>,
     /// Who stood by and has proved it.
     pub witness: Option<Witness>,
+    /// When it went in: earlier than now where the tablet had no network.
+    pub at: UtcTime,
 }
 
 /// What somebody says should have been written down.
@@ -99,7 +101,7 @@ pub async fn weigh(
     let weighed = Weighed {
         actual,
         lot,
-        at: UtcTime::now(),
+        at: new.at,
         by: by.name.clone(),
         reason: new.reason.clone().unwrap_or_default(),
         witness: new.witness,

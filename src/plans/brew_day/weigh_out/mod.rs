@@ -12,6 +12,7 @@ use axum::http::StatusCode;
 use axum::response::{IntoResponse, Redirect, Response};
 use axum::routing::{get, post};
 
+use super::read_again;
 use crate::brewery;
 use crate::error::Error;
 use crate::id::{DoseId, PlanId};
@@ -20,13 +21,14 @@ use crate::people::{self, Permission, Place};
 use crate::plans::asked::{CorrectionBody, WeighedBody};
 use crate::plans::pages::check_address;
 use crate::plans::weigh_out::{Effect, NewCorrection, NewWeighed};
-use crate::plans::{Dose, Plan, State as PlanState, Witness, operations, weigh_out, words};
+use crate::plans::{Dose, Plan, State as PlanState, Witness};
+use crate::plans::{operations, readiness, weigh_out, words};
 use crate::web::App;
 use crate::web::extract::At;
 use crate::web::form::{Choice, Form};
 use crate::web::format;
 use crate::web::layout::{Framer, Page};
-use crate::web::queued;
+use crate::web::queued::{self, Made};
 use crate::web::units::typed_in_si;
 
 mod lines;
@@ -64,6 +66,8 @@ struct WeighOutPage {
     steps_words: String,
     waters: Vec<String>,
     cautions: Vec<(String, &'static str)>,
+    /// When the mash is to be read again: the moment, and the brewery's clock.
+    again: Option<(String, String)>,
     approved: String,
     /// Who can stand by, where a line needs that.
     second_people: Vec<Choice>,
@@ -142,6 +146,9 @@ impl Asking<'_> {
         let people = people
             .into_iter()
             .map(|person| (person.id.to_string(), person.name));
+        let again = readiness::of_plan(db, by, id)
+            .await?
+            .and_then(|open| read_again(&open, &page.settings.time_zone));
         let approved = plan.approved.as_ref().map_or_else(String::new, |deed| {
             let at = format::moment(deed.at, &page.settings.time_zone);
             format!("{}, {at}", deed.by)
@@ -149,6 +156,7 @@ impl Asking<'_> {
         Ok(WeighOutPage {
             waters: bench.waters(),
             cautions: bench.cautions(),
+            again,
             second_people: Choice::list(people, typed.value("second_person_id")),
             secret: if self.place.tablet.is_some() {
                 "PIN"
@@ -256,6 +264,7 @@ async fn weigh(
     State(app): State<App>,
     framer: Framer,
     place: Place,
+    Made(at): Made,
     At((id, dose)): At<(PlanId, DoseId)>,
     typed: Form,
 ) -> Result<Response, Error> {
@@ -271,6 +280,7 @@ async fn weigh(
         let mut new: NewWeighed = si.body::<WeighedBody>()?.try_into()?;
         said = Some(new.clone());
         new.witness = asking.witness(&typed).await?;
+        new.at = at;
         weigh_out::weigh(db, by, id, dose, new).await
     };
     let error = match weighed.await {
