@@ -19,7 +19,12 @@ after(async () => {
   await leat?.stop();
 });
 
-const button = (page) => page.getByRole("button", { name: /It is in the/ });
+const line = (page) => page.locator("section.line:not([hidden])");
+const button = (page) => line(page).getByRole("button", { name: /^As planned/ });
+const typed = (page) => line(page).getByRole("button", { name: /It is in the/ });
+const scale = (page) => line(page).getByLabel("What the scale showed");
+/** Until the server has what was ticked; a script sends it after the next line is shown. */
+const saved = (page) => page.locator("li.done[data-line-state], li[data-state=saved]").first().waitFor();
 const way = (page) => page.locator(".steps-words").innerText();
 /** What the plan’s own page says was weighed in, line by line. */
 async function weighedIn(page, plan) {
@@ -38,6 +43,7 @@ for (const scripts of [true, false]) {
     await page.goto(`${plan}/weigh-out`);
     await button(page).dblclick();
     await page.locator(".steps-words", { hasText: "Line 2" }).waitFor();
+    await saved(page);
     const weighed = await weighedIn(page, plan);
     assert.notEqual(weighed[0], "");
     assert.deepEqual(weighed.slice(1).filter(Boolean), [], "only the first line is in");
@@ -52,7 +58,9 @@ for (const scripts of [true, false]) {
     await page.goto(`${plan}/weigh-out`);
     await button(page).click();
     await page.locator(".steps-words", { hasText: "Line 2" }).waitFor();
-    await page.goBack();
+    await saved(page);
+    // Where a script shows the next line nothing was left behind: reloading is what is tried there.
+    await (scripts ? page.reload() : page.goBack());
     assert.match(await way(page), /Line 2/, "the line that is in is not offered again");
     assert.equal((await weighedIn(page, plan)).filter(Boolean).length, 1);
     await window.close();
@@ -68,12 +76,12 @@ for (const scripts of [true, false]) {
     await first.goto(`${plan}/weigh-out`);
     await button(first).click();
     await first.locator(".steps-words", { hasText: "Line 2" }).waitFor();
+    await saved(first);
     const [once] = await weighedIn(first, plan);
-    await second.getByLabel("What the scale showed").fill("999");
-    await button(second).click();
+    await scale(second).fill("999");
+    await typed(second).click();
     await second.locator(".problem-summary", { hasText: /in already|weighed/ }).waitFor();
-    const planned = await second.locator(".weigh-amount .value").innerText();
-    assert.equal(await second.getByLabel("What the scale showed").inputValue(), planned, "the next line begins with its own amount");
+    if (!scripts) assert.equal(await scale(second).inputValue(), "", "nothing is typed into the next line");
     const weighed = await weighedIn(first, plan);
     assert.equal(weighed[0], once);
     assert.deepEqual(weighed.slice(1).filter(Boolean), [], "no other line took the amount");
@@ -92,9 +100,9 @@ test("a tick whose answer was lost on the way is in once when it is sent again",
     await route.fetch({ maxRedirects: 0 });
     await route.abort();
   }, { times: 1 });
-  const lost = page.waitForEvent("framenavigated", (frame) => frame.url().startsWith("chrome-error:"));
-  await button(page).click({ noWaitAfter: true });
-  await lost;
+  await button(page).click();
+  await page.locator(".steps-words", { hasText: "Line 2" }).waitFor();
+  await saved(page);
   await page.goto(`${plan}/weigh-out`);
   assert.match(await way(page), /Line 2/, "the line is in although nobody saw it go");
   const weighed = await weighedIn(page, plan);
@@ -109,12 +117,13 @@ test("a refused weight comes back as typed with a sentence beside it", async () 
   const { page } = window;
   await signIn(page, "brewer");
   await page.goto(`${plan}/weigh-out`);
-  await page.getByLabel("What the scale showed").fill("about a cup");
-  await page.getByLabel("Lot").fill("X-9");
-  await button(page).click();
-  await page.locator(".problem-summary").waitFor();
-  assert.equal(await page.getByLabel("What the scale showed").inputValue(), "about a cup");
-  assert.equal(await page.getByLabel("Lot").inputValue(), "X-9");
+  const lot = line(page).locator("[name=lot]");
+  await scale(page).fill("about a cup");
+  await lot.fill("X-9");
+  await typed(page).click();
+  await line(page).locator(".problem-summary").waitFor();
+  assert.equal(await scale(page).inputValue(), "about a cup");
+  assert.equal(await lot.inputValue(), "X-9");
   assert.match(await way(page), /Line 1/);
   await window.close();
 });
@@ -136,17 +145,48 @@ test("a keyboard alone signs in and weighs out", async () => {
   await tabTo("#field-password");
   await page.keyboard.type(PASSWORD);
   await page.keyboard.press("Enter");
-  await page.locator(".weigh").waitFor();
+  await line(page).locator(".weigh").waitFor();
   const lines = Number((await way(page)).match(/of (\d+)/)[1]);
   for (let line = 1; line <= lines; line += 1) {
     await page.locator(".steps-words", { hasText: `Line ${line} of` }).waitFor();
-    await tabTo("#field-actual");
+    // A second tap right after the first is not taken for one on the next line.
+    await line(page).locator("button:not([disabled])").first().waitFor();
+    await tabTo("section.line:not([hidden]) [name=actual]");
     const outline = await page.evaluate(() => getComputedStyle(document.activeElement).outlineStyle);
     assert.equal(outline, "solid", "the focus can be seen");
+    await page.keyboard.type(await line(page).locator(".weigh-amount .value").innerText());
     await page.keyboard.press("Enter");
   }
   await page.getByText("Everything planned is in.").waitFor();
   await window.close();
+});
+
+test("an amount far from the plan is taken only with a reason, after its effect was shown", async () => {
+  const plan = await approvedPlan(leat, token);
+  const window = await openWindow(browser, leat);
+  const { page } = window;
+  await signIn(page, "brewer");
+  await page.goto(`${plan}/weigh-out`);
+  const planned = await line(page).locator(".weigh-amount .value").innerText();
+  await scale(page).fill(`${planned}0`);
+  await typed(page).click();
+  await line(page).locator(".asked").waitFor();
+  assert.match(await line(page).locator(".asked").innerText(), /900 % more than planned[\s\S]*Mash pH/);
+  await line(page).getByLabel("Why").fill("The sack slipped.");
+  await typed(page).click();
+  await page.locator(".steps-words", { hasText: "Line 2" }).waitFor();
+  await saved(page);
+  await window.close();
+});
+
+test("on paper every line of the weigh-out stands on one sheet, A4 or Letter", async () => {
+  const plan = await approvedPlan(leat, token);
+  const { page } = manager;
+  await page.goto(`${plan}/weigh-out`);
+  for (const format of ["A4", "Letter"]) {
+    const sheet = (await page.pdf({ format })).toString("latin1");
+    assert.equal(sheet.match(/\/Type\s*\/Page\b/g).length, 1, format);
+  }
 });
 
 test("everything to touch on the tablet’s pages is 48 px or more", async () => {
