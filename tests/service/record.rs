@@ -422,17 +422,17 @@ async fn weigh_all_but(house: &Brewhouse, id: &str, first: f64) -> serde_json::V
 }
 
 #[tokio::test]
-async fn closing_asks_why_a_dose_was_left_out_until_it_is_told() {
+async fn closing_asks_why_a_reading_was_left_outside_its_window_until_it_is_told() {
     let house = Brewhouse::build().await;
-    let id = house.approved("26-320").await;
-    let left_out = weigh_all_but(&house, &id, 0.0).await;
+    let id = house.dosed("26-320").await;
+    let check = house.read(&id, 5.7, 12.0).await;
     let path = format!("/plans/{id}/closing");
     let refused = house.manager.post(&path, &json!({})).await;
     assert_eq!(refused.status, 422, "{:?}", refused.body);
     assert_eq!(refused.pointers(), ["/reasons/0/reason"]);
     let told = refused.body["errors"][0].to_string();
     assert!(
-        told.contains("Lactic acid into the mash: left out, 705 mL planned"),
+        told.contains("Mash pH 5.70") && told.contains("above the window"),
         "{told}"
     );
     let deviations = house
@@ -443,7 +443,7 @@ async fn closing_asks_why_a_dose_was_left_out_until_it_is_told() {
     let key = deviations[0]["deviation"].as_str().unwrap();
     assert_eq!(
         key,
-        format!("left_out:{}", left_out["id"].as_str().unwrap())
+        format!("outside_window:{}", check.body["id"].as_str().unwrap())
     );
     assert!(deviations[0]["reason"].is_null(), "{deviations}");
     let strange = json!({"reasons": [{"deviation": "left_out:x", "reason": "y"}]});
@@ -451,11 +451,10 @@ async fn closing_asks_why_a_dose_was_left_out_until_it_is_told() {
     // On the page: the field is there, what was typed stays, and the reason is kept.
     let brewer = house.desk.browser("brewer").await;
     let page = brewer.open(&path).await;
-    assert!(page.words().contains("−100.0 %"), "{}", page.words());
     let asked = brewer.fill(&page, &path, &[]).await;
     assert_eq!(asked.status, StatusCode::UNPROCESSABLE_ENTITY);
     assert!(asked.error("reasons.0.reason").unwrap().contains("Say why"));
-    let why = ("reasons.0.reason", "The pump stood still.");
+    let why = ("reasons.0.reason", "Too late for acid.");
     let closed = brewer.fill(&asked, &path, &[why]).await;
     assert!(
         closed.words().contains("The batch is closed"),
@@ -467,12 +466,12 @@ async fn closing_asks_why_a_dose_was_left_out_until_it_is_told() {
         .get(&format!("/plans/{id}/deviations"))
         .await
         .body;
-    assert_eq!(deviations[0]["reason"], "The pump stood still.");
+    assert_eq!(deviations[0]["reason"], "Too late for acid.");
     let book = house.manager.get("/record?kind=plan&limit=1").await.body;
-    assert!(book.to_string().contains("The pump stood still."), "{book}");
+    assert!(book.to_string().contains("Too late for acid."), "{book}");
     let page = brewer.open(&path).await;
     assert!(
-        page.words().contains("The pump stood still."),
+        page.words().contains("Too late for acid."),
         "{}",
         page.words()
     );
@@ -484,9 +483,10 @@ async fn the_note_of_a_closing_stands_for_every_reason_that_is_not_given() {
     let id = house.approved("26-321").await;
     // 705 mL are planned: 2 % are 14.1 mL, three steps of the scale less.
     weigh_all_but(&house, &id, 720.0).await;
+    house.read(&id, 5.7, 12.0).await;
     let path = format!("/plans/{id}/closing");
     assert_eq!(house.manager.post(&path, &json!({})).await.status, 422);
-    let note = json!({"note": "Drained the can to its end."});
+    let note = json!({"note": "The meter was late."});
     let closed = house.manager.post(&path, &note).await;
     assert_eq!(closed.status, 201, "{:?}", closed.body);
     let deviations = house
@@ -495,7 +495,19 @@ async fn the_note_of_a_closing_stands_for_every_reason_that_is_not_given() {
         .await
         .body;
     assert_eq!(deviations[0]["kind"], "outside_tolerance");
-    assert_eq!(deviations[0]["reason"], "See the closing note");
+    assert_eq!(deviations[0]["reason"], "The can ran dry.");
+    assert_eq!(deviations[1]["reason"], "See the closing note");
+    let left_out = house.approved("26-323").await;
+    weigh_all_but(&house, &left_out, 0.0).await;
+    let deviations = house
+        .manager
+        .get(&format!("/plans/{left_out}/deviations"))
+        .await
+        .body;
+    assert_eq!(
+        deviations[0]["words"],
+        "Lactic acid into the mash: left out, 705 mL planned"
+    );
     let inside = house.approved("26-322").await;
     weigh_all_but(&house, &inside, 715.0).await;
     let deviations = house
@@ -517,7 +529,7 @@ async fn the_note_of_a_closing_stands_for_every_reason_that_is_not_given() {
 #[tokio::test]
 async fn a_mash_put_right_explains_its_own_reading_and_one_left_outside_is_asked_about() {
     let house = Brewhouse::build().await;
-    let id = house.dosed("26-323").await;
+    let id = house.dosed("26-327").await;
     let read = house.read(&id, 5.7, 12.0).await;
     assert_eq!(read.body["advised"]["verdict"], "above");
     let path = format!("/plans/{id}/deviations");
@@ -708,7 +720,7 @@ async fn a_batch_sheet_holds_what_an_auditor_asks_for() {
         "Measured, cooled sample",
         "reading 5.42",
         "Lactic acid into the mash: 720 mL in place of 705 mL",
-        "See the closing note",
+        "The can ran dry.",
         "Drained the can to its end.",
         "The can held 721 mL.",
         "Weighed empty.",

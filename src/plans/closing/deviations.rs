@@ -1,16 +1,17 @@
 //! What of a batch was not as planned, and why.
 
-use chemistry::material::Role;
 use chemistry::quantity::Fraction;
 use sqlx::SqliteConnection;
 
 use super::store;
-use crate::brewery::{SecondPerson, Settings};
+use crate::brewery::Settings;
 use crate::db::Db;
 use crate::error::{Error, FieldProblem};
 use crate::id::MaterialId;
 use crate::id::PlanId;
 use crate::people::{Member, Permission};
+use crate::plans::weigh_out::effect::Band;
+use crate::plans::weigh_out::needs_second_person;
 use crate::plans::{Dose, MashCheck, Plan, State, Weighed, words};
 use crate::shelf::USUAL_TOLERANCE;
 use crate::web::format;
@@ -184,10 +185,17 @@ fn of_dose(
         );
         return;
     }
-    if (actual - planned).abs() > tolerance(plan, dose, tolerances) {
+    let band = band(plan, dose, weighed, tolerances);
+    if !band.holds(weighed.actual) && actual > 0.0 {
+        let (target, plan) = (amount(band.target.get()), amount(planned));
+        let of_lot = if target == plan {
+            String::new()
+        } else {
+            format!(", which is {target} of this lot")
+        };
         add(
             Kind::OutsideTolerance,
-            format!("{line}: {} in place of {}", amount(actual), amount(planned)),
+            format!("{line}: {} in place of {plan}{of_lot}", amount(actual)),
         );
     }
     if let Some(label) = label.filter(|label| label.lot_id.is_some())
@@ -199,9 +207,7 @@ fn of_dose(
             format!("{line}: lot {} in place of {}", weighed.lot.code, label.lot),
         );
     }
-    let watched = matches!(item.material.substance().role(), Role::Acid | Role::Base);
-    if settings.second_person == SecondPerson::AcidAndLime
-        && watched
+    if needs_second_person(settings, item.material.substance())
         && actual > 0.0
         && weighed.witness.is_none()
     {
@@ -222,20 +228,18 @@ pub async fn tolerances(db: &Db, by: &Member) -> Result<Tolerances, Error> {
     store::tolerances(&mut *db.reader().await?).await
 }
 
-/// How far a dose may be from its plan: the tolerance of its material, and at least one step of its
-/// scale.
-pub(in crate::plans) fn tolerance(plan: &Plan, dose: &Dose, tolerances: &Tolerances) -> f64 {
-    let step = plan
-        .inputs
-        .problem
-        .shelf
-        .get(dose.material)
-        .map_or(0.0, |item| item.step.get());
+/// What of a weighed dose is taken without a question, as at the scale: around its plan, or around
+/// what does as much where the lot is stronger or weaker.
+pub(in crate::plans) fn band(
+    plan: &Plan,
+    dose: &Dose,
+    weighed: &Weighed,
+    tolerances: &Tolerances,
+) -> Band {
     let id = plan.inputs.shelf.get(dose.material).and_then(|it| it.id);
     let own = tolerances.0.iter().find(|(of, _)| Some(*of) == id);
-    let share = own.map_or(USUAL_TOLERANCE, |(_, share)| *share).get();
-    // A hair more than the limit, so that a dose exactly on it is inside.
-    (share * dose.planned.get()).max(step) * (1.0 + 1e-9)
+    let tolerance = own.map_or(USUAL_TOLERANCE, |(_, share)| *share);
+    Band::of(plan, dose, weighed.lot.material.as_ref(), tolerance)
 }
 
 /// What was done about a reading outside its window: the step that was given, and the next

@@ -3,7 +3,7 @@
 
 use crate::brewery::{Settings, Units};
 use crate::plans::closing::corrections::{PlanCorrection, What};
-use crate::plans::closing::deviations::{Deviation, Tolerances, tolerance};
+use crate::plans::closing::deviations::{Deviation, Tolerances, band};
 use crate::plans::{Dose, MashCheck, Plan, sheet, words};
 use crate::web::chart::IntervalBar;
 use crate::web::format;
@@ -90,8 +90,7 @@ fn dose_line(
         planned: with_unit(planned),
         actual: actual.map_or_else(String::new, with_unit),
         difference: actual.map_or_else(String::new, |actual| difference(planned, actual)),
-        outside: actual
-            .is_some_and(|actual| (actual - planned).abs() > tolerance(plan, dose, tolerances)),
+        outside: weighed.is_some_and(|it| !band(plan, dose, it, tolerances).holds(it.actual)),
         lot: weighed.map_or_else(String::new, |it| it.lot.code.clone()),
         weighed: weighed.map_or_else(String::new, |it| {
             format!("{}, {}", it.by, format::moment(it.at, &settings.time_zone))
