@@ -17,6 +17,7 @@ use crate::id::{MaterialId, MaterialLotId};
 pub mod api;
 pub mod attachments;
 pub mod entered;
+pub mod labels;
 pub mod operations;
 pub mod pages;
 pub mod stock;

@@ -184,6 +184,18 @@ pub async fn lots(db: &Db, by: &Member, material: MaterialId) -> Result<Vec<Mate
     store::lots(&mut *db.reader().await?, material).await
 }
 
+/// Every lot of every material, by the name of the material.
+pub async fn every_lot(db: &Db, by: &Member) -> Result<Vec<(Material, MaterialLot)>, Error> {
+    by.may(Permission::Read)?;
+    let mut snapshot = db.snapshot().await?;
+    let mut all = Vec::new();
+    for material in store::list(&mut snapshot).await? {
+        let lots = store::lots(&mut snapshot, material.id).await?;
+        all.extend(lots.into_iter().map(|lot| (material.clone(), lot)));
+    }
+    Ok(all)
+}
+
 /// Up to `limit` lots of a material entered after `after`, in the order they were
 /// entered.
 pub async fn page_of_lots(

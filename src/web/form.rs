@@ -46,6 +46,12 @@ impl Form {
             .map_or("", |(_, value)| value.as_str())
     }
 
+    /// Everything that was sent under this name, in order.
+    pub fn values(&self, name: &str) -> impl Iterator<Item = &str> {
+        let named = self.fields.iter().filter(move |(field, _)| field == name);
+        named.map(|(_, value)| value.as_str())
+    }
+
     /// Whether a field was sent at all, even empty.
     pub fn holds(&self, name: &str) -> bool {
         self.fields.iter().any(|(field, _)| field == name)

@@ -10,6 +10,7 @@ use super::warnings::Warning;
 use super::{Material, words};
 use crate::web::App;
 
+mod labels;
 mod list;
 mod lot;
 mod material;
@@ -22,6 +23,7 @@ pub fn routes() -> Router<App> {
     Router::new()
         .route("/shelf", get(list::list))
         .route("/shelf/usual", post(list::create_usual))
+        .route("/shelf/labels", get(labels::labels))
         .route("/shelf/new", get(material::new).post(material::create))
         .route("/shelf/{id}", get(material::show))
         .route(

@@ -8,6 +8,7 @@ use reqwest::StatusCode;
 use crate::desk::{Answer, Browser, Desk, Program, Seen, offered};
 
 mod attachments;
+mod labels;
 mod stock;
 
 fn gypsum() -> Value {
