@@ -71,7 +71,10 @@ for (const scripts of [true, false]) {
     const window = await openWindow(browser, leat, { javaScriptEnabled: scripts });
     const first = window.page;
     await signIn(first, "brewer");
-    const second = await window.context.newPage();
+    // A tablet of its own: two pages on one share what they have ticked.
+    const tablet = await openWindow(browser, leat, { javaScriptEnabled: scripts });
+    const second = tablet.page;
+    await signIn(second, "qa");
     await second.goto(`${plan}/weigh-out`);
     await first.goto(`${plan}/weigh-out`);
     await button(first).click();
@@ -85,6 +88,7 @@ for (const scripts of [true, false]) {
     const weighed = await weighedIn(first, plan);
     assert.equal(weighed[0], once);
     assert.deepEqual(weighed.slice(1).filter(Boolean), [], "no other line took the amount");
+    await tablet.close();
     await window.close();
   });
 }
@@ -147,8 +151,8 @@ test("a keyboard alone signs in and weighs out", async () => {
   await page.keyboard.press("Enter");
   await line(page).locator(".weigh").waitFor();
   const lines = Number((await way(page)).match(/of (\d+)/)[1]);
-  for (let line = 1; line <= lines; line += 1) {
-    await page.locator(".steps-words", { hasText: `Line ${line} of` }).waitFor();
+  for (let number = 1; number <= lines; number += 1) {
+    await page.locator(".steps-words", { hasText: `Line ${number} of` }).waitFor();
     // A second tap right after the first is not taken for one on the next line.
     await line(page).locator("button:not([disabled])").first().waitFor();
     await tabTo("section.line:not([hidden]) [name=actual]");

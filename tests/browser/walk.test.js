@@ -179,6 +179,7 @@ for (const scripts of [true, false]) {
     step("every line is weighed out on the tablet", async () => {
       await visit("/");
       await follow(/B-1 Leat Bitter/);
+      await page.goto(`${new URL(page.url()).pathname}/weigh-out`);
       const lines = Number((await page.locator(".steps-words").innerText()).match(/of (\d+)/)[1]);
       assert.ok(lines >= 1);
       for (let line = 1; line <= lines; line += 1) {
