@@ -24,7 +24,7 @@ const button = (page) => line(page).getByRole("button", { name: /^As planned/ })
 const typed = (page) => line(page).getByRole("button", { name: /It is in the/ });
 const scale = (page) => line(page).getByLabel("What the scale showed");
 /** Until the server has what was ticked; a script sends it after the next line is shown. */
-const saved = (page) => page.locator("li.done[data-line-state], li[data-state=saved]").first().waitFor();
+const saved = (page) => page.locator("li.done[data-line-state]:not([data-state=waiting])").first().waitFor();
 const way = (page) => page.locator(".steps-words").innerText();
 /** What the plan’s own page says was weighed in, line by line. */
 async function weighedIn(page, plan) {
