@@ -187,6 +187,13 @@ test("on paper every line of the weigh-out stands on one sheet, A4 or Letter", a
   const plan = await approvedPlan(leat, token);
   const { page } = manager;
   await page.goto(`${plan}/weigh-out`);
+  const lines = await page.locator("li[data-line-state]").count();
+  await page.emulateMedia({ media: "print" });
+  const rows = await page.locator(".paper tbody tr").evaluateAll((all) => all.filter((row) => row.checkVisibility()).map((row) => row.getBoundingClientRect().height));
+  assert.equal(rows.length, lines, "every line is on the sheet");
+  assert.ok(Math.min(...rows) > 40, "with room to write, 11 mm and more");
+  assert.ok(await page.getByText(/approved by/).isVisible());
+  await page.emulateMedia({ media: null });
   for (const format of ["A4", "Letter"]) {
     const sheet = (await page.pdf({ format })).toString("latin1");
     assert.equal(sheet.match(/\/Type\s*\/Page\b/g).length, 1, format);
