@@ -176,6 +176,22 @@ for (const scripts of [true, false]) {
       await heading("Weigh-out");
     });
 
+    step("a meter is entered and calibrated", async () => {
+      await visit("/meters");
+      await follow("Enter the first meter");
+      await page.getByLabel("Name").fill("Bench meter");
+      await page.getByLabel("Kind").selectOption({ label: "Bench" });
+      await press("Save");
+      await heading("Bench meter");
+      await follow(/^Calibrate/);
+      await follow("Slope and offset");
+      await page.getByLabel("Temperature", { exact: true }).fill("20");
+      await page.getByLabel("Slope", { exact: true }).fill("97");
+      await page.getByLabel("Offset at pH 7").fill("5");
+      await press("Save the calibration");
+      await settled();
+    });
+
     step("every line is weighed out on the tablet", async () => {
       await visit("/");
       await follow(/B-1 Leat Bitter/);
@@ -205,6 +221,7 @@ for (const scripts of [true, false]) {
       await follow("Read the mash");
       await page.getByLabel("pH", { exact: true }).fill("5,66");
       await page.getByLabel("Minutes since strike").fill("12");
+      await page.getByLabel("Temperature of the sample").fill("20");
       await page.getByLabel("The meter was just checked in buffer").check();
       await press("What now?");
       await page.locator(".put-right-step").waitFor();
@@ -220,6 +237,7 @@ for (const scripts of [true, false]) {
       await follow("Read it again");
       await page.getByLabel("pH", { exact: true }).fill("5.41");
       await page.getByLabel("Minutes since strike").fill("25");
+      await page.getByLabel("Temperature of the sample").fill("20");
       await press("What now?");
       await page.locator(".put-right-leave").waitFor();
     });
