@@ -19,7 +19,8 @@ pub(super) struct DoseLine {
     pub(super) difference: String,
     pub(super) outside: bool,
     pub(super) lot: String,
-    pub(super) weighed: String,
+    pub(super) by: String,
+    pub(super) at: String,
     pub(super) witness: String,
     pub(super) reason: String,
     /// What was written down before, and what a correction after closing says.
@@ -92,9 +93,8 @@ fn dose_line(
         difference: actual.map_or_else(String::new, |actual| difference(planned, actual)),
         outside: weighed.is_some_and(|it| !band(plan, dose, it, tolerances).holds(it.actual)),
         lot: weighed.map_or_else(String::new, |it| it.lot.code.clone()),
-        weighed: weighed.map_or_else(String::new, |it| {
-            format!("{}, {}", it.by, format::moment(it.at, &settings.time_zone))
-        }),
+        by: weighed.map_or_else(String::new, |it| it.by.clone()),
+        at: weighed.map_or_else(String::new, |it| format::moment(it.at, &settings.time_zone)),
         witness: weighed
             .and_then(|it| it.witness.as_ref())
             .map_or_else(String::new, |it| it.name.clone()),

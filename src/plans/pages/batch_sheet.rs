@@ -68,6 +68,7 @@ struct WaterLine {
 
 struct ReadingLine {
     stage: &'static str,
+    by: String,
     at: String,
     minute: String,
     shown: String,
@@ -169,7 +170,8 @@ fn reading(
     };
     ReadingLine {
         stage: check.stage.name(),
-        at: format!("{}, {}", check.read_by, format::moment(check.read_at, zone)),
+        by: check.read_by.clone(),
+        at: format::moment(check.read_at, zone),
         minute: check
             .since_strike()
             .map_or_else(String::new, |minute| format::decimals(minute.get(), 0)),
@@ -211,13 +213,18 @@ fn person(person: PersonBehind) -> (String, String) {
 
 fn entry(entry: &record::Entry, zone: &str) -> EntryLine {
     let line = Line::of(entry, zone);
-    let values = if line.differences.len() > MOST_VALUES {
-        vec![format!("{} values", line.differences.len())]
+    // Identifiers say nothing on paper; the book holds them.
+    let told = line.differences.iter();
+    let told: Vec<_> = told.filter(|(name, ..)| !name.ends_with(" id")).collect();
+    let values = if told.len() > MOST_VALUES {
+        vec![format!("{} values", told.len())]
     } else {
-        let told = |text: &str| if text.is_empty() { "nothing" } else { text }.to_owned();
-        line.differences
-            .iter()
-            .map(|(name, was, is)| format!("{name}: {} → {}", told(was), told(is)))
+        told.into_iter()
+            .map(|(name, was, is)| match (was.as_str(), is.as_str()) {
+                ("", is) => format!("{name}: {is}"),
+                (was, "") => format!("{name} was {was}"),
+                (was, is) => format!("{name}: {was} → {is}"),
+            })
             .collect()
     };
     EntryLine {
