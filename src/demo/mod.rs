@@ -19,15 +19,16 @@ use crate::malts;
 use crate::people::operations::{self as people, NewAccount};
 use crate::people::passwords::Passwords;
 use crate::people::{Member, Role};
-use crate::shelf;
 use crate::web::format;
 
 mod batches;
 mod meters;
+mod shelf;
 mod water;
 
 use batches::fill_plans;
 use meters::fill_meters;
+use shelf::fill_shelf;
 use water::fill_sources;
 
 /// The password of everybody in the invented brewery. The page to sign in says so.
@@ -110,96 +111,6 @@ impl Chance {
 
 fn days_before(today: Date, days: i64) -> Date {
     today.checked_sub(days.days()).unwrap_or(today)
-}
-
-async fn fill_shelf(db: &Db, by: &Member, today: Date) -> Result<(), Error> {
-    for (name, substance, strength, step, price, vessels, lot, assay) in [
-        (
-            "Gypsum",
-            "gypsum",
-            json!({}),
-            1.0,
-            1.9,
-            &["liquor_tank", "mash", "kettle"][..],
-            "GY-31",
-            Some(99.0),
-        ),
-        (
-            "Calcium chloride flakes",
-            "calcium_chloride_dihydrate",
-            json!({}),
-            1.0,
-            2.6,
-            &["liquor_tank", "mash", "kettle"],
-            "CC-07",
-            None,
-        ),
-        (
-            "Epsom salt",
-            "epsom_salt",
-            json!({}),
-            1.0,
-            2.2,
-            &["liquor_tank", "kettle"],
-            "EP-12",
-            Some(99.5),
-        ),
-        (
-            "Table salt",
-            "sodium_chloride",
-            json!({}),
-            1.0,
-            0.9,
-            &["kettle"],
-            "NS-03",
-            None,
-        ),
-        (
-            "Baking soda",
-            "sodium_bicarbonate",
-            json!({}),
-            1.0,
-            1.4,
-            &["mash"],
-            "SB-19",
-            Some(99.0),
-        ),
-        (
-            "Lactic acid 80 %",
-            "lactic_acid",
-            json!({"percent": 80, "density_g_per_ml": 1.19}),
-            5.0,
-            4.2,
-            &["mash", "sparge_liquor"],
-            "LA-44",
-            None,
-        ),
-        (
-            "Phosphoric acid 75 %",
-            "phosphoric_acid",
-            json!({"percent": 75, "density_g_per_ml": 1.579}),
-            5.0,
-            5.1,
-            &["mash", "sparge_liquor", "kettle"],
-            "PH-05",
-            None,
-        ),
-    ] {
-        let ticked = |vessel: &str| vessels.contains(&vessel);
-        let material: shelf::Material = body::<shelf::entered::NewMaterialBody>(json!({
-            "name": name, "substance": substance, "strength": strength, "scale_step_g_or_ml": step,
-            "price_per_kg_or_l": price, "in_use": true,
-            "vessels": {"liquor_tank": ticked("liquor_tank"), "mash": ticked("mash"),
-                        "sparge_liquor": ticked("sparge_liquor"), "kettle": ticked("kettle")},
-        }))?
-        .try_into()?;
-        let material = shelf::operations::create(db, by, material).await?;
-        let lot = body(json!({
-            "code": lot, "received_on": days_before(today, 140).to_string(), "assay_percent": assay, "current": true, "in_use": true,
-        }))?;
-        shelf::operations::create_lot(db, by, material.id, lot).await?;
-    }
-    Ok(())
 }
 
 async fn fill_malts(db: &Db, by: &Member, today: Date) -> Result<Vec<MaltId>, Error> {

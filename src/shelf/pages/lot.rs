@@ -43,7 +43,7 @@ pub(super) struct ShowPage {
     overdrawn: bool,
     stock: String,
     counted_at: Option<String>,
-    lasts: Option<String>,
+    lasts: Option<(String, String)>,
     reassay: Option<String>,
     cautions: Vec<&'static str>,
     attached: Option<Attachment>,

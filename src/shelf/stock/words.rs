@@ -39,13 +39,13 @@ pub fn stock(units: Units, measures: Measures, stock: Option<Stock>) -> String {
     )
 }
 
-/// How many batches a stock is enough for.
+/// How many batches a stock is enough for, and what that rests on.
 pub fn lasts(
     units: Units,
     measures: Measures,
     stock: Option<Stock>,
     recent: Option<Use>,
-) -> Option<String> {
+) -> Option<(String, String)> {
     let (stock, recent) = stock.zip(recent)?;
     let batches = (stock.there().get() / recent.per_batch.get()).floor();
     let many = if batches < 1.0 {
@@ -56,10 +56,11 @@ pub fn lasts(
         format!("about {} batches", format::decimals(batches, 0))
     };
     let each = amount(units, measures, recent.per_batch.get());
-    Some(match recent.batches {
-        1 => format!("{many}, if each takes {each} like the last one"),
-        n => format!("{many}, if each takes {each} like the last {n} on average"),
-    })
+    let like = match recent.batches {
+        1 => "the last one".to_owned(),
+        batches => format!("the last {batches} on average"),
+    };
+    Some((many, format!("if each takes {each} like {like}")))
 }
 
 /// One line of a ledger.
