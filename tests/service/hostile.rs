@@ -7,6 +7,7 @@
 use serde_json::{Value, json};
 
 use crate::brewhouse::{Brewhouse, made};
+use crate::desk::Answer;
 
 mod bodies;
 mod description;
@@ -21,6 +22,7 @@ pub struct LivedIn {
     pub material: String,
     pub material_lot: String,
     pub movement: String,
+    pub attachment: String,
     pub malt: String,
     pub malt_lot: String,
     pub titration: String,
@@ -39,6 +41,11 @@ fn first(list: &Value) -> String {
     list["items"][0]["id"].as_str().unwrap().to_owned()
 }
 
+/// Something that came.
+pub fn delivery() -> Value {
+    json!({"kind": "delivery", "amount_g_or_ml": 25_000, "moved_at": "2026-11-02", "supplier": "Osier & Daughters"})
+}
+
 impl LivedIn {
     pub async fn build() -> Self {
         let house = Brewhouse::build().await;
@@ -47,9 +54,12 @@ impl LivedIn {
         let lot = json!({"code": "G-1", "current": true, "in_use": true});
         let lots = format!("/materials/{material}/lots");
         let material_lot = made(&program.post(&lots, &lot).await);
-        let delivery = json!({"kind": "delivery", "amount_g_or_ml": 1000});
         let movements = format!("{lots}/{material_lot}/movements");
-        let movement = made(&program.post(&movements, &delivery).await);
+        let movement = made(&program.post(&movements, &delivery()).await);
+        let certificates = format!("{lots}/{material_lot}/certificates");
+        let file = program.request("POST", &certificates).body("%PDF-1.7");
+        let file = file.header("content-type", "application/pdf");
+        let attachment = made(&Answer::of(file.send().await.unwrap()).await);
         let malt = first(&program.get("/malts").await.body);
         let lot = json!({"code": "M-1", "wort_ph": 5.9, "in_use": true});
         let malt_lot = made(&program.post(&format!("/malts/{malt}/lots"), &lot).await);
@@ -96,6 +106,7 @@ impl LivedIn {
             material,
             material_lot,
             movement,
+            attachment,
             malt,
             malt_lot,
             titration,

@@ -5,7 +5,7 @@ use std::collections::BTreeSet;
 use serde_json::{Value, json};
 
 use super::description::{Description, Operation};
-use super::{LivedIn, calibration, long, titration};
+use super::{LivedIn, calibration, delivery, long, titration};
 use crate::brewhouse::hard_water;
 use crate::desk::Answer;
 
@@ -40,6 +40,7 @@ pub fn address(lived: &LivedIn, operation: &Operation) -> String {
         .replace("{movement_id}", &lived.movement)
         .replace("{titration_id}", &lived.titration)
         .replace("{calibration_id}", &lived.calibration)
+        .replace("{attachment_id}", &lived.attachment)
         .replace("{check_id}", &lived.check)
         .replace("{dose_id}", &lived.dose)
         .replace("{liquor_check_id}", &lived.liquor_check)
@@ -59,6 +60,7 @@ pub async fn good(lived: &LivedIn, operation: &Operation) -> Value {
         "/sources" => kept(&format!("/sources/{}", lived.house.source)).await,
         "/malts/{id}/lots" => kept(&format!("{here}/{}", lived.malt_lot)).await,
         "/materials/{id}/lots" => kept(&format!("{here}/{}", lived.material_lot)).await,
+        "/materials/{id}/lots/{lot_id}/movements" => delivery(),
         "/sources/{id}/water-tests" | "/water-test-checks" => hard_water(),
         "/water-tests/{id}" => {
             let mut test = hard_water();

@@ -12,6 +12,7 @@ pub struct Description(Value);
 pub struct Operation {
     pub method: String,
     pub path: String,
+    /// Whether it takes JSON; a file is none.
     pub takes_body: bool,
 }
 
@@ -28,7 +29,9 @@ impl Description {
                 operations.push(Operation {
                     method: method.to_uppercase(),
                     path: path.clone(),
-                    takes_body: operation.get("requestBody").is_some(),
+                    takes_body: operation["requestBody"]["content"]
+                        .get("application/json")
+                        .is_some(),
                 });
             }
         }

@@ -10,7 +10,7 @@ use super::{LivedIn, forms};
 
 /// The least role and the scope that each operation of the API asks for, as README and
 /// help tell them: a brewer plans, weighs and reads; QA also enters tests, keeps sources,
-/// meters and lots and approves; a manager also keeps beers, malts and the shelf. No token
+/// meters, lots and data sheets and approves; a manager also keeps beers, malts and the shelf. No token
 /// changes settings.
 fn needed(method: &str, path: &str) -> Option<(usize, Vec<Scope>)> {
     const BREWER: usize = 0;
@@ -26,6 +26,7 @@ fn needed(method: &str, path: &str) -> Option<(usize, Vec<Scope>)> {
         "meters" if path.contains("/calibrations") => (BREWER, Scope::Readings),
         "meters" => (QA, Scope::Readings),
         "malts" | "materials" if path.contains("/lots") => (QA, Scope::Plans),
+        "materials" if path.ends_with("/safety-data-sheets") => (QA, Scope::Plans),
         "malts" | "materials" | "beers" => (MANAGER, Scope::Plans),
         _ if path.contains("/doses/")
             || path.contains("/mash-checks")
@@ -116,7 +117,12 @@ fn least(action: &str) -> usize {
         path if path.starts_with("/invitations") || path.starts_with("/tablets") => 2,
         path if path.starts_with("/tokens") || path.starts_with("/beers") => 2,
         path if path.starts_with("/malts") || path.starts_with("/shelf") => {
-            if path.contains("/lots") { 1 } else { 2 }
+            let paper = path.ends_with("/safety-data-sheets");
+            if paper || path.contains("/lots") {
+                1
+            } else {
+                2
+            }
         }
         path if path.starts_with("/meters") => usize::from(!path.contains("/calibrations")),
         path if path.starts_with("/sources") || path.starts_with("/water-tests") => 1,
