@@ -3,7 +3,6 @@
 import assert from "node:assert/strict";
 import { after, before, test } from "node:test";
 import { openWindow, PASSWORD, signIn, startBrowser, startLeat } from "./leat.js";
-import { planIn } from "./pages.js";
 import { approvedPlan, tokenOf } from "./api.js";
 
 let leat, browser, token, manager;
@@ -197,35 +196,5 @@ test("on paper every line of the weigh-out stands on one sheet, A4 or Letter", a
   for (const format of ["A4", "Letter"]) {
     const sheet = (await page.pdf({ format })).toString("latin1");
     assert.equal(sheet.match(/\/Type\s*\/Page\b/g).length, 1, format);
-  }
-});
-
-test("everything to touch on the tablet’s pages is 48 px or more", async () => {
-  const approved = await approvedPlan(leat, token);
-  const dosed = await planIn(manager.page, { state: "dosed" });
-  const closed = await planIn(manager.page, { state: "closed" });
-  await manager.page.goto(closed);
-  const check = await manager.page.locator(`main a[href^="${closed}/mash-checks/"]`).first().getAttribute("href");
-  const storageState = await manager.context.storageState();
-  for (const [width, height] of [[1280, 800], [800, 1280]]) {
-    const window = await openWindow(browser, leat, { storageState, viewport: { width, height } });
-    const { page } = window;
-    for (const address of ["/", `${approved}/weigh-out`, `${approved}/mash-checks/new`, `${dosed}/weigh-out`, `${dosed}/mash-checks/new`, check, `${dosed}/closing`]) {
-      await page.goto(address);
-      await page.evaluate(() => document.querySelectorAll("details").forEach((part) => { part.open = true; }));
-      const small = await page.evaluate(() => {
-        const found = [];
-        for (const thing of document.querySelectorAll("a, button, summary, input:not([type=hidden]), select, textarea")) {
-          if (thing.closest(".skip, .foot") || !thing.checkVisibility()) continue;
-          // A box to tick is touched by its label.
-          const touched = thing.matches("[type=checkbox], [type=radio]") ? thing.closest("label") ?? thing : thing;
-          const { width, height } = touched.getBoundingClientRect();
-          if (Math.min(width, height) < 47.9) found.push(`${thing.tagName} “${(thing.innerText || thing.name || "").trim()}” ${Math.round(width)} × ${Math.round(height)}`);
-        }
-        return found;
-      });
-      assert.deepEqual(small, [], `${address} at ${width} px`);
-    }
-    await window.close();
   }
 });
