@@ -228,7 +228,7 @@ fn reach(
 /// A step of the scale that gives four to ten figures: 1, 2 or 5 of a power of ten.
 fn round_step(most: f64) -> f64 {
     let power = 10f64.powf((most / 10.0).log10().floor());
-    [1.0, 2.0, 5.0, 10.0]
+    [1.0, 2.0, 5.0, 10.0, 20.0]
         .into_iter()
         .map(|by| by * power)
         .find(|step| most / step <= 8.0)
