@@ -246,7 +246,8 @@ fn why(dose: &Dose, band: &Band, tolerance: Fraction, actual: DoseAmount) -> Str
     }
     let off = (actual.get() / band.target.get() - 1.0) * 100.0;
     let way = if off > 0.0 { "more" } else { "less" };
-    let than = if band.target == dose.planned {
+    let needed = band.target.get() / dose.planned.get() - 1.0;
+    let than = if needed.abs() < 0.001 {
         "planned"
     } else {
         "this lot needs to do what is planned"
